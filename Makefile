@@ -1,0 +1,104 @@
+# Quietbell: GNU make, pkg-config, no generated build files.
+#
+#   make            build/quietbell, build/quietbelld, build/quietbell-driver
+#   make demo       installs what is missing (deploy/deps), builds, runs the main job end to end
+#   make test       installs what is missing, builds, lint, unit, outside and system tests
+#   make check      make test and the sanitizer and valgrind runs
+#   make install    PREFIX (default /usr/local) and DESTDIR are honoured
+#
+# One room alone while working on it:  make unit ROOMS="base wave" TEST_ROOMS=wave BUILD=build/wave
+
+PREFIX ?= /usr/local
+BUILD  ?= build
+CC     ?= gcc
+
+ROOMS      ?= base ledger custody wave drill audit wire
+TEST_ROOMS ?= $(ROOMS) store ops api client
+PACKAGES   := libsodium libmicrohttpd sqlite3 fftw3 jansson libcurl erfa yaml-0.1 gsl libseccomp
+
+WARN    := -Wall -Wextra -Wpedantic -Wconversion -Wshadow -Wstrict-prototypes -Wvla -Werror
+SAFE    := -fstack-protector-strong -D_FORTIFY_SOURCE=2 -fPIE
+CFLAGS  ?= -O2 -g
+QB_CFLAGS = -std=c17 -D_GNU_SOURCE -I. -MMD -MP -ffp-contract=off $(WARN) $(SAFE) \
+            $(filter-out -I/usr/include,$(shell pkg-config --cflags $(PACKAGES) 2>/dev/null))
+LIBS_COMMON := -lsodium -lfftw3 -ljansson -lerfa -lyaml -lgsl -lgslcblas -lm -lpthread
+LIBS_DAEMON := -lmicrohttpd -lsqlite3 -lseccomp
+LIBS_CLIENT := -lcurl -lsqlite3 -lseccomp
+QB_LDFLAGS   = -pie -Wl,-z,relro,-z,now $(LDFLAGS)
+
+common_src := $(foreach r,$(ROOMS),$(wildcard server/$(r)/*.c))
+daemon_src := $(wildcard server/store/*.c server/ops/*.c server/api/*.c server/daemon/*.c)
+client_src := $(wildcard client/cli/*.c client/report/*.c client/board/*.c)
+driver_src := $(wildcard client/agent/*.c)
+# Files with a main() of their own; everything else can be linked into a test.
+mains      := server/daemon/main.c client/cli/main.c client/agent/main.c
+
+obj = $(patsubst %.c,$(BUILD)/obj/%.o,$(1))
+lib        := $(BUILD)/libquietbell.a
+lib_daemon := $(BUILD)/libquietbelld.a
+lib_client := $(BUILD)/libquietbell-client.a
+programs   := $(BUILD)/quietbell $(BUILD)/quietbelld $(BUILD)/quietbell-driver
+
+.PHONY: all lib unit outside system test check lint arrows format deps demo bench fuzz sanitize valgrind install clean
+all: $(programs)
+lib: $(lib)
+
+$(BUILD)/obj/%.o: %.c
+	@mkdir -p $(@D)
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) -c -o $@ $<
+
+$(lib): $(call obj,$(common_src))
+	@rm -f $@; ar rcs $@ $^
+$(lib_daemon): $(call obj,$(filter-out $(mains),$(daemon_src)))
+	@rm -f $@; ar rcs $@ $^
+$(lib_client): $(call obj,$(filter-out $(mains),$(client_src) $(driver_src)))
+	@rm -f $@; ar rcs $@ $^
+
+$(BUILD)/quietbelld: $(call obj,server/daemon/main.c) $(lib_daemon) $(lib)
+	$(CC) $(QB_LDFLAGS) $(EXTRA) -o $@ $^ $(LIBS_DAEMON) $(LIBS_COMMON)
+$(BUILD)/quietbell: $(call obj,client/cli/main.c) $(lib_client) $(lib)
+	$(CC) $(QB_LDFLAGS) $(EXTRA) -o $@ $^ $(LIBS_CLIENT) $(LIBS_COMMON)
+$(BUILD)/quietbell-driver: $(call obj,client/agent/main.c) $(lib_client) $(lib)
+	$(CC) $(QB_LDFLAGS) $(EXTRA) -o $@ $^ $(LIBS_CLIENT) $(LIBS_COMMON)
+
+# Unit tests: tests/unit/<room>/<file>_test.c, one cmocka program each. Rooms of the daemon and the client link their
+# own library too.
+unit_src := $(foreach r,$(TEST_ROOMS),$(wildcard tests/unit/$(r)/*_test.c))
+unit_bin := $(patsubst %.c,$(BUILD)/%,$(unit_src))
+outside_src := $(wildcard tests/outside/*_test.c)
+outside_bin := $(patsubst %.c,$(BUILD)/%,$(outside_src))
+test_libs = $(if $(filter tests/unit/store/% tests/unit/ops/% tests/unit/api/%,$(1)),$(lib_daemon)) \
+            $(if $(filter tests/unit/client/%,$(1)),$(lib_client)) $(lib)
+
+.SECONDEXPANSION:
+$(BUILD)/tests/%_test: tests/%_test.c $$(call test_libs,tests/%_test.c)
+	@mkdir -p $(@D)
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) $(QB_LDFLAGS) -o $@ $< $(filter %.a,$^) \
+	  $(if $(findstring $(lib_daemon),$^),$(LIBS_DAEMON)) $(if $(findstring $(lib_client),$^),$(LIBS_CLIENT)) \
+	  -lcmocka $(LIBS_COMMON)
+
+unit: $(unit_bin)
+	@tests/run $(BUILD)/results $(unit_bin)
+outside: $(outside_bin)
+	@tests/run $(BUILD)/results $(outside_bin) $(wildcard tests/outside/*_test.py)
+
+# A second, instrumented build beside the first.
+sanitize:
+	$(MAKE) BUILD=$(BUILD)/asan CFLAGS="-O1 -g -fno-omit-frame-pointer" SAFE=-fPIE \
+	  EXTRA="-fsanitize=address,undefined -fno-sanitize-recover=all" unit
+valgrind: $(unit_bin)
+	@tests/valgrind $(unit_bin)
+
+deps:
+	deploy/deps all
+lint:
+	tests/lint
+arrows:
+	tests/lint arrows
+format:
+	git ls-files '*.c' '*.h' | xargs clang-format -i
+
+clean:
+	rm -rf $(BUILD)
+
+-include $(shell find $(BUILD)/obj $(BUILD)/tests -name '*.d' 2>/dev/null)
