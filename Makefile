@@ -49,7 +49,17 @@ $(BUILD)/obj/%.o: %.c
 
 $(lib): $(call obj,$(common_src))
 	@rm -f $@; ar rcs $@ $^
-$(lib_daemon): $(call obj,$(filter-out $(mains),$(daemon_src)))
+# The SQL files of schema/ become string constants, in order of their numbers.
+sql := $(sort $(wildcard schema/*.sql))
+$(BUILD)/gen/schema.c: $(sql)
+	@mkdir -p $(@D)
+	@{ echo '#include <stddef.h>'; echo 'extern const char *const schema_files[];'; \
+	   echo 'const char *const schema_files[] = {'; \
+	   for f in $^; do sed 's/\\/\\\\/g; s/"/\\"/g; s/.*/"&\\n"/' $$f; echo ','; done; echo 'NULL};'; } >$@
+$(BUILD)/gen/schema.o: $(BUILD)/gen/schema.c
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) -c -o $@ $<
+
+$(lib_daemon): $(call obj,$(filter-out $(mains),$(daemon_src))) $(BUILD)/gen/schema.o
 	@rm -f $@; ar rcs $@ $^
 $(lib_client): $(call obj,$(filter-out $(mains),$(client_src) $(driver_src)))
 	@rm -f $@; ar rcs $@ $^

@@ -1,0 +1,104 @@
+/* Writes the bundle: a fresh SQLite file with copies of everything that offline verification needs. */
+#include <string.h>
+#include <unistd.h>
+
+#include "server/store/internal.h"
+
+/* The exact schema text of a bundle; the verifier compares it verbatim. */
+static const char *const bundle_schema[] = {
+    "CREATE TABLE bundle.about (key TEXT PRIMARY KEY, value TEXT NOT NULL) STRICT",
+    "CREATE TABLE bundle.leaves (seq INTEGER PRIMARY KEY, frame BLOB NOT NULL) STRICT",
+    "CREATE TABLE bundle.heads (text TEXT NOT NULL) STRICT",
+    "CREATE TABLE bundle.hidden (commitment BLOB PRIMARY KEY, seq INTEGER NOT NULL, nonce BLOB NOT NULL,"
+    " entry BLOB NOT NULL, signature BLOB NOT NULL, author BLOB NOT NULL) STRICT",
+    "CREATE TABLE bundle.records (position INTEGER PRIMARY KEY, type INTEGER NOT NULL, slot INTEGER NOT NULL,"
+    " station TEXT NOT NULL, author BLOB NOT NULL, record_id BLOB NOT NULL, record BLOB NOT NULL) STRICT",
+    "CREATE TABLE bundle.recipes (slot INTEGER NOT NULL, station TEXT NOT NULL, place INTEGER NOT NULL,"
+    " recipe BLOB NOT NULL, PRIMARY KEY (slot, station, place)) STRICT",
+    "CREATE TABLE bundle.prekeys (station TEXT NOT NULL, place INTEGER NOT NULL, points BLOB NOT NULL,"
+    " PRIMARY KEY (station, place)) STRICT",
+    "CREATE TABLE bundle.shares (opening BLOB NOT NULL, custodian TEXT NOT NULL, shares BLOB NOT NULL,"
+    " PRIMARY KEY (opening, custodian)) STRICT",
+    NULL};
+
+/* Copies with the campaign bound; the leaves go in whole, since every proof is about the one ledger. */
+static const char *const copies[] = {
+    "INSERT INTO bundle.hidden SELECT commitment, seq, nonce, entry, signature, author FROM main.hidden"
+    " WHERE campaign = ? AND seq IS NOT NULL ORDER BY seq",
+    "INSERT INTO bundle.records SELECT position, type, slot, station, author, record_id, record FROM main.records"
+    " WHERE campaign = ? ORDER BY position",
+    "INSERT INTO bundle.recipes SELECT slot, station, place, recipe FROM main.recipes WHERE campaign = ?"
+    " ORDER BY slot, station, place",
+    "INSERT INTO bundle.prekeys SELECT station, place, points FROM main.prekeys WHERE campaign = ? ORDER BY station, "
+    "place",
+    "INSERT INTO bundle.shares SELECT opening, custodian, shares FROM main.shares WHERE campaign = ?"
+    " ORDER BY opening, custodian",
+    NULL};
+
+static enum qb_status put_pair(struct store *s, const char *key, const char *value, struct qb_error *e)
+{
+	struct query q = q_begin(s, "INSERT INTO bundle.about (key, value) VALUES (?, ?)", e);
+	q_text(&q, key);
+	q_text(&q, value);
+	return q_done(&q);
+}
+
+static enum qb_status fill(struct store *s, const uint8_t campaign[static 16], uint64_t ledger_size, const char *head,
+                           const char *version, struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	for (int i = 0; st == QB_OK && bundle_schema[i] != NULL; i++)
+		st = store_exec(s->db, bundle_schema[i], e);
+	char hex[33];
+	for (int i = 0; i < 16; i++)
+		sqlite3_snprintf(3, hex + 2 * i, "%02x", campaign[i]);
+	if (st == QB_OK)
+		st = put_pair(s, "campaign", hex, e);
+	if (st == QB_OK)
+		st = put_pair(s, "format", "quietbell-bundle-1", e);
+	if (st == QB_OK)
+		st = put_pair(s, "written-by", version, e);
+	if (st == QB_OK) {
+		struct query q = q_begin(s, "INSERT INTO bundle.heads (text) VALUES (?)", e);
+		q_text(&q, head);
+		st = q_done(&q);
+	}
+	if (st == QB_OK) {
+		struct query q = q_begin(
+		    s, "INSERT INTO bundle.leaves SELECT seq, frame FROM main.leaves WHERE seq < ? ORDER BY seq", e);
+		q_int(&q, (int64_t)ledger_size);
+		st = q_done(&q);
+	}
+	for (int i = 0; st == QB_OK && copies[i] != NULL; i++) {
+		struct query q = q_begin(s, copies[i], e);
+		q_blob(&q, campaign, 16);
+		st = q_done(&q);
+	}
+	return st;
+}
+
+enum qb_status store_bundle_write(struct store *s, const uint8_t campaign[static 16], uint64_t ledger_size,
+                                  const char *head, const char *version, const char *path, struct qb_error *e)
+{
+	(void)unlink(path);
+	struct query q = q_begin(s, "ATTACH DATABASE ? AS bundle", e);
+	q_text(&q, path);
+	enum qb_status st = q_done(&q);
+	if (st != QB_OK)
+		return st;
+	st = store_exec(s->db, "PRAGMA bundle.journal_mode=DELETE; PRAGMA bundle.application_id=1363299908", NULL);
+	/* journal_mode answers with a row, which store_exec ignores */
+	st = store_exec(s->db, "BEGIN IMMEDIATE", e);
+	if (st == QB_OK)
+		st = fill(s, campaign, ledger_size, head, version, e);
+	if (st == QB_OK)
+		st = store_exec(s->db, "COMMIT", e);
+	if (st != QB_OK)
+		(void)sqlite3_exec(s->db, "ROLLBACK", NULL, NULL, NULL);
+	enum qb_status detached = store_exec(s->db, "DETACH DATABASE bundle", st == QB_OK ? e : NULL);
+	if (st == QB_OK)
+		st = detached;
+	if (st != QB_OK)
+		(void)unlink(path);
+	return st;
+}
