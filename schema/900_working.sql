@@ -9,12 +9,10 @@ CREATE TABLE nonces (
 ) STRICT, WITHOUT ROWID;
 CREATE INDEX nonces_by_time ON nonces (expires);
 
--- Which station was ready for which slot before it froze, and what was decided at the freeze.
+-- Which station fetched which slot's recipe before its freeze; what was decided then is in the ledger.
 CREATE TABLE readiness (
   campaign  BLOB NOT NULL CHECK (length(campaign) = 16),
   slot      INTEGER NOT NULL,
   station   TEXT NOT NULL,
-  ready     INTEGER NOT NULL,
-  going     INTEGER,
   PRIMARY KEY (campaign, slot, station)
 ) STRICT;

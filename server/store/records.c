@@ -168,8 +168,7 @@ enum qb_status store_slot_keys_erase_below(struct store *s, const uint8_t campai
 enum qb_status store_ready_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
                                struct qb_error *e)
 {
-	struct query q = q_begin(
-	    s, "INSERT OR IGNORE INTO readiness (campaign, slot, station, ready, going) VALUES (?, ?, ?, 1, NULL)", e);
+	struct query q = q_begin(s, "INSERT OR IGNORE INTO readiness (campaign, slot, station) VALUES (?, ?, ?)", e);
 	q_blob(&q, campaign, 16);
 	q_int(&q, slot);
 	q_text(&q, station);
@@ -177,32 +176,12 @@ enum qb_status store_ready_put(struct store *s, const uint8_t campaign[static 16
 }
 
 enum qb_status store_ready_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool *ready, int *going, struct qb_error *e)
+                               bool *ready, struct qb_error *e)
 {
-	struct query q = q_begin(
-	    s, "SELECT ready, coalesce(going, -1) FROM readiness WHERE campaign = ? AND slot = ? AND station = ?", e);
+	struct query q = q_begin(s, "SELECT 1 FROM readiness WHERE campaign = ? AND slot = ? AND station = ?", e);
 	q_blob(&q, campaign, 16);
 	q_int(&q, slot);
 	q_text(&q, station);
-	*ready = false;
-	*going = -1;
-	if (q_row(&q)) {
-		*ready = q_col_int(&q, 0) != 0;
-		*going = (int)q_col_int(&q, 1);
-	}
+	*ready = q_row(&q);
 	return q_end(&q);
-}
-
-enum qb_status store_going_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool going, struct qb_error *e)
-{
-	struct query q = q_begin(s,
-	                         "INSERT INTO readiness (campaign, slot, station, ready, going) VALUES (?, ?, ?, 0, ?)"
-	                         " ON CONFLICT DO UPDATE SET going = excluded.going",
-	                         e);
-	q_blob(&q, campaign, 16);
-	q_int(&q, slot);
-	q_text(&q, station);
-	q_int(&q, going);
-	return q_done(&q);
 }

@@ -97,13 +97,11 @@ enum qb_status store_slot_key_get(struct store *s, const uint8_t campaign[static
 enum qb_status store_slot_keys_erase_below(struct store *s, const uint8_t campaign[static 16], int64_t slot,
                                            struct qb_error *e) QB_MUST_USE;
 
-/* Readiness and the decision at the freeze: going is -1 while undecided, else 0 or 1. */
+/* Readiness: the station fetched the slot's recipe before the freeze. */
 enum qb_status store_ready_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
                                struct qb_error *e) QB_MUST_USE;
 enum qb_status store_ready_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool *ready, int *going, struct qb_error *e) QB_MUST_USE;
-enum qb_status store_going_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool going, struct qb_error *e) QB_MUST_USE;
+                               bool *ready, struct qb_error *e) QB_MUST_USE;
 
 /* Openings. */
 enum qb_status store_shares_put(struct store *s, const uint8_t campaign[static 16], const uint8_t opening[static 16],
