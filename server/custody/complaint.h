@@ -15,10 +15,12 @@ enum qb_status complaint_make(const struct keygen_context *c, const struct deal 
                               const struct party_key *me, struct buf *out, struct qb_error *e) QB_MUST_USE;
 
 /*
- * Given:    d               the accused's deal, parsed; a deal that fails deal_check is guilty without any complaint
+ * Given:    d               the accused's deal, parsed; its signature is checked here (what is wrong with a signed
+ *                           deal besides a share, deal_check says without any complaint)
  *           p, n            the complaint
  * Returned: *verdict
  * Errors:   QB_FORMAT       not a complaint about this deal
+ *           QB_CRYPTO       the accused did not sign this deal, so nobody can be judged by it
  *           A false proof or a good share is no error: the verdict is COMPLAINT_FALSE.
  */
 enum qb_status complaint_judge(const struct keygen_context *c, const struct deal *d, const uint8_t *p, size_t n,

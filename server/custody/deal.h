@@ -29,13 +29,16 @@ struct deal {
 enum qb_status deal_make(const struct keygen_context *c, uint32_t i, const struct party_key *me, struct buf *out,
                          struct qb_error *e) QB_MUST_USE;
 
-/* Exact length, exactly c->k commitments, the context's ctx, every point ok, every scalar canonical. */
+/* Format only: exact length, exactly c->k commitments, the context's ctx. Errors: QB_FORMAT, nobody is blamed. */
 enum qb_status deal_parse(const struct keygen_context *c, const uint8_t *p, size_t n, struct deal *out,
                           struct qb_error *e) QB_MUST_USE;
 void deal_encode(const struct deal *d, struct buf *out);
 void deal_hash(const struct deal *d, uint8_t out[static 64]);
 
-/* What anyone can check: signature and possession. Errors: QB_CRYPTO, the custodian at fault in `where`. */
+/*
+ * What anyone can check: the signature first, since without it nobody can be blamed; then every point and scalar, and
+ * possession. Errors: QB_CRYPTO, the custodian in `where`.
+ */
 enum qb_status deal_check(const struct keygen_context *c, const struct deal *d, struct qb_error *e) QB_MUST_USE;
 
 /*

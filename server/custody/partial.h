@@ -26,8 +26,9 @@ struct partial_authority {
 };
 size_t partial_hash_bytes(enum partial_purpose purpose); /* 64 or 32; 0 for an unknown purpose */
 
-#define PARTIAL_BYTES 236 /* "QBP1" | i u32 | purpose u32 | record id 64 | hash 64 (zero-filled) | D 32 | c 32 | z 32  \
-	                   */
+#define PARTIAL_BYTES                                                                                                  \
+	236 /* "QBP1" | i u32 | purpose u32 | record id 64 | hash 64 (zero-filled) | D 32 | c 32 | z 32                \
+	     */
 
 struct partial {
 	uint32_t i;
