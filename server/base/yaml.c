@@ -33,7 +33,7 @@ static void node_free(struct yaml_node *n)
 	qb_free(n);
 }
 
-void yaml_free(struct yaml_doc **doc)
+void yaml_doc_free(struct yaml_doc **doc)
 {
 	if (*doc == NULL)
 		return;
@@ -199,7 +199,7 @@ enum qb_status yaml_parse(const char *text, size_t n, const char *file, struct y
 		yaml_parser_delete(&p);
 	}
 	if (st != QB_OK)
-		yaml_free(&doc);
+		yaml_doc_free(&doc);
 	*out = doc;
 	return st;
 }

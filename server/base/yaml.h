@@ -33,11 +33,11 @@ struct yaml_doc {
 /*
  * Given:    text, n   at most 4 MiB, one document; anchors, aliases, tags, duplicate keys and non-scalar keys are
  * refused file      name for errors Errors:   QB_FORMAT with file and line Owns:     the caller frees *out with
- * yaml_free
+ * yaml_doc_free
  */
 enum qb_status yaml_parse(const char *text, size_t n, const char *file, struct yaml_doc **out,
                           struct qb_error *e) QB_MUST_USE;
-void yaml_free(struct yaml_doc **doc);
+void yaml_doc_free(struct yaml_doc **doc);
 
 /* "file:line: key.path[2].key", for errors; in out, always terminated. */
 const char *yaml_where(const struct yaml_doc *doc, const struct yaml_node *n, char *out, size_t size);

@@ -11,6 +11,7 @@
 #include <stdint.h>
 #include <sys/types.h>
 
+#include "server/base/buf.h"
 #include "server/base/clock.h"
 #include "server/base/json.h"
 #include "server/base/log.h"
@@ -28,6 +29,7 @@ struct ops_spawner {
 struct ops_settings {
 	const char *data_dir;       /* holds store.sqlite, service.key, storage.key */
 	bool rehearsal_clock;       /* clock moved by the administrator; kept in the store */
+	int64_t rehearsal_seed;     /* with a rehearsal clock: fixes the service's contribution; -1: none */
 	struct clock_source system; /* the system clock (real or a test's) */
 	struct ops_spawner spawner;
 	const struct log *log;

@@ -1,0 +1,94 @@
+/* The end of the analysis: closing flushes every promise first; reviewers sign the audit; the bundle goes out. */
+#include <string.h>
+#include <unistd.h>
+
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+#include "server/ops/internal.h"
+
+#define BUNDLE_MAX      ((size_t)2 << 30)
+#define SERVICE_VERSION "1.0"
+
+enum qb_status case_close(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
+                          struct qb_error *e)
+{
+	struct accepted a;
+	struct txn t;
+	int64_t seq;
+	uint8_t leaf[32];
+	enum qb_status st = accept_entry(o, call, c, &a, e);
+	if (st != QB_OK)
+		return st;
+	if (c->state != C_SEALED)
+		st = qb_fail(e, QB_CONFLICT, "close", NULL, "the campaign is %s", campaign_state_word(c->state));
+	else if (now_locked(o) < c->plan->slots.end_gps_ns)
+		st = qb_fail(e, QB_CONFLICT, "close", "wait for the end of the stretch", "the campaign still runs");
+	if (st == QB_CONFLICT && c->state == C_SEALED)
+		reply->until_gps_ns = c->plan->slots.end_gps_ns;
+	if (st == QB_OK && (st = txn_begin(&t, o, "close", e)) == QB_OK) {
+		st = hidden_batches(&t, c, true, e);
+		if (st == QB_OK)
+			st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
+		if (st == QB_OK)
+			st = txn_commit(&t, e);
+		if (st == QB_OK)
+			reply_entry(reply, 201, seq, leaf, t.now_ns);
+		txn_end(&t);
+	}
+	accepted_free(&a);
+	return st;
+}
+
+enum qb_status case_sign(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
+                         struct qb_error *e)
+{
+	struct accepted a;
+	enum qb_status st = accept_entry(o, call, c, &a, e);
+	if (st != QB_OK)
+		return st;
+	if (c->state != C_OPENED)
+		st = qb_fail(e, QB_CONFLICT, "signature", "open the campaign first", "there is no audit to sign yet");
+	if (st == QB_OK)
+		st = enter_one(o, "audit-signature", call, &a, reply, e);
+	accepted_free(&a);
+	return st;
+}
+
+enum qb_status case_bundle(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
+                           struct qb_error *e)
+{
+	uint8_t ids[CUSTODY_MAX][16];
+	uint64_t size = 0;
+	struct buf head = {0};
+	int64_t opened = NO_SEQ;
+	(void)call;
+	if (c->state != C_OPENED)
+		return qb_fail(e, QB_CONFLICT, "bundle", "close and open it first", "the campaign is %s",
+		               campaign_state_word(c->state));
+	for (int i = 0; i < c->n; i++)
+		memcpy(ids[i], c->custodian[i].party->key_id, 16);
+	for (int i = 0; i < c->n_openings; i++) {
+		if (c->opening[i].scope == SCOPE_FULL && c->opening[i].opened)
+			opened = c->opening[i].seq;
+	}
+	int needed = (int)head_quorum((size_t)c->n);
+	enum qb_status st = store_cosigned_size(o->store, (const uint8_t(*)[16])ids, c->n, needed, &size, e);
+	if (st == QB_OK && (int64_t)size <= opened)
+		st = qb_fail(e, QB_CONFLICT, "bundle", "let the custodians run quietbell ledger head",
+		             "no head that covers the opening has the cosignatures of %d custodians", needed);
+	if (st == QB_OK)
+		st = head_with_cosignatures(o, size, &head, e);
+	char *path = text_printf("%s/bundle.tmp", o->data_dir);
+	if (st == QB_OK)
+		st = store_bundle_write(o->store, c->id, size, (const char *)head.data, SERVICE_VERSION, path, e);
+	if (st == QB_OK)
+		st = file_read(path, BUNDLE_MAX, &reply->bytes, e);
+	(void)unlink(path);
+	if (st == QB_OK) {
+		reply->http_status = 200;
+		reply->content_type = qb_strdup("application/vnd.sqlite3");
+	}
+	qb_free(path);
+	buf_free(&head);
+	return st;
+}

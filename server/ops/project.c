@@ -1,0 +1,371 @@
+/*
+ * The projection: what the ledger says about parties and campaigns, leaf by leaf. The same code runs at start over the
+ * stored ledger and after each commit, so a restart can't come to another state.
+ */
+#include <stdio.h>
+#include <string.h>
+
+#include "server/base/alloc.h"
+#include "server/base/check.h"
+#include "server/base/text.h"
+#include "server/ops/internal.h"
+
+struct fetch_state {
+	const json_t *files;
+};
+
+static enum qb_status fetch_file(void *state, const char *name, struct buf *out, struct qb_error *e)
+{
+	const struct fetch_state *f = state;
+	const char *text = json_string_value(json_object_get(f->files, name));
+	if (text == NULL)
+		return qb_fail(e, QB_NOT_FOUND, name, "draft with all files that the plan names",
+		               "is not with the plan");
+	buf_text(out, text);
+	return QB_OK;
+}
+
+static enum qb_status apply_party(struct ops *o, const struct wire_entry *en, struct qb_error *e)
+{
+	struct ops_party *p = QB_NEW(struct ops_party);
+	(void)e;
+	(void)snprintf(p->name, sizeof p->name, "%s", wire_entry_text(en, "name"));
+	CHECK(wire_role_parse(wire_entry_text(en, "role"), &p->role));
+	wire_entry_hex(en, "signing_key", p->signing_key, 32);
+	wire_entry_hex(en, "exchange_key", p->exchange_key, 32);
+	sign_key_id(p->signing_key, p->key_id);
+	o->party = qb_realloc(o->party, (size_t)o->n_parties + 1, sizeof *o->party);
+	o->party[o->n_parties++] = p;
+	return QB_OK;
+}
+
+static void custodian_restart(struct custodian *cu)
+{
+	cu->deal_seq = cu->certify_seq = cu->rehearsal_seq = NO_SEQ;
+	cu->commitment_seq = cu->contribution_seq = NO_SEQ;
+	qb_free(cu->deal);
+	cu->deal = NULL;
+	cu->deal_n = 0;
+}
+
+enum qb_status campaign_context(struct campaign *c, struct qb_error *e)
+{
+	struct party_public parties[CUSTODY_MAX];
+	for (int i = 0; i < c->n; i++) {
+		memcpy(parties[i].sign, c->custodian[i].party->signing_key, 32);
+		memcpy(parties[i].exchange, c->custodian[i].party->exchange_key, 32);
+	}
+	return keygen_context_init(&c->context, c->id, 1, c->attempt, (uint32_t)c->n, (uint32_t)c->k, parties, e);
+}
+
+static enum qb_status apply_plan(struct ops *o, const struct wire_entry *en, const struct entry *leaf,
+                                 struct qb_error *e)
+{
+	struct campaign *c = QB_NEW(struct campaign);
+	struct transcript t;
+	uint8_t hash[64];
+	transcript_begin(&t, "quietbell/1/campaign/id");
+	transcript_field(&t, leaf->body, leaf->body_len);
+	transcript_end(&t, hash);
+	memcpy(c->id, hash, 16);
+	c->plan_seq = (int64_t)leaf->seq;
+	c->plan_text = qb_strdup(wire_entry_text(en, "plan"));
+	c->plan_files = json_text(wire_entry_json(en, "files"));
+	struct fetch_state f = {wire_entry_json(en, "files")};
+	enum qb_status st = plan_parse(c->plan_text, strlen(c->plan_text), "plan", fetch_file, &f, &c->plan, e);
+	if (st != QB_OK) {
+		campaign_free(&c);
+		return st;
+	}
+	(void)snprintf(c->name, sizeof c->name, "%s", c->plan->campaign);
+	c->rehearsal_clock = o->rehearsal_clock;
+	c->n = c->plan->custodians;
+	c->k = c->plan->custodians_needed;
+	c->attempt = c->sealing_attempt = 1;
+	c->canary_seq = c->sealing_seq = c->sealed_seq = c->closing_seq = NO_SEQ;
+	for (int i = 0; st == QB_OK && i < c->n; i++) {
+		custodian_restart(&c->custodian[i]);
+		c->custodian[i].party = party_named(o, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
+		if (c->custodian[i].party == NULL)
+			st = qb_fail(e, QB_REFUSED, "plan: parties", "enrol first", "custodian %d is not enrolled",
+			             i + 1);
+	}
+	if (st == QB_OK)
+		st = campaign_context(c, e);
+	if (st != QB_OK) {
+		campaign_free(&c);
+		return st;
+	}
+	c->n_slots = slots_count(&c->plan->slots);
+	c->slot = QB_NEW_ARRAY(struct slot_public, (size_t)c->n_slots);
+	for (int64_t i = 0; i < c->n_slots; i++)
+		c->slot[i].freeze_seq = NO_SEQ;
+	o->campaign = qb_realloc(o->campaign, (size_t)o->n_campaigns + 1, sizeof *o->campaign);
+	o->campaign[o->n_campaigns++] = c;
+	return QB_OK;
+}
+
+void campaign_free(struct campaign **cp)
+{
+	struct campaign *c = *cp;
+	if (c == NULL)
+		return;
+	for (int i = 0; i < c->n; i++)
+		qb_free(c->custodian[i].deal);
+	for (int i = 0; i < c->n_openings; i++)
+		qb_free(c->opening[i].positions);
+	plan_free(&c->plan);
+	qb_free(c->plan_text);
+	qb_free(c->plan_files);
+	qb_free(c->canary);
+	qb_free(c->slot);
+	qb_free(c->hold);
+	qb_free(c->stop);
+	qb_free(c->opening);
+	qb_free(c);
+	*cp = NULL;
+}
+
+/* All deals are in: the group follows, as any outsider can compute it. */
+static enum qb_status derive_group(struct campaign *c, struct qb_error *e)
+{
+	struct deal *deals = QB_NEW_ARRAY(struct deal, (size_t)c->n);
+	enum qb_status st = QB_OK;
+	for (int i = 0; st == QB_OK && i < c->n; i++)
+		st = deal_parse(&c->context, c->custodian[i].deal, c->custodian[i].deal_n, &deals[i], e);
+	if (st == QB_OK)
+		st = keygen_group(&c->context, deals, &c->group, e);
+	c->has_group = st == QB_OK;
+	qb_free(deals);
+	return st;
+}
+
+static enum qb_status apply_deal(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
+                                 struct qb_error *e)
+{
+	struct custodian *cu = &c->custodian[custodian_index(c, en->by)];
+	struct buf b = {0};
+	CHECK(base64_decode(wire_entry_text(en, "message"), &b));
+	qb_free(cu->deal);
+	cu->deal = b.data;
+	cu->deal_n = b.len;
+	cu->deal_seq = (int64_t)leaf->seq;
+	wire_entry_hex(en, "contribution_commitment", cu->contribution_commitment, 64);
+	cu->commitment_seq = (int64_t)leaf->seq;
+	for (int i = 0; i < c->n; i++) {
+		if (c->custodian[i].deal_seq == NO_SEQ)
+			return QB_OK;
+	}
+	(void)derive_group(c, NULL); /* a bad set of deals is for the custodians to report */
+	(void)e;
+	return QB_OK;
+}
+
+static enum qb_status apply_keygen_failed(struct campaign *c, struct qb_error *e)
+{
+	for (int i = 0; i < c->n; i++)
+		custodian_restart(&c->custodian[i]);
+	c->attempt++;
+	c->has_group = false;
+	return campaign_context(c, e);
+}
+
+static void apply_keygen(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
+                         const uint8_t leaf_hash[static 32])
+{
+	const char *type = en->type->type;
+	int i = custodian_index(c, en->by);
+	if (strcmp(type, "certify") == 0) {
+		c->custodian[i].certify_seq = (int64_t)leaf->seq;
+		wire_entry_hex(en, "certificate_signature", c->custodian[i].certificate_signature, 64);
+	} else if (strcmp(type, "canary") == 0) {
+		struct buf b = {0};
+		CHECK(base64_decode(wire_entry_text(en, "record"), &b));
+		qb_free(c->canary);
+		c->canary = b.data;
+		c->canary_n = b.len;
+		c->canary_seq = (int64_t)leaf->seq;
+		memcpy(c->canary_leaf, leaf_hash, 32);
+		c->state = C_CERTIFIED;
+	} else if (strcmp(type, "rehearsal") == 0) {
+		c->custodian[i].rehearsal_seq = (int64_t)leaf->seq;
+	} else if (strcmp(type, "rehearsed") == 0) {
+		c->state = C_REHEARSED;
+	} else if (strcmp(type, "contribution-commitment") == 0) {
+		c->custodian[i].commitment_seq = (int64_t)leaf->seq;
+		wire_entry_hex(en, "contribution_commitment", c->custodian[i].contribution_commitment, 64);
+	} else if (strcmp(type, "contribution") == 0) {
+		c->custodian[i].contribution_seq = (int64_t)leaf->seq;
+	}
+}
+
+static void apply_sealing(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
+{
+	const char *type = en->type->type;
+	if (strcmp(type, "sealing") == 0) {
+		c->state = C_SEALING;
+		c->sealing_seq = (int64_t)leaf->seq;
+		wire_entry_hex(en, "sealer_key", c->sealer_key, 32);
+		wire_entry_hex(en, "service_commitment", c->service_commitment, 64);
+	} else if (strcmp(type, "sealing-failed") == 0) {
+		c->state = C_REHEARSED;
+		c->sealing_attempt++;
+		for (int i = 0; i < c->n; i++)
+			c->custodian[i].commitment_seq = c->custodian[i].contribution_seq = NO_SEQ;
+	} else if (strcmp(type, "record") == 0) {
+		int64_t slot = wire_entry_int(en, "slot");
+		if (slot < 0) {
+			wire_entry_hex(en, "record_id", c->seed_record_id, 64);
+		} else if (slot < c->n_slots) {
+			wire_entry_hex(en, "record_id", c->slot[slot].record_id, 64);
+			wire_entry_hex(en, "slot_key_commitment", c->slot[slot].slot_key_commitment, 64);
+		}
+	} else if (strcmp(type, "sealed") == 0) {
+		c->state = C_SEALED;
+		c->sealed_seq = (int64_t)leaf->seq;
+		c->last_batch_ns = leaf->received_gps_ns;
+	} else if (strcmp(type, "prekeys") == 0) {
+		int s = plan_station(c->plan, wire_entry_text(en, "station"));
+		int64_t place = wire_entry_int(en, "place");
+		if (s >= 0 && place >= 0 && place < RECIPE_PLACES)
+			c->prekeys[s][place] = true;
+	}
+}
+
+static int station_or_all(const struct campaign *c, const char *name)
+{
+	return strcmp(name, "all") == 0 ? STATES_ALL : plan_station(c->plan, name);
+}
+
+static void apply_control(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
+{
+	const char *type = en->type->type;
+	int64_t at = leaf->received_gps_ns;
+	if (strcmp(type, "hold") == 0) {
+		c->hold = qb_realloc(c->hold, (size_t)c->n_holds + 1, sizeof *c->hold);
+		c->hold[c->n_holds++] =
+		    (struct hold){(int64_t)leaf->seq,
+		                  {station_or_all(c, wire_entry_text(en, "station")), wire_entry_gps(en, "from_gps"),
+		                   wire_entry_gps(en, "to_gps"), at, STATES_NEVER}};
+	} else if (strcmp(type, "stop") == 0) {
+		c->stop = qb_realloc(c->stop, (size_t)c->n_stops + 1, sizeof *c->stop);
+		c->stop[c->n_stops++] = (struct stop){
+		    (int64_t)leaf->seq, {station_or_all(c, wire_entry_text(en, "station")), at, STATES_NEVER}};
+	} else if (strcmp(type, "hold-lift") == 0) {
+		for (int i = 0; i < c->n_holds; i++) {
+			if (c->hold[i].seq == wire_entry_int(en, "hold"))
+				c->hold[i].hold.lifted_ns = at;
+		}
+	} else if (strcmp(type, "stop-lift") == 0) {
+		for (int i = 0; i < c->n_stops; i++) {
+			if (c->stop[i].seq == wire_entry_int(en, "stop"))
+				c->stop[i].stop.lifted_ns = at;
+		}
+	}
+}
+
+static uint8_t station_bits(const struct campaign *c, const json_t *names)
+{
+	unsigned bits = 0;
+	size_t i;
+	json_t *v;
+	json_array_foreach(names, i, v)
+	{
+		int s = plan_station(c->plan, json_string_value(v));
+		if (s >= 0)
+			bits |= 1u << s;
+	}
+	return (uint8_t)bits;
+}
+
+static void apply_slot(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
+{
+	const char *type = en->type->type;
+	int64_t n = wire_entry_int(en, "slot");
+	if (n < 0 || n >= c->n_slots)
+		return;
+	struct slot_public *s = &c->slot[n];
+	if (strcmp(type, "freeze") == 0) {
+		s->freeze_seq = (int64_t)leaf->seq;
+		s->ready = station_bits(c, wire_entry_json(en, "ready"));
+		s->going = station_bits(c, wire_entry_json(en, "going"));
+		if (n >= c->next_freeze)
+			c->next_freeze = n + 1;
+		return;
+	}
+	int station = plan_station(c->plan, wire_entry_text(en, "station"));
+	if (station < 0)
+		return;
+	if (strcmp(type, "play-report") == 0)
+		s->reported = (uint8_t)(s->reported | 1u << station);
+	else if (s->notes[station] < PLAY_NOTES_MAX)
+		s->notes[station]++;
+}
+
+static void apply_opening(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
+                          const uint8_t leaf_hash[static 32])
+{
+	const char *type = en->type->type;
+	if (strcmp(type, "closing") == 0) {
+		c->state = C_CLOSED;
+		c->closing_seq = (int64_t)leaf->seq;
+	} else if (strcmp(type, "opening-request") == 0) {
+		struct opening op = {.scope = SCOPE_FULL, .seq = (int64_t)leaf->seq};
+		memcpy(op.id, leaf_hash, 16);
+		memcpy(op.authority, leaf_hash, 32);
+		memcpy(op.asker, leaf->author, 16);
+		c->opening = qb_realloc(c->opening, (size_t)c->n_openings + 1, sizeof *c->opening);
+		c->opening[c->n_openings++] = op;
+	} else if (strcmp(type, "opened") == 0) {
+		struct opening *op = opening_find(c, wire_entry_text(en, "opening"));
+		if (op != NULL)
+			op->opened = true;
+		c->state = C_OPENED;
+	}
+}
+
+static enum qb_status apply_campaign_entry(struct ops *o, const struct wire_entry *en, const struct entry *leaf,
+                                           const uint8_t leaf_hash[static 32], struct qb_error *e)
+{
+	char id[33];
+	hex_encode(id, en->campaign, 16);
+	struct campaign *c = campaign_find(o, id);
+	if (c == NULL)
+		return qb_fail(e, QB_FAULT, "ledger", "restore a backup", "leaf %llu is about an unknown campaign",
+		               (unsigned long long)leaf->seq);
+	const char *type = en->type->type;
+	if (strcmp(type, "deal") == 0)
+		return apply_deal(c, en, leaf, e);
+	if (strcmp(type, "keygen-failed") == 0)
+		return apply_keygen_failed(c, e);
+	if (strcmp(type, "freeze") == 0 || strcmp(type, "play-report") == 0 || strcmp(type, "play-note") == 0) {
+		apply_slot(c, en, leaf);
+		return QB_OK;
+	}
+	apply_keygen(c, en, leaf, leaf_hash);
+	apply_sealing(c, en, leaf);
+	apply_control(c, en, leaf);
+	apply_opening(c, en, leaf, leaf_hash);
+	return QB_OK;
+}
+
+enum qb_status project_leaf(struct ops *o, const struct entry *leaf, const uint8_t leaf_hash[static 32],
+                            struct qb_error *e)
+{
+	struct wire_entry en;
+	if (leaf->kind == ENTRY_HIDDEN)
+		return QB_OK;
+	enum qb_status st = wire_entry_parse((const char *)leaf->body, leaf->body_len, &en, e);
+	if (st != QB_OK)
+		return st;
+	if (strcmp(en.type->type, "service-start") == 0)
+		wire_entry_hex(&en, "administrator_key", o->administrator_key, 32);
+	else if (strcmp(en.type->type, "enrolment") == 0)
+		st = apply_party(o, &en, e);
+	else if (strcmp(en.type->type, "plan") == 0)
+		st = apply_plan(o, &en, leaf, e);
+	else if (en.has_campaign)
+		st = apply_campaign_entry(o, &en, leaf, leaf_hash, e);
+	wire_entry_free(&en);
+	return st;
+}
