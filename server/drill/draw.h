@@ -62,4 +62,7 @@ enum qb_status draw_slot(const struct drill_plan *plan, bool empty, int64_t slot
 enum qb_status draw_longest_drive(const struct drill_plan *plan, const struct plan_family *family, double *before_s,
                                   double *after_s, struct qb_error *e) QB_MUST_USE;
 
+/* True when draws of this family carry weight_mpc3. */
+bool draw_family_has_weight(const struct drill_plan *plan, const struct plan_family *family);
+
 #endif

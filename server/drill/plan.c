@@ -70,7 +70,7 @@ void plan_free(struct drill_plan **plan)
 	if (*plan == NULL)
 		return;
 	wave_network_free(&(*plan)->network);
-	yaml_free(&(*plan)->doc);
+	yaml_doc_free(&(*plan)->doc);
 	qb_free(*plan);
 	*plan = NULL;
 }

@@ -43,6 +43,9 @@ struct drill_truth {
 	struct truth_station station[TRUTH_MAX_STATIONS];
 };
 
+/* The rules that hold for every truth record. Errors: QB_RANGE. */
+enum qb_status truth_check(const struct drill_truth *t, struct qb_error *e) QB_MUST_USE;
+
 /*
  * Returned: out        content appended, at most TRUTH_BYTES
  * Errors:   QB_RANGE   a number that is not finite, too many stations, too long

@@ -26,7 +26,7 @@ static enum qb_status parse(const char *text, struct population *pop, struct qb_
 	}
 	if (st == QB_OK)
 		st = yaml_all_used(doc, doc->root, e);
-	yaml_free(&doc);
+	yaml_doc_free(&doc);
 	return st;
 }
 
