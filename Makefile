@@ -39,7 +39,9 @@ lib_daemon := $(BUILD)/libquietbelld.a
 lib_client := $(BUILD)/libquietbell-client.a
 programs   := $(BUILD)/quietbell $(BUILD)/quietbelld $(BUILD)/quietbell-driver
 
-.PHONY: all lib unit outside system test check lint arrows format deps demo bench fuzz sanitize valgrind install clean
+# A failed recipe must not leave a half-written file behind.
+.DELETE_ON_ERROR:
+.PHONY: all lib unit test-programs outside system test check lint arrows format deps demo bench fuzz sanitize valgrind install clean
 all: $(programs)
 lib: $(lib)
 
@@ -87,10 +89,27 @@ $(BUILD)/tests/%_test: tests/%_test.c $$(call test_libs,tests/%_test.c)
 	  $(if $(findstring $(lib_daemon),$^),$(LIBS_DAEMON)) $(if $(findstring $(lib_client),$^),$(LIBS_CLIENT)) \
 	  -lcmocka $(LIBS_COMMON)
 
+# Small programs that scripts in tests/outside/ call for our numbers.
+helper_bin := $(patsubst %.c,$(BUILD)/%,$(wildcard tests/outside/*_helper.c))
+$(BUILD)/tests/outside/%_helper: tests/outside/%_helper.c $(lib)
+	@mkdir -p $(@D)
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) $(QB_LDFLAGS) -o $@ $< $(lib) $(LIBS_COMMON)
+
+test-programs: $(unit_bin) $(outside_bin) $(helper_bin)
 unit: $(unit_bin)
 	@tests/run $(BUILD)/results $(unit_bin)
-outside: $(outside_bin)
-	@tests/run $(BUILD)/results $(outside_bin) $(wildcard tests/outside/*_test.py)
+outside: $(outside_bin) $(helper_bin)
+	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(outside_bin) $(wildcard tests/outside/*_test.py)
+
+system: all
+	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(sort $(wildcard tests/system/[0-9]*))
+test:
+	@tests/all $(BUILD)
+check: test sanitize valgrind
+demo:
+	@deploy/deps build && deploy/deps run
+	@echo "building ..." && $(MAKE) -s -j$$(nproc) BUILD=$(BUILD) all
+	@deploy/demo/run $(BUILD)
 
 # A second, instrumented build beside the first.
 sanitize:
@@ -98,6 +117,15 @@ sanitize:
 	  EXTRA="-fsanitize=address,undefined -fno-sanitize-recover=all" unit
 valgrind: $(unit_bin)
 	@tests/valgrind $(unit_bin)
+
+FUZZ_SECONDS ?= 30
+fuzz_bin := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzz/%,$(wildcard tests/fuzz/*_fuzz.c))
+$(BUILD)/fuzz/%: tests/fuzz/%.c
+	@mkdir -p $(@D)
+	clang -std=c17 -D_GNU_SOURCE -I. -O1 -g -fsanitize=fuzzer,address,undefined -fno-sanitize-recover=all -o $@ $< \
+	  $(foreach r,$(ROOMS),$(wildcard server/$(r)/*.c)) $(LIBS_COMMON)
+fuzz: $(fuzz_bin)
+	@tests/fuzz/run $(FUZZ_SECONDS) $(fuzz_bin)
 
 deps:
 	deploy/deps all
@@ -107,6 +135,13 @@ arrows:
 	tests/lint arrows
 format:
 	git ls-files '*.c' '*.h' | xargs clang-format -i
+
+install: all
+	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/sbin $(DESTDIR)$(PREFIX)/share/man/man1 $(DESTDIR)$(PREFIX)/share/man/man8
+	install -m 755 $(BUILD)/quietbell $(BUILD)/quietbell-driver $(DESTDIR)$(PREFIX)/bin/
+	install -m 755 $(BUILD)/quietbelld $(DESTDIR)$(PREFIX)/sbin/
+	install -m 644 $(wildcard docs/man/*.1) $(DESTDIR)$(PREFIX)/share/man/man1/
+	install -m 644 $(wildcard docs/man/*.8) $(DESTDIR)$(PREFIX)/share/man/man8/
 
 clean:
 	rm -rf $(BUILD)
