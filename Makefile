@@ -12,7 +12,7 @@ PREFIX ?= /usr/local
 BUILD  ?= build
 CC     ?= gcc
 
-ROOMS      ?= base ledger custody wave drill audit wire
+ROOMS      ?= base ledger custody wave drill audit wire view
 TEST_ROOMS ?= $(ROOMS) store ops api client
 PACKAGES   := libsodium libmicrohttpd sqlite3 fftw3 jansson libcurl erfa yaml-0.1 gsl libseccomp
 

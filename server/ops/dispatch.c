@@ -69,7 +69,7 @@ static enum qb_status run(struct ops *o, const struct ops_call *call, struct ops
 		/* Without a part in any campaign nobody learns whether this one exists. */
 		if (call->who == NULL || (r->roles & ROLE_BIT(call->who->role)) == 0)
 			return check_role(o, call, NULL, e);
-		c = campaign_find(o, call->match->parts[0]);
+		c = view_campaign(&o->view, call->match->parts[0]);
 		if (c == NULL)
 			return qb_fail(e, QB_NOT_FOUND, NULL, "see quietbell campaign list",
 			               "there is no such campaign");

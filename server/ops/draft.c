@@ -18,7 +18,7 @@ static enum qb_status check_people(struct ops *o, const struct drill_plan *plan,
 {
 	for (int i = 0; i < plan->n_people; i++) {
 		const struct plan_person *p = &plan->person[i];
-		const struct ops_party *party = party_named(o, p->name);
+		const struct view_party *party = view_party_named(&o->view, p->name);
 		if (party == NULL || strcmp(wire_role_word(party->role), plan_duty_word(p->duty)) != 0)
 			return qb_fail(e, QB_REFUSED, "plan: parties",
 			               "invite and enrol every person in the role of the plan first",
@@ -41,7 +41,7 @@ static enum qb_status check_plan(struct ops *o, const struct accepted *a, struct
 		st = qb_fail(e, QB_REFUSED, "plan: phase",
 		             "write phase: rehearsal, or use a service with the system clock",
 		             "this service runs on a rehearsal clock");
-	if (st == QB_OK && campaign_find(o, plan->campaign) != NULL)
+	if (st == QB_OK && view_campaign(&o->view, plan->campaign) != NULL)
 		st = qb_fail(e, QB_CONFLICT, "plan: campaign", "choose another name",
 		             "a campaign '%s' was drafted before", plan->campaign);
 	if (st == QB_OK)
@@ -63,7 +63,7 @@ enum qb_status case_draft(struct ops *o, struct campaign *none, const struct ops
 	if (st == QB_OK)
 		st = enter_one(o, "draft", call, &a, reply, e);
 	if (st == QB_OK) {
-		const struct campaign *c = o->campaign[o->n_campaigns - 1];
+		const struct campaign *c = o->view.campaign[o->view.n_campaigns - 1];
 		json_object_set_new(reply->doc, "id", json_hex_new(c->id, 16));
 		json_object_set_new(reply->doc, "name", json_string(c->name));
 	}
@@ -78,8 +78,8 @@ enum qb_status case_campaigns_list(struct ops *o, struct campaign *none, const s
 	(void)call;
 	(void)e;
 	json_t *list = json_array();
-	for (int i = 0; i < o->n_campaigns; i++) {
-		const struct campaign *c = o->campaign[i];
+	for (int i = 0; i < o->view.n_campaigns; i++) {
+		const struct campaign *c = o->view.campaign[i];
 		json_t *j = json_object();
 		json_object_set_new(j, "id", json_hex_new(c->id, 16));
 		json_object_set_new(j, "name", json_string(c->name));

@@ -21,91 +21,10 @@
 #include "server/ledger/tree.h"
 #include "server/ops/ops.h"
 #include "server/store/store.h"
+#include "server/view/view.h"
 #include "server/wire/entries.h"
 
 #define HIDDEN_BATCH 16
-#define NO_SEQ       (-1)
-
-enum campaign_state { C_DRAFTED, C_CERTIFIED, C_REHEARSED, C_SEALING, C_SEALED, C_CLOSED, C_OPENED };
-
-struct custodian {
-	const struct ops_party *party;                                                  /* owned by struct ops */
-	int64_t deal_seq, certify_seq, rehearsal_seq, commitment_seq, contribution_seq; /* NO_SEQ: not yet */
-	uint8_t *deal; /* owned; of the current attempt */
-	size_t deal_n;
-	uint8_t certificate_signature[SIGN_BYTES];
-	uint8_t contribution_commitment[64]; /* for the current sealing attempt */
-	struct partial rehearsal;
-};
-
-struct hold {
-	int64_t seq;
-	struct states_hold hold;
-};
-struct stop {
-	int64_t seq;
-	struct states_stop stop;
-};
-
-enum opening_scope { SCOPE_FULL, SCOPE_SPOT };
-struct opening {
-	uint8_t id[16];
-	enum opening_scope scope;
-	uint8_t authority[64]; /* leaf hash (32) or commitment (64) */
-	int64_t seq;           /* of the entry; NO_SEQ for a spot */
-	uint8_t asker[16];     /* key id */
-	bool opened;
-	int64_t *positions; /* spot: the records it opens, fixed when it was asked */
-	int n_positions;
-};
-
-/* What a slot's public listing shows beyond the schedule. */
-struct slot_public {
-	uint8_t record_id[64], slot_key_commitment[64];
-	int64_t freeze_seq;   /* NO_SEQ before the freeze */
-	uint8_t ready, going; /* bit per station */
-	uint8_t reported;     /* bit per station */
-	uint8_t notes[STATES_MAX_STATIONS];
-};
-
-struct seal_job; /* seal.c */
-
-struct campaign {
-	uint8_t id[16];
-	char name[PLAN_NAME_MAX];
-	bool rehearsal_clock;
-	int64_t plan_seq;
-	char *plan_text, *plan_files; /* owned; files: JSON text of {name: text} */
-	struct drill_plan *plan;      /* owned */
-	enum campaign_state state;
-	int n, k;
-	struct custodian custodian[CUSTODY_MAX];
-	uint64_t attempt, sealing_attempt;
-	struct keygen_context context; /* of the current attempt */
-	struct custody_group group;    /* from C_CERTIFIED on, and once all deals are in */
-	bool has_group;
-	int64_t canary_seq;
-	uint8_t canary_leaf[32];
-	uint8_t *canary; /* owned */
-	size_t canary_n;
-	bool prekeys[STATES_MAX_STATIONS][RECIPE_PLACES];
-	int64_t sealing_seq, sealed_seq, closing_seq;
-	uint8_t sealer_key[32], service_commitment[64];
-	struct seal_job *job;
-	int64_t n_slots;
-	struct slot_public *slot; /* owned; n_slots */
-	uint8_t seed_record_id[64];
-	int64_t next_freeze;   /* first slot without a freeze entry */
-	int64_t erased_below;  /* keys of slots below this one are erased */
-	int64_t last_batch_ns; /* hidden batches entered up to this time */
-	struct hold *hold;
-	int n_holds;
-	struct stop *stop;
-	int n_stops;
-	struct opening *opening;
-	int n_openings;
-	int64_t n_claims;
-};
 
 struct ops {
 	pthread_mutex_t lock;
@@ -115,16 +34,13 @@ struct ops {
 	char *data_dir;
 	struct secret *service_seed, *storage_key; /* storage: a scalar; slot keys are boxed to its point */
 	uint8_t storage_point[32];
-	uint8_t service_key[32], service_id[16], administrator_key[32];
+	uint8_t service_key[32], service_id[16];
 	bool rehearsal_clock;
 	int64_t rehearsal_now_ns;
 	struct ledger_hash *leaf; /* all leaf hashes; owned */
 	uint64_t size, cap;
 	struct tree_range range;
-	struct ops_party **party; /* each owned; pointers stay valid */
-	int n_parties;
-	struct campaign **campaign;
-	int n_campaigns;
+	struct view view; /* what the ledger says */
 	bool stopping;
 };
 
@@ -154,27 +70,10 @@ enum qb_status txn_commit(struct txn *t, struct qb_error *e) QB_MUST_USE;
 /* Rolls back unless it was committed; always call it last. */
 void txn_end(struct txn *t);
 
-/* ---- project.c ---- */
-/* Applies one leaf to the projection; used at start and after each commit. */
-enum qb_status project_leaf(struct ops *o, const struct entry *entry, const uint8_t leaf_hash[static 32],
-                            struct qb_error *e) QB_MUST_USE;
-void campaign_free(struct campaign **c);
-/* Prepares the context of the current key generation attempt. */
-enum qb_status campaign_context(struct campaign *c, struct qb_error *e) QB_MUST_USE;
-
 /* ---- find.c ---- */
-struct campaign *campaign_find(struct ops *o, const char *name_or_id);
-const struct ops_party *party_named(const struct ops *o, const char *name);
-const struct ops_party *party_by_id(const struct ops *o, const uint8_t key_id[static 16]);
-int custodian_index(const struct campaign *c, const char *name); /* from 0, or -1 */
-int station_of_driver(const struct campaign *c, const char *name);
-struct opening *opening_find(struct campaign *c, const char *id_hex);
-/* The party's role in the campaign; ROLE_NONE when it has none. */
-enum wire_role campaign_role(const struct campaign *c, const struct ops_party *p);
 /* Parses a slot number of a path; QB_NOT_FOUND beyond the campaign. */
 enum qb_status slot_number(const struct campaign *c, const char *text, int64_t *out, struct qb_error *e) QB_MUST_USE;
 bool query_int(const char *query, const char *key, int64_t min, int64_t max, int64_t otherwise, int64_t *out);
-const char *campaign_state_word(enum campaign_state s);
 int64_t now_locked(struct ops *o);
 
 /* ---- accept.c: the entry that a request carries ---- */

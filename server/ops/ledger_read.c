@@ -200,8 +200,8 @@ enum qb_status case_clock(struct ops *o, struct campaign *c, const struct ops_ca
 		return st;
 	o->rehearsal_now_ns = to;
 	pthread_cond_broadcast(&o->changed);
-	for (int i = 0; st == QB_OK && i < o->n_campaigns; i++)
-		st = campaign_due(o, o->campaign[i], e);
+	for (int i = 0; st == QB_OK && i < o->view.n_campaigns; i++)
+		st = campaign_due(o, o->view.campaign[i], e);
 	reply->http_status = 200;
 	reply->doc = json_object();
 	json_object_set_new(reply->doc, "now_gps", json_gps_new(to));

@@ -105,7 +105,7 @@ enum qb_status txn_commit(struct txn *t, struct qb_error *e)
 		remember_leaf(o, &t->leaf[i].hash);
 		/* The use case checked everything before; a leaf that can't be applied now would be our own bug. */
 		CHECK(entry_decode(t->leaf[i].frame.data, t->leaf[i].frame.len, &en, e) == QB_OK);
-		CHECK(project_leaf(o, &en, t->leaf[i].hash.b, e) == QB_OK);
+		CHECK(view_apply(&o->view, &en, t->leaf[i].hash.b, e) == QB_OK);
 	}
 	pthread_cond_broadcast(&o->changed);
 	return QB_OK;

@@ -32,7 +32,7 @@ static enum qb_status add_record(void *state, const struct store_record *r, stru
 	json_object_set_new(j, "slot", json_integer(r->slot));
 	if (*r->station != '\0')
 		json_object_set_new(j, "station", json_string(r->station));
-	const struct ops_party *author = party_by_id(l->o, r->author);
+	const struct view_party *author = view_party_by_id(&l->o->view, r->author);
 	json_object_set_new(j, "by", json_string(author != NULL ? author->name : "service"));
 	json_object_set_new(j, "record_id", json_hex_new(r->record_id, 64));
 	if (l->with_bytes) {
@@ -227,7 +227,7 @@ enum qb_status case_opening_request(struct ops *o, struct campaign *c, const str
 
 /* ---- seeing ---- */
 
-static bool may_see(const struct campaign *c, const struct opening *op, const struct ops_party *who)
+static bool may_see(const struct campaign *c, const struct opening *op, const struct view_party *who)
 {
 	return op->scope == SCOPE_FULL || custodian_index(c, who->name) >= 0 || memcmp(op->asker, who->key_id, 16) == 0;
 }

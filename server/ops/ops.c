@@ -140,7 +140,7 @@ static enum qb_status replay(void *state, uint64_t seq, const uint8_t *frame, si
 		o->leaf = qb_realloc(o->leaf, o->cap, sizeof *o->leaf);
 	}
 	o->leaf[o->size++] = h;
-	return project_leaf(o, &en, h.b, e);
+	return view_apply(&o->view, &en, h.b, e);
 }
 
 static enum qb_status check_head(struct ops *o, struct qb_error *e)
@@ -182,8 +182,8 @@ static enum qb_status load_settings(struct ops *o, struct qb_error *e)
 static enum qb_status close_dead_sealings(struct ops *o, struct qb_error *e)
 {
 	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && i < o->n_campaigns; i++) {
-		struct campaign *c = o->campaign[i];
+	for (int i = 0; st == QB_OK && i < o->view.n_campaigns; i++) {
+		struct campaign *c = o->view.campaign[i];
 		if (c->state != C_SEALING)
 			continue;
 		struct txn t;
@@ -223,8 +223,8 @@ static enum qb_status reload_hidden(void *state, const struct store_hidden *h, s
 static enum qb_status reload_campaigns(struct ops *o, struct qb_error *e)
 {
 	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && i < o->n_campaigns; i++) {
-		struct reopening r = {o->campaign[i]};
+	for (int i = 0; st == QB_OK && i < o->view.n_campaigns; i++) {
+		struct reopening r = {o->view.campaign[i]};
 		st = store_hidden_all(o->store, r.c->id, reload_hidden, &r, e);
 		if (st == QB_OK)
 			st = opening_reload_positions(o, r.c, e);
@@ -279,14 +279,9 @@ void ops_close(struct ops **op)
 	o->stopping = true;
 	pthread_cond_broadcast(&o->changed);
 	pthread_mutex_unlock(&o->lock);
-	for (int i = 0; i < o->n_campaigns; i++) {
-		seal_job_stop(o->campaign[i]);
-		campaign_free(&o->campaign[i]);
-	}
-	for (int i = 0; i < o->n_parties; i++)
-		qb_free(o->party[i]);
-	qb_free(o->party);
-	qb_free(o->campaign);
+	for (int i = 0; i < o->view.n_campaigns; i++)
+		seal_job_stop(o->view.campaign[i]);
+	view_free(&o->view);
 	qb_free(o->leaf);
 	qb_free(o->data_dir);
 	secret_free(&o->service_seed);
@@ -330,10 +325,10 @@ enum qb_status campaign_due(struct ops *o, struct campaign *c, struct qb_error *
 void ops_tick(struct ops *o)
 {
 	pthread_mutex_lock(&o->lock);
-	for (int i = 0; i < o->n_campaigns; i++) {
+	for (int i = 0; i < o->view.n_campaigns; i++) {
 		struct qb_error e = {0};
-		if (campaign_due(o, o->campaign[i], &e) != QB_OK)
-			log_failure(o, "tick-failed", o->campaign[i], &e);
+		if (campaign_due(o, o->view.campaign[i], &e) != QB_OK)
+			log_failure(o, "tick-failed", o->view.campaign[i], &e);
 	}
 	pthread_mutex_unlock(&o->lock);
 }
@@ -360,11 +355,11 @@ void ops_wait_change(struct ops *o, uint64_t *size, int64_t *now_gps_ns, int tim
 	pthread_mutex_unlock(&o->lock);
 }
 
-enum qb_status ops_party_by_key(struct ops *o, const uint8_t key_id[static 16], struct ops_party *out,
+enum qb_status ops_party_by_key(struct ops *o, const uint8_t key_id[static 16], struct view_party *out,
                                 struct qb_error *e)
 {
 	pthread_mutex_lock(&o->lock);
-	const struct ops_party *p = party_by_id(o, key_id);
+	const struct view_party *p = view_party_by_id(&o->view, key_id);
 	if (p != NULL)
 		*out = *p;
 	pthread_mutex_unlock(&o->lock);

@@ -16,6 +16,7 @@
 #include "server/base/json.h"
 #include "server/base/log.h"
 #include "server/base/secret.h"
+#include "server/view/view.h"
 #include "server/wire/routes.h"
 
 struct ops;
@@ -54,13 +55,8 @@ void ops_tick(struct ops *ops);
 /* Size of the ledger and clock now, for event streams; blocks until either changed or timeout_ms passed. */
 void ops_wait_change(struct ops *ops, uint64_t *size, int64_t *now_gps_ns, int timeout_ms);
 
-struct ops_party {
-	char name[64];
-	enum wire_role role; /* as enrolled */
-	uint8_t key_id[16], signing_key[32], exchange_key[32];
-};
 /* The enrolled party with this key. QB_NOT_FOUND */
-enum qb_status ops_party_by_key(struct ops *ops, const uint8_t key_id[static 16], struct ops_party *out,
+enum qb_status ops_party_by_key(struct ops *ops, const uint8_t key_id[static 16], struct view_party *out,
                                 struct qb_error *e) QB_MUST_USE;
 /* Records a request nonce; QB_CRYPTO when it was seen within the window. */
 enum qb_status ops_nonce_take(struct ops *ops, const uint8_t key_id[static 16], const uint8_t nonce[static 16],
@@ -68,9 +64,9 @@ enum qb_status ops_nonce_take(struct ops *ops, const uint8_t key_id[static 16], 
 
 struct ops_call {
 	const struct wire_match *match;
-	const struct ops_party *who; /* NULL: unsigned */
-	const char *query;           /* raw, "" when none */
-	const json_t *body;          /* parsed document, NULL without a body */
+	const struct view_party *who; /* NULL: unsigned */
+	const char *query;            /* raw, "" when none */
+	const json_t *body;           /* parsed document, NULL without a body */
 };
 
 struct ops_reply {

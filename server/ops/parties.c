@@ -36,12 +36,12 @@ enum qb_status case_parties_list(struct ops *o, struct campaign *c, const struct
 	(void)call;
 	(void)e;
 	json_t *list = json_array();
-	for (int i = 0; i < o->n_parties; i++) {
+	for (int i = 0; i < o->view.n_parties; i++) {
 		json_t *p = json_object();
-		json_object_set_new(p, "name", json_string(o->party[i]->name));
-		json_object_set_new(p, "role", json_string(wire_role_word(o->party[i]->role)));
-		json_object_set_new(p, "signing_key", json_hex_new(o->party[i]->signing_key, 32));
-		json_object_set_new(p, "exchange_key", json_hex_new(o->party[i]->exchange_key, 32));
+		json_object_set_new(p, "name", json_string(o->view.party[i]->name));
+		json_object_set_new(p, "role", json_string(wire_role_word(o->view.party[i]->role)));
+		json_object_set_new(p, "signing_key", json_hex_new(o->view.party[i]->signing_key, 32));
+		json_object_set_new(p, "exchange_key", json_hex_new(o->view.party[i]->exchange_key, 32));
 		json_array_append_new(list, p);
 	}
 	reply->http_status = 200;
@@ -87,7 +87,7 @@ static enum qb_status check_invitation(struct ops *o, const struct accepted *a, 
 		return qb_fail(e, QB_REFUSED, "invitation: role",
 		               "custodian, operator, driver, analyst, reviewer, liaison, auditor",
 		               "'%s' is not a role that can be given", word);
-	if (party_named(o, name) != NULL || strcmp(name, "service") == 0)
+	if (view_party_named(&o->view, name) != NULL || strcmp(name, "service") == 0)
 		return qb_fail(e, QB_CONFLICT, "invitation: name", "choose another name", "'%s' is enrolled already",
 		               name);
 	return QB_OK;
@@ -109,7 +109,7 @@ static enum qb_status check_enrolment(struct ops *o, const struct ops_call *call
 		return st;
 	if (!same_bytes(keys.sign, call->who->signing_key, 32))
 		return qb_fail(e, QB_CRYPTO, "enrolment: signing_key", NULL, "is not the key that signed the request");
-	if (party_named(o, name) != NULL || party_by_id(o, call->who->key_id) != NULL)
+	if (view_party_named(&o->view, name) != NULL || view_party_by_id(&o->view, call->who->key_id) != NULL)
 		return qb_fail(e, QB_CONFLICT, "enrolment", NULL, "the name or the key is enrolled already");
 	transcript_begin(&t, "quietbell/1/party/code");
 	transcript_text(&t, code);
@@ -129,13 +129,13 @@ enum qb_status case_parties_post(struct ops *o, struct campaign *c, const struct
                                  struct ops_reply *reply, struct qb_error *e)
 {
 	struct accepted a;
-	struct ops_party newcomer;
+	struct view_party newcomer;
 	struct ops_call self = *call;
 	/* An enrolling party is not known yet: the api verified the request with the key in the entry. */
 	enum qb_status st = QB_OK;
 	if (call->who == NULL)
 		return qb_fail(e, QB_CRYPTO, NULL, "sign the request", "the request is not signed");
-	if (party_by_id(o, call->who->key_id) == NULL) {
+	if (view_party_by_id(&o->view, call->who->key_id) == NULL) {
 		newcomer = *call->who;
 		struct qb_error ignored = {0};
 		struct wire_entry en;

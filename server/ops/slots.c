@@ -57,15 +57,12 @@ static enum qb_status freeze_slot(struct txn *t, struct campaign *c, int64_t n, 
 	                        .freeze_ns = slots_freeze(sl, n),
 	                        .n_stations = c->plan->network->n_stations,
 	                        .stations_needed = c->plan->stations_needed};
-	struct states_hold *holds = QB_NEW_ARRAY(struct states_hold, (size_t)c->n_holds);
-	struct states_stop *stops = QB_NEW_ARRAY(struct states_stop, (size_t)c->n_stops);
+	struct states_hold *holds;
+	struct states_stop *stops;
 	bool going[STATES_MAX_STATIONS] = {false};
 	json_t *ready_names = json_array(), *going_names = json_array(), *extra = json_object();
 	enum qb_status st = QB_OK;
-	for (int i = 0; i < c->n_holds; i++)
-		holds[i] = c->hold[i].hold;
-	for (int i = 0; i < c->n_stops; i++)
-		stops[i] = c->stop[i].stop;
+	campaign_controls(c, &holds, &stops);
 	for (int i = 0; st == QB_OK && i < s.n_stations; i++)
 		st = store_ready_get(t->o->store, c->id, n, c->plan->network->stations[i].name, &s.station[i].ready, e);
 	bool enough = states_freeze(&s, holds, (size_t)c->n_holds, stops, (size_t)c->n_stops, going);

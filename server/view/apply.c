@@ -8,7 +8,7 @@
 #include "server/base/alloc.h"
 #include "server/base/check.h"
 #include "server/base/text.h"
-#include "server/ops/internal.h"
+#include "server/view/view.h"
 
 struct fetch_state {
 	const json_t *files;
@@ -25,18 +25,26 @@ static enum qb_status fetch_file(void *state, const char *name, struct buf *out,
 	return QB_OK;
 }
 
-static enum qb_status apply_party(struct ops *o, const struct wire_entry *en, struct qb_error *e)
+static void apply_party(struct view *v, const struct wire_entry *en, const struct entry *leaf)
 {
-	struct ops_party *p = QB_NEW(struct ops_party);
-	(void)e;
+	struct view_party *p = QB_NEW(struct view_party);
 	(void)snprintf(p->name, sizeof p->name, "%s", wire_entry_text(en, "name"));
 	CHECK(wire_role_parse(wire_entry_text(en, "role"), &p->role));
 	wire_entry_hex(en, "signing_key", p->signing_key, 32);
 	wire_entry_hex(en, "exchange_key", p->exchange_key, 32);
 	sign_key_id(p->signing_key, p->key_id);
-	o->party = qb_realloc(o->party, (size_t)o->n_parties + 1, sizeof *o->party);
-	o->party[o->n_parties++] = p;
-	return QB_OK;
+	v->party = qb_realloc(v->party, (size_t)v->n_parties + 1, sizeof *v->party);
+	p->seq = (int64_t)leaf->seq;
+	v->party[v->n_parties++] = p;
+}
+
+static void apply_start(struct view *v, const struct wire_entry *en)
+{
+	v->started = true;
+	wire_entry_hex(en, "service_key", v->service_key, 32);
+	sign_key_id(v->service_key, v->service_id);
+	wire_entry_hex(en, "administrator_key", v->administrator_key, 32);
+	v->rehearsal_clock = strcmp(wire_entry_text(en, "clock"), "rehearsal") == 0;
 }
 
 static void custodian_restart(struct custodian *cu)
@@ -48,7 +56,7 @@ static void custodian_restart(struct custodian *cu)
 	cu->deal_n = 0;
 }
 
-enum qb_status campaign_context(struct campaign *c, struct qb_error *e)
+static enum qb_status campaign_context(struct campaign *c, struct qb_error *e)
 {
 	struct party_public parties[CUSTODY_MAX];
 	for (int i = 0; i < c->n; i++) {
@@ -58,7 +66,7 @@ enum qb_status campaign_context(struct campaign *c, struct qb_error *e)
 	return keygen_context_init(&c->context, c->id, 1, c->attempt, (uint32_t)c->n, (uint32_t)c->k, parties, e);
 }
 
-static enum qb_status apply_plan(struct ops *o, const struct wire_entry *en, const struct entry *leaf,
+static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, const struct entry *leaf,
                                  struct qb_error *e)
 {
 	struct campaign *c = QB_NEW(struct campaign);
@@ -78,14 +86,14 @@ static enum qb_status apply_plan(struct ops *o, const struct wire_entry *en, con
 		return st;
 	}
 	(void)snprintf(c->name, sizeof c->name, "%s", c->plan->campaign);
-	c->rehearsal_clock = o->rehearsal_clock;
+	c->rehearsal_clock = v->rehearsal_clock;
 	c->n = c->plan->custodians;
 	c->k = c->plan->custodians_needed;
 	c->attempt = c->sealing_attempt = 1;
 	c->canary_seq = c->sealing_seq = c->sealed_seq = c->closing_seq = NO_SEQ;
 	for (int i = 0; st == QB_OK && i < c->n; i++) {
 		custodian_restart(&c->custodian[i]);
-		c->custodian[i].party = party_named(o, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
+		c->custodian[i].party = view_party_named(v, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
 		if (c->custodian[i].party == NULL)
 			st = qb_fail(e, QB_REFUSED, "plan: parties", "enrol first", "custodian %d is not enrolled",
 			             i + 1);
@@ -100,8 +108,8 @@ static enum qb_status apply_plan(struct ops *o, const struct wire_entry *en, con
 	c->slot = QB_NEW_ARRAY(struct slot_public, (size_t)c->n_slots);
 	for (int64_t i = 0; i < c->n_slots; i++)
 		c->slot[i].freeze_seq = NO_SEQ;
-	o->campaign = qb_realloc(o->campaign, (size_t)o->n_campaigns + 1, sizeof *o->campaign);
-	o->campaign[o->n_campaigns++] = c;
+	v->campaign = qb_realloc(v->campaign, (size_t)v->n_campaigns + 1, sizeof *v->campaign);
+	v->campaign[v->n_campaigns++] = c;
 	return QB_OK;
 }
 
@@ -324,12 +332,12 @@ static void apply_opening(struct campaign *c, const struct wire_entry *en, const
 	}
 }
 
-static enum qb_status apply_campaign_entry(struct ops *o, const struct wire_entry *en, const struct entry *leaf,
+static enum qb_status apply_campaign_entry(struct view *v, const struct wire_entry *en, const struct entry *leaf,
                                            const uint8_t leaf_hash[static 32], struct qb_error *e)
 {
 	char id[33];
 	hex_encode(id, en->campaign, 16);
-	struct campaign *c = campaign_find(o, id);
+	struct campaign *c = view_campaign(v, id);
 	if (c == NULL)
 		return qb_fail(e, QB_FAULT, "ledger", "restore a backup", "leaf %llu is about an unknown campaign",
 		               (unsigned long long)leaf->seq);
@@ -349,8 +357,8 @@ static enum qb_status apply_campaign_entry(struct ops *o, const struct wire_entr
 	return QB_OK;
 }
 
-enum qb_status project_leaf(struct ops *o, const struct entry *leaf, const uint8_t leaf_hash[static 32],
-                            struct qb_error *e)
+enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_t leaf_hash[static 32],
+                          struct qb_error *e)
 {
 	struct wire_entry en;
 	if (leaf->kind == ENTRY_HIDDEN)
@@ -359,13 +367,13 @@ enum qb_status project_leaf(struct ops *o, const struct entry *leaf, const uint8
 	if (st != QB_OK)
 		return st;
 	if (strcmp(en.type->type, "service-start") == 0)
-		wire_entry_hex(&en, "administrator_key", o->administrator_key, 32);
+		apply_start(v, &en);
 	else if (strcmp(en.type->type, "enrolment") == 0)
-		st = apply_party(o, &en, e);
+		apply_party(v, &en, leaf);
 	else if (strcmp(en.type->type, "plan") == 0)
-		st = apply_plan(o, &en, leaf, e);
+		st = apply_plan(v, &en, leaf, e);
 	else if (en.has_campaign)
-		st = apply_campaign_entry(o, &en, leaf, leaf_hash, e);
+		st = apply_campaign_entry(v, &en, leaf, leaf_hash, e);
 	wire_entry_free(&en);
 	return st;
 }

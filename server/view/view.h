@@ -1,0 +1,153 @@
+/*
+ * A campaign as the ledger tells it: parties, plan, key generation, sealing, schedule, holds, openings. One projection,
+ * leaf by leaf, for everybody who reads the ledger: the service (at start and after each commit), clients and
+ * custodians (from their own verified copy), and the verifier of a bundle. So no two of them can understand an entry
+ * differently.
+ */
+#ifndef QB_VIEW_VIEW_H
+#define QB_VIEW_VIEW_H
+
+#include "server/custody/deal.h"
+#include "server/custody/partial.h"
+#include "server/custody/recipe.h"
+#include "server/drill/plan.h"
+#include "server/drill/states.h"
+#include "server/ledger/entry.h"
+#include "server/wire/entries.h"
+
+#define NO_SEQ (-1)
+
+struct view_party {
+	char name[64];
+	enum wire_role role; /* as enrolled */
+	uint8_t key_id[16], signing_key[32], exchange_key[32];
+	int64_t seq; /* of the enrolment */
+};
+
+enum campaign_state { C_DRAFTED, C_CERTIFIED, C_REHEARSED, C_SEALING, C_SEALED, C_CLOSED, C_OPENED };
+
+struct custodian {
+	const struct view_party *party;                                                 /* owned by struct view */
+	int64_t deal_seq, certify_seq, rehearsal_seq, commitment_seq, contribution_seq; /* NO_SEQ: not yet */
+	uint8_t *deal; /* owned; of the current attempt */
+	size_t deal_n;
+	uint8_t certificate_signature[SIGN_BYTES];
+	uint8_t contribution_commitment[64]; /* for the current sealing attempt */
+	struct partial rehearsal;
+};
+
+struct hold {
+	int64_t seq;
+	struct states_hold hold;
+};
+struct stop {
+	int64_t seq;
+	struct states_stop stop;
+};
+
+enum opening_scope { SCOPE_FULL, SCOPE_SPOT };
+struct opening {
+	uint8_t id[16];
+	enum opening_scope scope;
+	uint8_t authority[64]; /* leaf hash (32) or commitment (64) */
+	int64_t seq;           /* of the entry; NO_SEQ for a spot */
+	uint8_t asker[16];     /* key id */
+	bool opened;
+	int64_t *positions; /* spot: the records it opens, fixed when it was asked */
+	int n_positions;
+};
+
+/* What a slot's public listing shows beyond the schedule. */
+struct slot_public {
+	uint8_t record_id[64], slot_key_commitment[64];
+	int64_t freeze_seq;   /* NO_SEQ before the freeze */
+	uint8_t ready, going; /* bit per station */
+	uint8_t reported;     /* bit per station */
+	uint8_t notes[STATES_MAX_STATIONS];
+};
+
+struct seal_job; /* the service's, server/ops/seal.c */
+
+struct campaign {
+	uint8_t id[16];
+	char name[PLAN_NAME_MAX];
+	bool rehearsal_clock;
+	int64_t plan_seq;
+	char *plan_text, *plan_files; /* owned; files: JSON text of {name: text} */
+	struct drill_plan *plan;      /* owned */
+	enum campaign_state state;
+	int n, k;
+	struct custodian custodian[CUSTODY_MAX];
+	uint64_t attempt, sealing_attempt;
+	struct keygen_context context; /* of the current attempt */
+	struct custody_group group;    /* from C_CERTIFIED on, and once all deals are in */
+	bool has_group;
+	int64_t canary_seq;
+	uint8_t canary_leaf[32];
+	uint8_t *canary; /* owned */
+	size_t canary_n;
+	bool prekeys[STATES_MAX_STATIONS][RECIPE_PLACES];
+	int64_t sealing_seq, sealed_seq, closing_seq;
+	uint8_t sealer_key[32], service_commitment[64];
+	int64_t n_slots;
+	struct slot_public *slot; /* owned; n_slots */
+	uint8_t seed_record_id[64];
+	int64_t next_freeze; /* first slot without a freeze entry */
+	struct hold *hold;
+	int n_holds;
+	struct stop *stop;
+	int n_stops;
+	struct opening *opening;
+	int n_openings;
+	/* Working state of the service alone; readers leave it as it is. */
+	struct seal_job *job;
+	int64_t erased_below;  /* keys of slots below this one are erased */
+	int64_t last_batch_ns; /* hidden batches entered up to this time; starts at the sealing */
+	int64_t n_claims;
+};
+
+struct view {
+	struct view_party **party; /* each owned; pointers stay valid */
+	int n_parties;
+	struct campaign **campaign; /* each owned */
+	int n_campaigns;
+	uint8_t service_key[32], service_id[16], administrator_key[32];
+	bool started;         /* the first leaf was seen */
+	bool rehearsal_clock; /* as it says */
+};
+
+/*
+ * Applies one leaf. The caller verified the leaf's place and, with view_author_key, its signature.
+ *
+ * Given:    leaf_hash   of the frame
+ * Errors:   QB_FORMAT   an entry that no service of this version enters; QB_FAULT an entry about an unknown campaign
+ */
+enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_t leaf_hash[static 32],
+                          struct qb_error *e) QB_MUST_USE;
+void view_free(struct view *v);
+void campaign_free(struct campaign **c);
+/*
+ * The key that must have signed a leaf, by what was enrolled before it: the service's for its own and hidden entries,
+ * the author's else, an enrolment's own new key.
+ *
+ * Errors:   QB_CRYPTO   nobody with this key id is enrolled; QB_FORMAT
+ */
+enum qb_status view_author_key(const struct view *v, const struct entry *leaf, uint8_t key[static 32],
+                               struct qb_error *e) QB_MUST_USE;
+
+struct campaign *view_campaign(const struct view *v, const char *name_or_id);
+const struct view_party *view_party_named(const struct view *v, const char *name);
+const struct view_party *view_party_by_id(const struct view *v, const uint8_t key_id[static 16]);
+int custodian_index(const struct campaign *c, const char *name); /* from 0, or -1 */
+int station_of_driver(const struct campaign *c, const char *name);
+struct opening *opening_find(struct campaign *c, const char *id_hex);
+/* The party's role in the campaign; ROLE_NONE when it has none. */
+enum wire_role campaign_role(const struct campaign *c, const struct view_party *p);
+const char *campaign_state_word(enum campaign_state s);
+/* The certificate verified from the deals, with all n signatures. Errors: QB_CRYPTO; QB_CONFLICT not certified yet. */
+enum qb_status campaign_certified_group(const struct campaign *c, struct custody_group *out,
+                                        struct qb_error *e) QB_MUST_USE;
+/* All holds and stops as drill/states.h wants them; the arrays are the caller's to free with qb_free. */
+void campaign_controls(const struct campaign *c, struct states_hold **holds, struct states_stop **stops);
+
+#endif
