@@ -21,6 +21,9 @@ static void every_key_is_in_the_page(void **state)
 			fail_msg("docs/plan.md lacks the line%s", line);
 		qb_free(line);
 	}
+	char *end = strstr((char *)page.data, "\n## Distributions");
+	assert_non_null(end);
+	*end = '\0';
 	for (const char *p = (char *)page.data; (p = strstr(p, "\n| `")) != NULL; p++)
 		lines++;
 	assert_int_equal(lines, n);
