@@ -28,7 +28,7 @@ QB_LDFLAGS   = -pie -Wl,-z,relro,-z,now $(LDFLAGS)
 
 common_src := $(foreach r,$(ROOMS),$(wildcard server/$(r)/*.c))
 daemon_src := $(wildcard server/store/*.c server/ops/*.c server/api/*.c server/daemon/*.c)
-client_src := $(wildcard client/cli/*.c client/report/*.c client/board/*.c)
+client_src := $(wildcard client/link/*.c client/cli/*.c client/report/*.c client/board/*.c)
 driver_src := $(wildcard client/agent/*.c)
 # Files with a main() of their own; everything else can be linked into a test.
 mains      := server/daemon/main.c client/cli/main.c client/agent/main.c
