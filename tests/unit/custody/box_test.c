@@ -30,6 +30,7 @@ static void opens_for_its_recipient_and_purpose_only(void **state)
 		assert_int_not_equal(box_open(a.exchange, BOX_ANSWER, "request 7", 9, box.data, n, &out, NULL), QB_OK);
 	assert_int_equal(out.len, 0);
 	buf_free(&box);
+	buf_free(&out);
 	party_key_free(&a);
 	party_key_free(&b);
 }
