@@ -13,7 +13,7 @@ BUILD  ?= build
 CC     ?= gcc
 
 ROOMS      ?= base ledger custody wave drill audit wire view
-TEST_ROOMS ?= $(ROOMS) store ops api client
+TEST_ROOMS ?= $(ROOMS) store ops api daemon client
 PACKAGES   := libsodium libmicrohttpd sqlite3 fftw3 jansson libcurl erfa yaml-0.1 gsl libseccomp
 
 WARN    := -Wall -Wextra -Wpedantic -Wconversion -Wshadow -Wstrict-prototypes -Wvla -Werror
@@ -79,7 +79,7 @@ unit_src := $(foreach r,$(TEST_ROOMS),$(wildcard tests/unit/$(r)/*_test.c))
 unit_bin := $(patsubst %.c,$(BUILD)/%,$(unit_src))
 outside_src := $(wildcard tests/outside/*_test.c)
 outside_bin := $(patsubst %.c,$(BUILD)/%,$(outside_src))
-test_libs = $(if $(filter tests/unit/store/% tests/unit/ops/% tests/unit/api/%,$(1)),$(lib_daemon)) \
+test_libs = $(if $(filter tests/unit/store/% tests/unit/ops/% tests/unit/api/% tests/unit/daemon/%,$(1)),$(lib_daemon)) \
             $(if $(filter tests/unit/client/%,$(1)),$(lib_client)) $(lib)
 
 .SECONDEXPANSION:
