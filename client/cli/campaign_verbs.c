@@ -1,0 +1,208 @@
+/* The noun `campaign`: draft, list, show, seal, close; key generation is in keygen.c. */
+#include <stdio.h>
+#include <string.h>
+#include <time.h>
+
+#include "client/cli/internal.h"
+#include "client/cli/keygen.h"
+#include "client/cli/plan_file.h"
+#include "server/base/alloc.h"
+#include "server/base/clock.h"
+#include "server/base/text.h"
+
+static void draft_nonce(struct cli_call *c, int64_t seed, const char *plan, uint8_t out[static 16])
+{
+	struct transcript t;
+	uint8_t h[64];
+	(void)c;
+	if (seed < 0) {
+		random_bytes(out, 16);
+		return;
+	}
+	transcript_begin(&t, "quietbell/1/rehearsal/nonce");
+	transcript_u64(&t, (uint64_t)seed);
+	transcript_text(&t, plan);
+	transcript_end(&t, h);
+	memcpy(out, h, 16);
+}
+
+static enum qb_status run_draft(struct cli_call *c)
+{
+	struct plan_file p;
+	struct plan_findings f = {0};
+	char line[900];
+	uint8_t nonce[16];
+	int64_t seed;
+	json_t *answer = NULL;
+	enum qb_status st = cli_option_int(c, "rehearsal-seed", 0, INT64_MAX, -1, &seed);
+	if (st != QB_OK || (st = plan_file_read(cli_arg(c, 0), &p, &c->error)) != QB_OK)
+		return st;
+	st = plan_check(p.plan, &f, &c->error);
+	for (int i = 0; i < f.n; i++)
+		cli_note(c, "%s\n", plan_finding_line(&f.finding[i], line, sizeof line));
+	if (st == QB_OK)
+		st = cli_connect(c);
+	if (st == QB_OK && seed >= 0 && !c->link.rehearsal)
+		st = qb_fail(&c->error, QB_REFUSED, "--rehearsal-seed", NULL, "is for services with a rehearsal clock");
+	if (st == QB_OK) {
+		draft_nonce(c, seed, p.text, nonce);
+		json_t *extra = json_object();
+		json_object_set_new(extra, "nonce", json_hex_new(nonce, 16));
+		json_object_set_new(extra, "plan", json_string(p.text));
+		json_object_set(extra, "files", p.files);
+		st = cli_post_entry(c, "/v1/campaigns", "plan", NULL, cli_option(c, "reason"), extra, NULL, &answer);
+	}
+	if (st == QB_OK && cli_wants_json(c))
+		cli_json(c, answer);
+	else if (st == QB_OK)
+		cli_print(c, "campaign %s is drafted, id %s\n", json_string_value(json_object_get(answer, "name")),
+		          json_string_value(json_object_get(answer, "id")));
+	json_decref(answer);
+	plan_findings_free(&f);
+	plan_file_free(&p);
+	return st;
+}
+
+static enum qb_status run_list(struct cli_call *c)
+{
+	enum qb_status st = cli_follow(c);
+	if (st != QB_OK)
+		return st;
+	json_t *list = json_array();
+	for (int i = 0; i < c->follow.view.n_campaigns; i++) {
+		const struct campaign *k = c->follow.view.campaign[i];
+		char id[33];
+		hex_encode(id, k->id, 16);
+		json_t *j = json_object();
+		json_object_set_new(j, "name", json_string(k->name));
+		json_object_set_new(j, "id", json_string(id));
+		json_object_set_new(j, "state", json_string(campaign_state_word(k->state)));
+		json_object_set_new(j, "phase", json_string(plan_phase_word(k->plan->phase)));
+		json_array_append_new(list, j);
+		if (!cli_wants_json(c))
+			cli_print(c, "%-24s %-10s %-11s %s\n", k->name, campaign_state_word(k->state),
+			          plan_phase_word(k->plan->phase), id);
+	}
+	if (cli_wants_json(c))
+		cli_json(c, list);
+	json_decref(list);
+	return QB_OK;
+}
+
+static enum qb_status run_show(struct cli_call *c)
+{
+	json_t *doc;
+	char from[40], to[40];
+	struct campaign *k;
+	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
+	if (st != QB_OK)
+		return st;
+	char *path = text_printf("/v1/campaigns/%s", k->name);
+	st = link_get(&c->link, path, &doc, &c->error);
+	qb_free(path);
+	if (st == QB_OK && cli_wants_json(c)) {
+		cli_json(c, doc);
+	} else if (st == QB_OK) {
+		int reports = 0;
+		for (int64_t n = 0; n < k->n_slots; n++)
+			reports += __builtin_popcount(k->slot[n].reported);
+		cli_print(c, "campaign   %s (%s%s)\nstate      %s\n", k->name, plan_phase_word(k->plan->phase),
+		          k->rehearsal_clock ? ", rehearsal clock" : "", campaign_state_word(k->state));
+		cli_print(c, "slots      %lld of %g s, %s to %s\n", (long long)k->n_slots,
+		          (double)k->plan->slots.slot_ns / 1e9,
+		          clock_utc_text(k->plan->slots.start_gps_ns, from, sizeof from),
+		          clock_utc_text(k->plan->slots.end_gps_ns, to, sizeof to));
+		cli_print(c, "custody    %d of %d:", k->k, k->n);
+		for (int i = 0; i < k->n; i++)
+			cli_print(c, " %s", k->custodian[i].party->name);
+		cli_print(c, "\nattempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
+		          (unsigned long long)k->sealing_attempt);
+		cli_print(c, "operations %d holds, %d stops, %d play reports\n", k->n_holds, k->n_stops, reports);
+	}
+	json_decref(doc);
+	return st;
+}
+
+static enum qb_status wait_sealed(struct cli_call *c, const struct campaign *k)
+{
+	struct timespec pause = {0, 200000000};
+	char *path = text_printf("/v1/campaigns/%s/sealer", k->name);
+	enum qb_status st = QB_OK;
+	for (;;) {
+		json_t *doc;
+		st = link_get(&c->link, path, &doc, &c->error);
+		if (st != QB_OK)
+			break;
+		const char *state = json_string_value(json_object_get(doc, "state"));
+		json_int_t done = json_integer_value(json_object_get(doc, "done")),
+		           of = json_integer_value(json_object_get(doc, "of"));
+		const char *failure = json_string_value(json_object_get(doc, "failure"));
+		if (state != NULL && strcmp(state, "failed") == 0)
+			st = qb_fail(&c->error, QB_REFUSED, "sealing", "see the service's log, then seal again",
+			             "failed: %.300s", failure != NULL ? failure : "no reason was given");
+		bool ready = state != NULL && strcmp(state, "done") == 0;
+		cli_progress(c, "sealing", (uint64_t)done, (uint64_t)of);
+		json_decref(doc);
+		if (ready || st != QB_OK)
+			break;
+		nanosleep(&pause, NULL);
+	}
+	qb_free(path);
+	return st;
+}
+
+static enum qb_status run_seal(struct cli_call *c)
+{
+	struct campaign *k;
+	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
+	if (st != QB_OK)
+		return st;
+	char *path = text_printf("/v1/campaigns/%s/seal", k->name);
+	st = cli_post_entry(c, path, "seal-request", k->id, cli_option(c, "reason"), NULL, NULL, NULL);
+	qb_free(path);
+	if (st == QB_OK)
+		st = wait_sealed(c, k);
+	if (st == QB_OK)
+		cli_print(c, "campaign %s is sealed: %lld slots, every one with its record\n", k->name,
+		          (long long)k->n_slots);
+	return st;
+}
+
+static enum qb_status run_close(struct cli_call *c)
+{
+	struct campaign *k;
+	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
+	if (st != QB_OK)
+		return st;
+	char *path = text_printf("/v1/campaigns/%s/close", k->name);
+	st = cli_post_entry(c, path, "closing", k->id, cli_option(c, "reason"), NULL, NULL, NULL);
+	qb_free(path);
+	if (st == QB_OK)
+		cli_print(c, "campaign %s is closed: no claim is taken any more\n", k->name);
+	return st;
+}
+
+static const struct cli_option draft_options[] = {
+    {"reason", "TEXT", false, "why, for the ledger"},
+    {"rehearsal-seed", "N", false, "a fixed campaign number, for reproducible rehearsals"},
+    {NULL, NULL, false, NULL}};
+static const struct cli_option reason_options[] = {{"reason", "TEXT", false, "why, for the ledger"},
+                                                   {NULL, NULL, false, NULL}};
+static const struct cli_option keygen_options[] = {
+    {"wait", NULL, false, "wait for the others and go on until the campaign is sealed"},
+    {"rehearsal-seed", "N", false, "a fixed contribution, for reproducible rehearsals"},
+    {NULL, NULL, false, NULL}};
+
+const struct cli_verb cli_campaign_verbs[] = {
+    {"campaign", "draft", "PLAN", run_draft, draft_options, "drafts a campaign from a plan",
+     "quietbell campaign draft plan.yaml"},
+    {"campaign", "list", "", run_list, NULL, "lists every campaign ever drafted", "quietbell campaign list"},
+    {"campaign", "show", "CAMPAIGN", run_show, NULL, "shows state, keys and counts that reveal nothing",
+     "quietbell campaign show fells-spring"},
+    {"campaign", "keygen", "CAMPAIGN", cli_keygen, keygen_options,
+     "a custodian's part: deal, certify, rehearse, contribute", "quietbell campaign keygen fells-spring --wait"},
+    {"campaign", "seal", "CAMPAIGN", run_seal, reason_options, "draws and seals every slot (administrator)",
+     "quietbell campaign seal fells-spring"},
+    {"campaign", "close", "CAMPAIGN", run_close, reason_options, "closes the analysis (reviewer)",
+     "quietbell campaign close fells-spring"},
+    {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

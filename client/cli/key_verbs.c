@@ -1,0 +1,131 @@
+/* The noun `key`: making, showing and re-encrypting a party's own keys. */
+#include <stdio.h>
+#include <string.h>
+
+#include "client/cli/internal.h"
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+
+/* Reproducible keys for rehearsals that documentation shows; marked so by the quick key file level. */
+static enum qb_status key_from_seed(int64_t seed, const char *name, struct party_key *out, struct qb_error *e)
+{
+	struct transcript t;
+	uint8_t h[64], wide[64], scalar[SCALAR_BYTES];
+	transcript_begin(&t, "quietbell/1/rehearsal/key");
+	transcript_u64(&t, (uint64_t)seed);
+	transcript_text(&t, name);
+	transcript_end(&t, h);
+	transcript_begin(&t, "quietbell/1/rehearsal/exchange-key");
+	transcript_u64(&t, (uint64_t)seed);
+	transcript_text(&t, name);
+	transcript_end(&t, wide);
+	group_scalar_wide(scalar, wide);
+	enum qb_status st = party_key_from(h, scalar, out, e);
+	wipe(h, sizeof h);
+	wipe(scalar, sizeof scalar);
+	return st;
+}
+
+static void show(struct cli_call *c)
+{
+	char words[PARTY_FINGERPRINT_TEXT], id[33];
+	hex_encode(id, c->home.key_id, 16);
+	party_fingerprint(&c->home.pub, words);
+	if (cli_wants_json(c)) {
+		json_t *doc = json_object();
+		json_object_set_new(doc, "name", json_string(c->home.name));
+		json_object_set_new(doc, "key_id", json_string(id));
+		json_object_set_new(doc, "signing_key", json_hex_new(c->home.pub.sign, 32));
+		json_object_set_new(doc, "exchange_key", json_hex_new(c->home.pub.exchange, 32));
+		json_object_set_new(doc, "fingerprint", json_string(words));
+		cli_json(c, doc);
+		json_decref(doc);
+		return;
+	}
+	cli_print(c, "name         %s\nkey id       %s\nfingerprint  %s\n", c->home.name, id, words);
+	cli_print(c, "Compare the fingerprint by telephone before anybody relies on it.\n");
+}
+
+static enum qb_status run_new(struct cli_call *c)
+{
+	const char *name = cli_option(c, "name");
+	int64_t seed;
+	struct party_key key = {0};
+	bool rehearsal = cli_option(c, "rehearsal") != NULL || cli_option(c, "rehearsal-seed") != NULL;
+	enum qb_status st = cli_option_int(c, "rehearsal-seed", 0, INT64_MAX, -1, &seed);
+	if (st == QB_OK && !text_is_name(name))
+		st = qb_fail(&c->error, QB_USAGE, "--name", "use a-z, 0-9 and -, a letter first",
+		             "'%.60s' is not a name", name);
+	if (st == QB_OK)
+		st = cli_home(c, true);
+	if (st == QB_OK)
+		st = home_passphrase(&c->home, cli_option(c, "passphrase-file"), true, &c->error);
+	if (st != QB_OK)
+		return st;
+	if (seed >= 0)
+		st = key_from_seed(seed, name, &key, &c->error);
+	else
+		party_key_new(&key);
+	if (st == QB_OK)
+		st = home_key_new(&c->home, name, &key, rehearsal ? KEYFILE_INTERACTIVE : KEYFILE_MODERATE, &c->error);
+	if (st == QB_OK)
+		show(c);
+	if (key.seed != NULL)
+		party_key_free(&key);
+	return st;
+}
+
+static enum qb_status run_show(struct cli_call *c)
+{
+	enum qb_status st = cli_home(c, false);
+	if (st == QB_OK && !c->home.has_key)
+		st = qb_fail(&c->error, QB_IO, c->home.dir, "run quietbell key new --name NAME", "holds no key");
+	if (st == QB_OK)
+		show(c);
+	return st;
+}
+
+static enum qb_status run_change(struct cli_call *c)
+{
+	enum qb_status st = cli_home(c, false);
+	if (st == QB_OK)
+		st = home_unlock(&c->home, cli_option(c, "passphrase-file"), true, &c->error);
+	if (st != QB_OK)
+		return st;
+	struct home fresh = {.dir = c->home.dir};
+	struct keyfile_info info;
+	struct buf b = {0};
+	char *path = home_path(&c->home, "key.qbk");
+	st = file_read(path, 1 << 16, &b, &c->error);
+	if (st == QB_OK)
+		st = keyfile_inspect(b.data, b.len, &info, &c->error);
+	if (st == QB_OK)
+		st = home_passphrase(&fresh, cli_option(c, "new-passphrase-file"), true, &c->error);
+	if (st == QB_OK)
+		st = keyfile_write_party(path, info.level, fresh.passphrase, &c->home.key, &c->error);
+	if (st == QB_OK)
+		cli_print(c, "The passphrase of %s is changed.\n", path);
+	if (fresh.passphrase != NULL)
+		wipe(fresh.passphrase, strlen(fresh.passphrase));
+	qb_free(fresh.passphrase);
+	buf_free(&b);
+	qb_free(path);
+	return st;
+}
+
+static const struct cli_option new_options[] = {
+    {"name", "NAME", true, "the party's name, as it will stand in the plan"},
+    {"rehearsal", NULL, false, "a quick key file, accepted under a rehearsal clock only"},
+    {"rehearsal-seed", "N", false, "keys from a fixed number, for reproducible rehearsals; implies --rehearsal"},
+    {NULL, NULL, false, NULL}};
+static const struct cli_option change_options[] = {
+    {"new-passphrase-file", "FILE", false, "read the new passphrase from FILE (else asked)"},
+    {NULL, NULL, false, NULL}};
+
+const struct cli_verb cli_key_verbs[] = {
+    {"key", "new", "", run_new, new_options, "makes this party's signing and exchange keys",
+     "quietbell key new --name ines"},
+    {"key", "show", "", run_show, NULL, "shows name, key id and fingerprint", "quietbell key show"},
+    {"key", "change-passphrase", "", run_change, change_options, "encrypts the key file under a new passphrase",
+     "quietbell key change-passphrase"},
+    {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

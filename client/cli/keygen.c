@@ -1,0 +1,360 @@
+/*
+ * The custodian's part of key generation as one command. Each turn looks at the verified ledger only, does the next
+ * step that is this custodian's, and saves secrets before anything that depends on them is sent.
+ */
+#include "client/cli/keygen.h"
+
+#include <stdio.h>
+#include <string.h>
+#include <time.h>
+#include <unistd.h>
+
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+#include "server/custody/box.h"
+#include "server/custody/keyfile.h"
+#include "server/custody/seed.h"
+
+struct part {
+	struct cli_call *c;
+	const char *name;
+	struct campaign *k;
+	int i; /* own position, from 0 */
+	int64_t seed;
+	bool told[8];
+};
+
+static char *route(const struct part *p, const char *tail)
+{
+	return text_printf("/v1/campaigns/%s/%s", p->k->name, tail);
+}
+
+static enum keyfile_level level_of(const struct part *p)
+{
+	return p->c->link.rehearsal ? KEYFILE_INTERACTIVE : KEYFILE_SENSITIVE;
+}
+
+/* ---- the contribution to the draw: made once per sealing attempt, kept until it is delivered ---- */
+
+static enum qb_status contribution_path(const struct part *p, char **out)
+{
+	char name[64];
+	(void)snprintf(name, sizeof name, "contribution-%llu-%llu.qbk", (unsigned long long)p->k->attempt,
+	               (unsigned long long)p->k->sealing_attempt);
+	return home_campaign_path(&p->c->home, p->k->id, name, out, &p->c->error);
+}
+
+static enum qb_status contribution(const struct part *p, struct secret **out)
+{
+	char *path;
+	enum qb_status st = contribution_path(p, &path);
+	if (st != QB_OK)
+		return st;
+	if (access(path, F_OK) == 0) {
+		st = keyfile_read(path, KEYFILE_OTHER, p->c->home.passphrase, p->c->link.rehearsal, out, NULL,
+		                  &p->c->error);
+	} else {
+		*out = secret_random(CONTRIBUTION_BYTES);
+		if (p->seed >= 0) {
+			struct transcript t;
+			uint8_t h[64];
+			transcript_begin(&t, "quietbell/1/rehearsal/contribution");
+			transcript_u64(&t, (uint64_t)p->seed);
+			transcript_field(&t, p->k->context.ctx, 64);
+			transcript_u64(&t, p->k->sealing_attempt);
+			transcript_u64(&t, (uint64_t)p->i + 1);
+			transcript_end(&t, h);
+			memcpy(secret_bytes(*out), h, CONTRIBUTION_BYTES);
+		}
+		st = keyfile_write(path, KEYFILE_OTHER, level_of(p), p->c->home.passphrase, *out, &p->c->error);
+		if (st != QB_OK)
+			secret_free(out);
+	}
+	qb_free(path);
+	return st;
+}
+
+static enum qb_status commitment(const struct part *p, uint8_t out[static 64])
+{
+	struct secret *s = NULL;
+	enum qb_status st = contribution(p, &s);
+	if (st == QB_OK)
+		seed_commit(p->k->context.ctx, p->k->sealing_attempt, (uint64_t)p->i + 1, secret_view(s), out);
+	secret_free(&s);
+	return st;
+}
+
+/* ---- the steps ---- */
+
+static enum qb_status step_deal(struct part *p)
+{
+	struct buf deal = {0};
+	uint8_t commit[64];
+	enum qb_status st = commitment(p, commit);
+	if (st == QB_OK)
+		st = deal_make(&p->k->context, (uint32_t)p->i + 1, &p->c->home.key, &deal, &p->c->error);
+	if (st == QB_OK) {
+		char *text = base64_encode(deal.data, deal.len), *path = route(p, "keygen/deal");
+		json_t *extra = json_object();
+		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
+		json_object_set_new(extra, "message", json_string(text));
+		json_object_set_new(extra, "contribution_commitment", json_hex_new(commit, 64));
+		st = cli_post_entry(p->c, path, "deal", p->k->id, "key generation", extra, NULL, NULL);
+		qb_free(text);
+		qb_free(path);
+	}
+	if (st == QB_OK)
+		cli_note(p->c, "%s: dealt shares to all %d custodians\n", p->name, p->k->n);
+	buf_free(&deal);
+	return st;
+}
+
+static enum qb_status parse_deals(const struct part *p, struct deal *out)
+{
+	enum qb_status st = QB_OK;
+	for (int i = 0; st == QB_OK && i < p->k->n; i++)
+		st = deal_parse(&p->k->context, p->k->custodian[i].deal, p->k->custodian[i].deal_n, &out[i],
+		                &p->c->error);
+	return st;
+}
+
+/* A failed check ends the attempt, by name, for everybody. */
+static enum qb_status accuse(struct part *p, int who)
+{
+	char why[900], *path = route(p, "keygen/failed");
+	struct qb_error first = p->c->error;
+	json_t *extra = json_object();
+	qb_error_line(&first, why, sizeof why);
+	why[300] = '\0';
+	json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
+	json_object_set_new(extra, "accused", json_string(p->k->custodian[who].party->name));
+	p->c->error = (struct qb_error){0};
+	enum qb_status st = cli_post_entry(p->c, path, "keygen-failed", p->k->id, why, extra, NULL, NULL);
+	qb_free(path);
+	if (st == QB_OK)
+		st = qb_fail(&p->c->error, QB_NO, "key generation",
+		             "leave the person out or let them deal again; the next attempt has the next number",
+		             "attempt %llu is abandoned: %s failed a check: %.200s", (unsigned long long)p->k->attempt,
+		             p->k->custodian[who].party->name, first.what);
+	return st;
+}
+
+static enum qb_status check_each(struct part *p, const struct deal *deals)
+{
+	for (int i = 0; i < p->k->n; i++) {
+		struct secret *share = NULL;
+		enum qb_status st = deal_check(&p->k->context, &deals[i], &p->c->error);
+		if (st == QB_OK)
+			st = deal_take(&p->k->context, &deals[i], (uint32_t)p->i + 1, &p->c->home.key, &share,
+			               &p->c->error);
+		secret_free(&share);
+		if (st != QB_OK)
+			return accuse(p, i);
+	}
+	return QB_OK;
+}
+
+static enum qb_status save_share(struct part *p, const struct custody_group *g, struct secret *share)
+{
+	char *path;
+	struct keyfile_share s = {.epoch = 1, .index = (uint32_t)p->i + 1, .share = share};
+	memcpy(s.campaign, p->k->id, 16);
+	memcpy(s.th, g->th, 64);
+	enum qb_status st = home_campaign_path(&p->c->home, p->k->id, "share.qbk", &path, &p->c->error);
+	if (st == QB_OK)
+		st = keyfile_write_share(path, level_of(p), p->c->home.passphrase, &s, &p->c->error);
+	qb_free(path);
+	return st;
+}
+
+static enum qb_status step_certify(struct part *p)
+{
+	struct deal *deals = QB_NEW_ARRAY(struct deal, (size_t)p->k->n);
+	struct custody_group *g = QB_NEW(struct custody_group);
+	struct secret *share = NULL;
+	uint8_t certificate[64], signature[SIGN_BYTES];
+	enum qb_status st = parse_deals(p, deals);
+	if (st == QB_OK)
+		st = check_each(p, deals);
+	if (st == QB_OK)
+		st = keygen_share(&p->k->context, deals, (uint32_t)p->i + 1, &p->c->home.key, g, &share, &p->c->error);
+	if (st == QB_OK)
+		st = save_share(p, g, share);
+	if (st == QB_OK) {
+		char *path = route(p, "keygen/certify");
+		json_t *extra = json_object();
+		keygen_certificate_hash(g, certificate);
+		keygen_certificate_sign(g, p->c->home.key.seed, signature);
+		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
+		json_object_set_new(extra, "certificate", json_hex_new(certificate, 64));
+		json_object_set_new(extra, "certificate_signature", json_hex_new(signature, SIGN_BYTES));
+		st = cli_post_entry(p->c, path, "certify", p->k->id, "every check passed", extra, NULL, NULL);
+		qb_free(path);
+	}
+	if (st == QB_OK)
+		cli_note(p->c, "%s: checked every deal, keeps a share, certified the group key\n", p->name);
+	secret_free(&share);
+	qb_free(deals);
+	qb_free(g);
+	return st;
+}
+
+enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
+                         struct secret **out)
+{
+	char *path;
+	struct keyfile_share s = {0};
+	enum qb_status st = home_campaign_path(&c->home, k->id, "share.qbk", &path, &c->error);
+	if (st == QB_OK)
+		st = keyfile_read_share(path, c->home.passphrase, c->link.rehearsal, &s, &c->error);
+	if (st == QB_OK && (memcmp(s.campaign, k->id, 16) != 0 || memcmp(s.th, g->th, 64) != 0)) {
+		st = qb_fail(&c->error, QB_CRYPTO, path, "restore the share of this campaign",
+		             "is of another key generation");
+		secret_free(&s.share);
+	}
+	qb_free(path);
+	*out = s.share;
+	return st;
+}
+
+static enum qb_status step_rehearse(struct part *p)
+{
+	struct custody_group *g = QB_NEW(struct custody_group);
+	struct secret *share = NULL;
+	struct record rec;
+	struct buf partial = {0};
+	struct partial_authority auth = {.purpose = PARTIAL_REHEARSAL};
+	memcpy(auth.hash, p->k->canary_leaf, 32);
+	enum qb_status st = campaign_certified_group(p->k, g, &p->c->error);
+	if (st == QB_OK)
+		st = cli_share(p->c, p->k, g, &share);
+	if (st == QB_OK)
+		st = record_check(g, p->k->canary, p->k->canary_n, &rec, &p->c->error);
+	if (st == QB_OK)
+		st = record_expect(&rec, RECORD_CANARY, p->k->attempt, &p->c->error);
+	if (st == QB_OK)
+		st = partial_make(g, &rec, (uint32_t)p->i + 1, share, &auth, &partial, &p->c->error);
+	if (st == QB_OK) {
+		char *text = base64_encode(partial.data, partial.len), *path = route(p, "sealer/rehearsals");
+		json_t *extra = json_object();
+		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
+		json_object_set_new(extra, "record_id", json_hex_new(rec.id, 64));
+		json_object_set_new(extra, "share", json_string(text));
+		st = cli_post_entry(p->c, path, "rehearsal", p->k->id, "rehearsal of the opening", extra, NULL, NULL);
+		qb_free(text);
+		qb_free(path);
+	}
+	if (st == QB_OK)
+		cli_note(p->c, "%s: opened the canary\n", p->name);
+	secret_free(&share);
+	buf_free(&partial);
+	qb_free(g);
+	return st;
+}
+
+static enum qb_status step_commit(struct part *p)
+{
+	uint8_t commit[64];
+	enum qb_status st = commitment(p, commit);
+	if (st != QB_OK)
+		return st;
+	char *path = route(p, "keygen/commit");
+	json_t *extra = json_object();
+	json_object_set_new(extra, "sealing_attempt", json_integer((json_int_t)p->k->sealing_attempt));
+	json_object_set_new(extra, "contribution_commitment", json_hex_new(commit, 64));
+	st = cli_post_entry(p->c, path, "contribution-commitment", p->k->id, "the sealing failed before", extra, NULL,
+	                    NULL);
+	qb_free(path);
+	return st;
+}
+
+static enum qb_status step_contribute(struct part *p)
+{
+	struct secret *s = NULL;
+	struct buf box = {0};
+	enum qb_status st = contribution(p, &s);
+	if (st == QB_OK)
+		st = box_seal(p->k->sealer_key, BOX_SEALER, p->k->context.ctx, 64, secret_view(s), CONTRIBUTION_BYTES,
+		              CONTRIBUTION_BYTES, &box, &p->c->error);
+	if (st == QB_OK) {
+		char *text = base64_encode(box.data, box.len), *path = route(p, "sealer/contributions");
+		json_t *extra = json_object();
+		json_object_set_new(extra, "sealing_attempt", json_integer((json_int_t)p->k->sealing_attempt));
+		json_object_set_new(extra, "box", json_string(text));
+		st = cli_post_entry(p->c, path, "contribution", p->k->id, "the sealer waits", extra, NULL, NULL);
+		qb_free(text);
+		qb_free(path);
+	}
+	if (st == QB_OK)
+		cli_note(p->c, "%s: contributed to the draw\n", p->name);
+	secret_free(&s);
+	buf_free(&box);
+	return st;
+}
+
+/* After the sealing the contribution has no use any more, and must not be found. */
+static enum qb_status step_finish(struct part *p)
+{
+	char *path;
+	enum qb_status st = contribution_path(p, &path);
+	if (st == QB_OK)
+		(void)unlink(path);
+	qb_free(path);
+	cli_note(p->c, "%s: the campaign is sealed; keep %s/campaigns and its passphrase for the opening\n", p->name,
+	         p->c->home.dir);
+	return st;
+}
+
+/* One turn: the step that is due, or *idle. */
+static enum qb_status turn(struct part *p, bool *idle, bool *done)
+{
+	const struct custodian *me = &p->k->custodian[p->i];
+	*idle = false;
+	if (p->k->state >= C_SEALED) {
+		*done = true;
+		return step_finish(p);
+	}
+	if (me->deal_seq == NO_SEQ)
+		return step_deal(p);
+	if (p->k->has_group && me->certify_seq == NO_SEQ)
+		return step_certify(p);
+	if (p->k->state == C_CERTIFIED && me->rehearsal_seq == NO_SEQ)
+		return step_rehearse(p);
+	if (p->k->state == C_REHEARSED && me->commitment_seq == NO_SEQ)
+		return step_commit(p);
+	if (p->k->state == C_SEALING && me->contribution_seq == NO_SEQ)
+		return step_contribute(p);
+	*idle = true;
+	return QB_OK;
+}
+
+enum qb_status cli_keygen(struct cli_call *c)
+{
+	struct part p = {.c = c};
+	struct timespec pause = {0, 150000000};
+	bool wait = cli_option(c, "wait") != NULL, done = false;
+	enum qb_status st = cli_option_int(c, "rehearsal-seed", 0, INT64_MAX, -1, &p.seed);
+	while (st == QB_OK && !done) {
+		bool idle = false;
+		if ((st = cli_campaign(c, cli_arg(c, 0), &p.k)) != QB_OK)
+			break;
+		p.name = c->home.name;
+		p.i = custodian_index(p.k, c->home.name);
+		if (p.i < 0)
+			st = qb_fail(&c->error, QB_REFUSED, "campaign", NULL, "%s is no custodian of '%s'",
+			             c->home.name, p.k->name);
+		else if (p.seed >= 0 && !c->link.rehearsal)
+			st = qb_fail(&c->error, QB_REFUSED, "--rehearsal-seed", NULL,
+			             "is for services with a rehearsal clock");
+		else
+			st = turn(&p, &idle, &done);
+		if (st == QB_OK && idle && !wait)
+			break;
+		if (st == QB_OK && idle)
+			nanosleep(&pause, NULL);
+	}
+	/* A custodian holds the service to one history: every command ends with a cosignature. */
+	if (st == QB_OK)
+		st = cli_follow(c);
+	return st == QB_OK ? follow_cosign(&c->follow, &c->link, &c->error) : st;
+}

@@ -1,0 +1,12 @@
+/* The client's entry point, and the list of its tables of verbs. */
+#include <stddef.h>
+
+#include "client/cli/internal.h"
+
+const struct cli_verb *const cli_tables[] = {cli_key_verbs,      cli_party_verbs, cli_plan_verbs,
+                                             cli_campaign_verbs, cli_slot_verbs,  NULL};
+
+int main(int argc, char **argv)
+{
+	return cli_main(argc, argv);
+}
