@@ -202,10 +202,10 @@ static void bad_padding_is_refused(void **state)
 int main(void)
 {
 	const struct CMUnitTest tests[] = {
-	    cmocka_unit_test(shifted_copy_as_a_canary),          cmocka_unit_test(foreign_r_in_an_own_record),
-	    cmocka_unit_test(invalid_points_and_scalars),        cmocka_unit_test(every_byte_is_covered),
-	    cmocka_unit_test(records_swapped_between_slots),     cmocka_unit_test(claim_copied_by_another_analyst),
-	    cmocka_unit_test(sealed_to_the_servers_key),         cmocka_unit_test(of_another_epoch_or_campaign),
+	    cmocka_unit_test(shifted_copy_as_a_canary),      cmocka_unit_test(foreign_r_in_an_own_record),
+	    cmocka_unit_test(invalid_points_and_scalars),    cmocka_unit_test(every_byte_is_covered),
+	    cmocka_unit_test(records_swapped_between_slots), cmocka_unit_test(claim_copied_by_another_analyst),
+	    cmocka_unit_test(sealed_to_the_servers_key),     cmocka_unit_test(of_another_epoch_or_campaign),
 	    cmocka_unit_test(bad_padding_is_refused),
 	};
 	struct qb_error e = {0};
