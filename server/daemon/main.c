@@ -106,6 +106,7 @@ static int run_sealer(struct qb_error *e)
 	enum qb_status st = guard_process(e);
 	if (st == QB_OK)
 		st = secret_setup(e);
+	json_object_seed(0); /* reads a file once, which the filter would not forgive */
 	if (st == QB_OK)
 		st = guard_sealer(&log, e);
 	return st == QB_OK ? ops_sealer_main(0, 1) : qb_exit_status(st);
