@@ -10,6 +10,9 @@
  * + 7     phase 64 a + 8     network SNR, or the scale (distance, hrss) 64 a + 9 + i intrinsic parameter i, in the
  * plan's order Variates of the campaign's own draw: 0, empty by design when u < empty_chance.
  *
+ * SNRs are optimal, from the family's lowest frequency up to half the slowest drive rate of the network. A drive's
+ * interval lies on the sample grid of its slot (start + k / rate), rounded outwards.
+ *
  * An attempt whose drive is beyond a limit at any station is drawn again as the next attempt; live or null and family
  * stay. A null is the same draw with gain 0: all of the work, and all the numbers, are the same.
  */

@@ -187,9 +187,9 @@ static double volume_element(const struct draw_attempt *a)
 	if (!a->family->source_frame)
 		return 4 * M_PI * d * d;
 	struct cosmology c = draw_cosmology(a->plan);
-	double comoving = d / (1 + z), h = cosmology_hubble_distance_mpc(&c) / cosmology_expansion(&c, z);
-	double dv_dz = 4 * M_PI * h * comoving * comoving, dd_dz = comoving + (1 + z) * h;
-	return dv_dz / dd_dz / (1 + z);
+	double hubble = cosmology_hubble_distance_mpc(&c) / cosmology_expansion(&c, z);
+	double dd_dz = d / (1 + z) + (1 + z) * hubble; /* D_L = (1+z) D_C */
+	return cosmology_volume_mpc3_per_redshift(&c, z) / dd_dz / (1 + z);
 }
 
 bool draw_weight(const struct draw_attempt *a, double *weight_mpc3)

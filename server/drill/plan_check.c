@@ -206,7 +206,7 @@ static void check_calibrations(struct plan_checker *c)
 	const struct drill_plan *p = c->plan;
 	for (int s = 0; s < p->network->n_stations; s++) {
 		const struct wave_station *w = &p->network->stations[s];
-		if (!w->has_actuator)
+		if (!w->actuator.present)
 			check_add(c, PLAN_REFUSAL, "actuator", check_node(c, NULL, "network", NULL),
 			          "describe its actuator in the network file", "station '%s' of %s has no actuator",
 			          w->name, p->network_file);

@@ -96,15 +96,15 @@ static void read_loudness(struct plan_reader *r, struct yaml_node *m, struct pla
 		read_dist(r, scale, &none, 1e-30, 1e-15, &f->loud);
 }
 
-static void read_parameters(struct plan_reader *r, struct yaml_node *m, struct plan_family *f)
+static void read_parameters(struct plan_reader *r, struct yaml_node *m, enum wave_family family, struct plan_family *f)
 {
-	const struct signal_family *w = signal_family_find(f->family);
+	const struct wave_family_info *w = wave_family_info(family);
 	for (int i = 0; i < m->n_members && r->status == QB_OK; i++) {
 		struct yaml_node *n = m->members[i];
-		const struct signal_parameter *p = signal_family_parameter(w, n->key);
+		int at = wave_parameter_find(family, n->key);
 		if (among(n->key, own_keys) || population_find(&f->place, n->key) >= 0 || strcmp(n->key, f->scale) == 0)
 			continue;
-		if (p == NULL)
+		if (at < 0)
 			continue; /* nobody asks for it: refused as an unknown key */
 		struct population_parameter *x = &f->parameters.p[f->parameters.n];
 		if (f->parameters.n == POPULATION_MAX) {
@@ -113,11 +113,11 @@ static void read_parameters(struct plan_reader *r, struct yaml_node *m, struct p
 		}
 		(void)snprintf(x->key, sizeof x->key, "%s", n->key);
 		x->line = n->line;
-		read_dist(r, n, &f->parameters, p->min, p->max, &x->dist);
+		read_dist(r, n, &f->parameters, w->parameters[at].least, w->parameters[at].largest, &x->dist);
 		f->parameters.n++;
 	}
 	for (int i = 0; i < w->n_parameters && r->status == QB_OK; i++) {
-		const struct signal_parameter *p = &w->parameters[i];
+		const struct wave_parameter *p = &w->parameters[i];
 		bool elsewhere = population_find(&f->place, p->key) >= 0 || strcmp(p->key, f->scale) == 0 ||
 		                 strcmp(p->key, "ellipticity_rad") == 0;
 		struct yaml_node *unused;
@@ -138,22 +138,24 @@ static void read_family(struct plan_reader *r, struct yaml_node *m, struct plan_
 	n = read_need(r, m, "family", YAML_SCALAR);
 	if (n == NULL)
 		return;
-	const struct signal_family *w = signal_family_find(n->text);
-	if (w == NULL) {
-		read_refuse(r, n, QB_FORMAT, signal_family_words());
+	enum wave_family family;
+	if (!wave_family_find(n->text, &family)) {
+		char words[200];
+		read_refuse(r, n, QB_FORMAT, signal_family_words(words, sizeof words));
 		return;
 	}
+	const struct wave_family_info *w = wave_family_info(family);
 	(void)snprintf(f->family, sizeof f->family, "%s", w->name);
-	int model = read_word(r, m, "model", w->models, 0);
-	(void)snprintf(f->model, sizeof f->model, "%s", w->models[0] != NULL ? w->models[model] : "");
+	int model = w->models != NULL ? read_word(r, m, "model", w->models, 0) : 0;
+	(void)snprintf(f->model, sizeof f->model, "%s", w->models != NULL ? w->models[model] : "");
 	(void)snprintf(f->scale, sizeof f->scale, "%s", w->scale);
 	f->source_frame = read_word(r, m, "frame", frames, 0) == 1;
-	if (f->source_frame && !w->has_masses)
+	if (f->source_frame && !signal_has_masses(family))
 		read_refuse(r, read_find(r, m, "frame"), QB_RANGE, "station for a family without masses");
 	read_places(r, m, f);
 	read_loudness(r, m, f);
 	if (r->status == QB_OK)
-		read_parameters(r, m, f);
+		read_parameters(r, m, family, f);
 }
 
 void plan_read_families(struct plan_reader *r, struct yaml_node *drills, struct drill_plan *plan)

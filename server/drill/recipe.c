@@ -87,7 +87,7 @@ static enum qb_status check(const struct drill_recipe *r, struct qb_error *e)
 		return qb_fail(e, QB_RANGE, WHAT, NULL, "has a drive outside its slot");
 	if (r->source.arrival_gps_ns < r->slot_start_ns || r->source.arrival_gps_ns > r->slot_start_ns + r->slot_ns)
 		return qb_fail(e, QB_RANGE, WHAT, NULL, "has an arrival outside its slot");
-	return signal_check(&r->source, WHAT, e);
+	return source_check(&r->source, WHAT, e);
 }
 
 enum qb_status drill_recipe_encode(const struct drill_recipe *r, uint8_t out[static DRILL_RECIPE_BYTES],
@@ -114,7 +114,7 @@ enum qb_status drill_recipe_encode(const struct drill_recipe *r, uint8_t out[sta
 	buf_i64(&b, r->drive_from_ns);
 	buf_i64(&b, r->drive_to_ns);
 	put_text(&b, signal_family_name(s), WORD_BYTES);
-	put_text(&b, signal_model_name(s), WORD_BYTES);
+	put_text(&b, source_model_word(s), WORD_BYTES);
 	buf_i64(&b, s->arrival_gps_ns);
 	put_double(&b, s->right_ascension_rad);
 	put_double(&b, s->declination_rad);

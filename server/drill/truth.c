@@ -71,7 +71,7 @@ enum qb_status truth_check(const struct drill_truth *t, struct qb_error *e)
 			return qb_fail(e, QB_RANGE, WHAT, NULL, "has a drive of station '%s' outside its slot",
 			               s->name);
 	}
-	return signal_check(&t->source, WHAT, e);
+	return source_check(&t->source, WHAT, e);
 }
 
 enum qb_status truth_encode(const struct drill_truth *t, struct buf *out, struct qb_error *e)
@@ -90,7 +90,7 @@ enum qb_status truth_encode(const struct drill_truth *t, struct buf *out, struct
 	json_object_set_new(j, "gain", json_real(t->gain));
 	json_object_set_new(j, "name", json_string(t->name));
 	json_object_set_new(j, "family", json_string(signal_family_name(s)));
-	json_object_set_new(j, "model", json_string(signal_model_name(s)));
+	json_object_set_new(j, "model", json_string(source_model_word(s)));
 	json_object_set_new(j, "parameters", parameters_new(s));
 	json_object_set_new(j, "right_ascension_rad", json_real(s->right_ascension_rad));
 	json_object_set_new(j, "declination_rad", json_real(s->declination_rad));

@@ -243,7 +243,7 @@ static void same_time(struct comparing *c, const char *name, int64_t a, int64_t 
 static void compare_sources(struct comparing *c, const struct wave_source *a, const struct wave_source *b)
 {
 	same_text(c, "family", signal_family_name(a), signal_family_name(b));
-	same_text(c, "model", signal_model_name(a), signal_model_name(b));
+	same_text(c, "model", source_model_word(a), source_model_word(b));
 	for (int i = 0; c->status == QB_OK && i < signal_parameter_count(a); i++) {
 		const char *key = signal_parameter_key(a, i);
 		bool scaled = strstr(key, "_rad") == NULL && strstr(key, "_spin") == NULL;
@@ -305,9 +305,9 @@ json_t *truth_audit_json(const struct drill_truth *t)
 	for (int i = 0; i < signal_parameter_count(&t->source); i++)
 		json_object_set_new(j, signal_parameter_key(&t->source, i),
 		                    json_real(signal_parameter_value(&t->source, i)));
-	if (signal_is_binary(&t->source)) {
-		json_object_set_new(j, "chirp_mass_msun", json_real(signal_chirp_mass_msun(&t->source)));
-		json_object_set_new(j, "effective_spin", json_real(signal_effective_spin(&t->source)));
+	if (signal_has_masses(t->source.family)) {
+		json_object_set_new(j, "chirp_mass_msun", json_real(source_chirp_mass_msun(&t->source)));
+		json_object_set_new(j, "effective_spin", json_real(source_effective_spin(&t->source)));
 	}
 	json_object_set_new(j, "right_ascension_rad", json_real(t->source.right_ascension_rad));
 	json_object_set_new(j, "declination_rad", json_real(t->source.declination_rad));
