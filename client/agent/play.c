@@ -11,8 +11,7 @@
 
 #define PI 3.14159265358979323846
 
-/* The first sample that is not earlier than this time. */
-static int64_t sample_at(const struct play *p, int64_t gps_ns)
+int64_t play_sample_at(const struct play *p, int64_t gps_ns)
 {
 	int64_t ns = gps_ns - p->slot_start_ns;
 	if (ns <= 0)
@@ -43,8 +42,8 @@ void play_begin(struct play *p, int64_t slot_start_ns, int64_t slot_ns, double r
 void play_load(struct play *p, const double *drive, int64_t at, int64_t n, int64_t from_ns, int64_t to_ns)
 {
 	CHECK(p->drive == NULL && at >= 0 && n > 0 && at + n <= p->n_samples && from_ns < to_ns);
-	p->window_from = sample_at(p, from_ns);
-	p->window_to = sample_at(p, to_ns);
+	p->window_from = play_sample_at(p, from_ns);
+	p->window_to = play_sample_at(p, to_ns);
 	p->drive = drive;
 	p->drive_at = at;
 	p->drive_n = n;
@@ -57,7 +56,7 @@ bool play_halted(const struct play *p)
 
 void play_halt(struct play *p, enum play_state why, int64_t at_ns)
 {
-	int64_t at = sample_at(p, at_ns);
+	int64_t at = play_sample_at(p, at_ns);
 	CHECK(why == PLAY_HELD || why == PLAY_STOPPED || why == PLAY_SKIPPED || why == PLAY_FAILED);
 	if (p->state == PLAY_PLAYED || play_halted(p))
 		return;

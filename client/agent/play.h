@@ -41,6 +41,9 @@ struct play {
  */
 void play_begin(struct play *p, int64_t slot_start_ns, int64_t slot_ns, double rate_hz);
 
+/* The slot's first sample that is not earlier than this time; times beyond an end give that end. */
+int64_t play_sample_at(const struct play *p, int64_t gps_ns);
+
 /*
  * Gives it the drive, before the first sample of the window went out.
  *

@@ -14,7 +14,9 @@
 #include "server/wire/entries.h"
 #include "server/wire/request.h"
 
-#define ANSWER_MAX ((size_t)64 << 20)
+#define ANSWER_MAX        ((size_t)64 << 20)
+#define CONNECT_TIMEOUT_S 10
+#define REQUEST_TIMEOUT_S 600
 
 struct answer {
 	struct buf body;
@@ -125,8 +127,9 @@ static enum qb_status perform(struct link *l, const char *method, const char *pa
 	curl_easy_setopt(c, CURLOPT_WRITEDATA, a);
 	curl_easy_setopt(c, CURLOPT_ERRORBUFFER, message);
 	curl_easy_setopt(c, CURLOPT_NOSIGNAL, 1L);
-	curl_easy_setopt(c, CURLOPT_CONNECTTIMEOUT, 10L);
-	curl_easy_setopt(c, CURLOPT_TIMEOUT, 600L);
+	curl_easy_setopt(c, CURLOPT_CONNECTTIMEOUT,
+	                 l->timeout_s > 0 && l->timeout_s < CONNECT_TIMEOUT_S ? l->timeout_s : (long)CONNECT_TIMEOUT_S);
+	curl_easy_setopt(c, CURLOPT_TIMEOUT, l->timeout_s > 0 ? l->timeout_s : (long)REQUEST_TIMEOUT_S);
 	curl_easy_setopt(c, CURLOPT_PROTOCOLS_STR, "http,https");
 	curl_easy_setopt(c, CURLOPT_FOLLOWLOCATION, 0L);
 	curl_easy_setopt(c, CURLOPT_PATH_AS_IS, 1L);

@@ -15,6 +15,7 @@ struct link {
 	int64_t now_gps_ns;   /* the service's, at link_open or link_refresh */
 	int64_t until_gps_ns; /* of the last 409 with a time to wait for, else 0 */
 	long http_status;     /* of the last answer */
+	long timeout_s;       /* of a whole request; 0: REQUEST_TIMEOUT_S of transport.c */
 };
 
 /*
