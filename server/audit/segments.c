@@ -83,12 +83,16 @@ double segments_livetime_s(const struct audit_segments *s)
 	return sum;
 }
 
-double segments_position_s(const struct audit_segments *s, double gps)
+double segments_time_at(const struct audit_segments *s, double livetime_s)
 {
 	double sum = 0, lost = 0;
-	for (size_t i = 0; i < s->n && s->at[i].start_gps < gps; i++)
-		add_up(&sum, &lost, fmin(gps, s->at[i].end_gps) - s->at[i].start_gps);
-	return sum;
+	for (size_t i = 0; i < s->n; i++) {
+		const double length = s->at[i].end_gps - s->at[i].start_gps;
+		if (sum + length > livetime_s)
+			return s->at[i].start_gps + (livetime_s - sum);
+		add_up(&sum, &lost, length);
+	}
+	return s->n > 0 ? s->at[s->n - 1].end_gps : 0;
 }
 
 struct audit_segments segments_subtract(const struct audit_segments *s, const struct audit_segments *holes)

@@ -28,7 +28,7 @@ bool segments_hold(const struct audit_segments *s, double gps);
 double segments_livetime_s(const struct audit_segments *s); /* compensated sum */
 struct audit_segments segments_subtract(const struct audit_segments *s, const struct audit_segments *holes);
 struct audit_segments segments_union(const struct audit_segments *a, const struct audit_segments *b);
-/* Livetime before gps: the coordinate that runs through the list without its gaps. */
-double segments_position_s(const struct audit_segments *s, double gps);
+/* The time at which so much livetime has gone by since the start of the list; its last end when there is less. */
+double segments_time_at(const struct audit_segments *s, double livetime_s);
 
 #endif
