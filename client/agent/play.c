@@ -16,7 +16,9 @@ int64_t play_sample_at(const struct play *p, int64_t gps_ns)
 	int64_t ns = gps_ns - p->slot_start_ns;
 	if (ns <= 0)
 		return 0;
-	double x = ceil((double)(ns / NS_PER_S) * p->rate_hz + (double)(ns % NS_PER_S) * p->rate_hz / 1e9 - 1e-6);
+	/* A sample's time is rounded to whole nanoseconds. */
+	double x =
+	    ceil((double)(ns / NS_PER_S) * p->rate_hz + (double)(ns % NS_PER_S) * p->rate_hz / 1e9 - p->rate_hz * 1e-9);
 	return x >= (double)p->n_samples ? p->n_samples : (int64_t)x;
 }
 
@@ -109,7 +111,7 @@ size_t play_emit(struct play *p, int64_t now_ns, double *out)
 	for (int64_t k = 0; k < n; k++) {
 		int64_t i = p->next + k, j = i - p->drive_at;
 		bool inside = p->drive != NULL && j >= 0 && j < p->drive_n;
-		p->last = (inside ? p->drive[j] : 0) * weight(p, i);
+		p->last = (inside ? p->drive[j] : 0) * weight(p, i) + 0.0;
 		if (fabs(p->last) > p->peak_counts)
 			p->peak_counts = fabs(p->last);
 		out[k] = p->last;
