@@ -64,33 +64,19 @@ static enum qb_status check_limits(const struct wave_actuator *a, const struct d
 	return st;
 }
 
-/*
- * Renders from the last block's edge before the window, which is a whole number of nanoseconds, and keeps the window:
- * at most rates a sample's time is none.
- */
+/* The same samples as the sealer rendered when it held the draw to the limits. */
 static enum qb_status render(const struct drill_recipe *r, const struct wave_source *source,
                              const struct wave_station *station, struct drive *out, struct qb_error *e)
 {
 	struct play grid;
-	int64_t block_ns = NS_PER_S / PLAY_BLOCKS_PER_S;
 	play_begin(&grid, r->slot_start_ns, r->slot_ns, r->rate_hz);
-	int64_t blocks = (r->drive_from_ns - r->slot_start_ns) / block_ns;
 	int64_t from = play_sample_at(&grid, r->drive_from_ns), to = play_sample_at(&grid, r->drive_to_ns);
-	int64_t first = play_sample_at(&grid, r->slot_start_ns + blocks * block_ns);
-	if (to <= from || to - first > SAMPLES_MAX)
+	if (to <= from || to - from > SAMPLES_MAX)
 		return qb_fail(e, QB_RANGE, "recipe", NULL, "the drive's window is empty or too long");
-	double *all = QB_NEW_ARRAY(double, (size_t)(to - first));
-	enum qb_status st = render_drive(station, source, r->rate_hz, r->slot_start_ns + blocks * block_ns,
-	                                 (size_t)(to - first), all, e);
-	if (st == QB_OK) {
-		out->n = (size_t)(to - from);
-		out->at = from;
-		out->counts = QB_NEW_ARRAY(double, out->n);
-		memcpy(out->counts, all + (from - first), out->n * sizeof *all);
-	}
-	wipe(all, (size_t)(to - first) * sizeof *all);
-	qb_free(all);
-	return st;
+	out->n = (size_t)(to - from);
+	out->at = from;
+	out->counts = QB_NEW_ARRAY(double, out->n);
+	return render_drive(station, source, r->rate_hz, r->drive_from_ns, out->n, out->counts, e);
 }
 
 enum qb_status drive_make(const struct drill_recipe *recipe, const struct drill_plan *plan, int station,
