@@ -31,9 +31,10 @@ struct driver {
 	int station;                     /* position in the plan's network */
 	struct prekeys *prekeys;
 	struct sink *sink;
-	int64_t contact_ns; /* system clock's time of the last good answer */
-	int64_t ready_to;   /* recipes of slots below this one were fetched */
-	struct buf *recipe; /* owned; DRIVER_READY_AHEAD wrapped recipes, slot n at n % DRIVER_READY_AHEAD */
+	struct clock_source system; /* the system's clock */
+	int64_t contact_ns;         /* system clock's time of the last good answer */
+	int64_t ready_to;           /* recipes of slots below this one were fetched */
+	struct buf *recipe;         /* owned; DRIVER_READY_AHEAD wrapped recipes, slot n at n % DRIVER_READY_AHEAD */
 	volatile sig_atomic_t *stopping; /* set by a signal; NULL: never */
 };
 

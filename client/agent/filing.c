@@ -92,19 +92,13 @@ static enum qb_status file_one(struct driver *d, bool report, int64_t slot, int 
 	return st == QB_UNREACHABLE ? st : QB_OK;
 }
 
-static int64_t system_now(void)
-{
-	struct clock_source c = clock_system();
-	return clock_now(&c);
-}
-
 static void back_off(struct filing *f)
 {
 	int64_t ns = (int64_t)200000000 << (f->tries < 8 ? f->tries : 8);
 	if (ns > BACKOFF_MAX_S * NS_PER_S)
 		ns = BACKOFF_MAX_S * NS_PER_S;
 	f->tries++;
-	f->next_ns = system_now() + ns;
+	f->next_ns = clock_now(&f->d->system) + ns;
 }
 
 void filing_begin(struct filing *f, struct driver *d, int64_t slot, int64_t notes)
@@ -121,7 +115,7 @@ void filing_take(struct filing *f, const struct play_note *note)
 
 void filing_send(struct filing *f)
 {
-	while (f->n_sent < f->n_notes && system_now() >= f->next_ns) {
+	while (f->n_sent < f->n_notes && clock_now(&f->d->system) >= f->next_ns) {
 		struct buf content = {0};
 		struct qb_error e = {0};
 		CHECK(play_note_encode(&f->note[f->n_sent], &content, &e) == QB_OK);
@@ -144,7 +138,7 @@ bool filing_finish(struct filing *f, const struct play_report *report)
 	CHECK(play_report_encode(report, &content, &e) == QB_OK);
 	for (;;) {
 		filing_send(f);
-		if (f->n_sent == f->n_notes && system_now() >= f->next_ns) {
+		if (f->n_sent == f->n_notes && clock_now(&f->d->system) >= f->next_ns) {
 			done = file_one(f->d, true, f->slot, REPORT_NUMBER, &content) == QB_OK;
 			if (!done)
 				back_off(f);

@@ -44,7 +44,7 @@ static enum qb_status find_campaign(struct driver *d, struct qb_error *e)
 enum qb_status loop_open(struct driver *d, const struct driver_options *opt, const struct log *log,
                          volatile sig_atomic_t *stopping, struct qb_error *e)
 {
-	*d = (struct driver){.opt = *opt, .log = *log, .stopping = stopping};
+	*d = (struct driver){.opt = *opt, .log = *log, .system = clock_system(), .stopping = stopping};
 	d->recipe = QB_NEW_ARRAY(struct buf, DRIVER_READY_AHEAD);
 	enum qb_status st = home_open(opt->home, false, &d->home, e);
 	if (st == QB_OK)

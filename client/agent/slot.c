@@ -33,12 +33,6 @@ struct slot_run {
 	char reason[400];
 };
 
-static int64_t system_now(void)
-{
-	struct clock_source c = clock_system();
-	return clock_now(&c);
-}
-
 static void say(const struct slot_run *r, const char *event)
 {
 	char text[24];
@@ -51,8 +45,12 @@ static void halt(struct slot_run *r, enum play_state why, int64_t at_ns, const c
 {
 	bool before = play_halted(&r->play);
 	play_halt(&r->play, why, at_ns);
-	if (!before && play_halted(&r->play))
-		snprintf(r->reason, sizeof r->reason, "%s", reason);
+	if (before || !play_halted(&r->play))
+		return;
+	/* Plain characters only: a path cut in the middle of a character would be no text any more. */
+	snprintf(r->reason, sizeof r->reason, "%s", reason);
+	for (char *p = r->reason; *p != '\0'; p++)
+		*p = *p < 0x20 || *p > 0x7e ? '?' : *p;
 }
 
 static bool missed(const struct slot_run *r)
@@ -97,11 +95,11 @@ static enum qb_status look(struct slot_run *r, struct qb_error *e)
 	bool quick = r->d->link.rehearsal && moved;
 	if (!r->d->link.rehearsal)
 		r->now_ns = now;
-	if (now >= r->freeze_ns && (quick || !r->settled || system_now() - r->looked_ns >= LOOK_NS)) {
+	if (now >= r->freeze_ns && (quick || !r->settled || clock_now(&r->d->system) - r->looked_ns >= LOOK_NS)) {
 		st = watch_slot(r->d, r->n, &r->seen, e);
 		if (st != QB_OK)
 			return st;
-		r->looked_ns = system_now();
+		r->looked_ns = clock_now(&r->d->system);
 		r->seen_once = true;
 	}
 	r->now_ns = now;

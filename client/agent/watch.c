@@ -10,9 +10,8 @@
 
 enum qb_status watch_now(struct driver *d, int64_t *now_gps_ns, struct qb_error *e)
 {
-	struct clock_source system = clock_system();
 	if (!d->link.rehearsal) {
-		*now_gps_ns = clock_now(&system);
+		*now_gps_ns = clock_now(&d->system);
 		return QB_OK;
 	}
 	enum qb_status st = link_refresh(&d->link, e);
@@ -100,14 +99,12 @@ bool watch_observing(const char *path)
 
 void watch_contact(struct driver *d)
 {
-	struct clock_source system = clock_system();
-	d->contact_ns = clock_now(&system);
+	d->contact_ns = clock_now(&d->system);
 }
 
 bool watch_contact_lost(const struct driver *d)
 {
-	struct clock_source system = clock_system();
-	return !d->link.rehearsal && (double)(clock_now(&system) - d->contact_ns) > d->opt.contact_s * 1e9;
+	return !d->link.rehearsal && (double)(clock_now(&d->system) - d->contact_ns) > d->opt.contact_s * 1e9;
 }
 
 void watch_pause(const struct driver *d, bool playing)

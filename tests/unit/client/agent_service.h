@@ -44,7 +44,8 @@ struct service {
 	/* What stands in the way, from when on. */
 	int64_t held_from_ns, stopped_from_ns;
 	bool not_going;
-	int lose_answers; /* so many posts arrive, but their answers do not */
+	int64_t silent_from_ns, silent_to_ns; /* the service answers nothing in between */
+	int lose_answers;                     /* so many posts arrive, but their answers do not */
 	/* What came in. */
 	struct play_note note[PLAY_NOTES_MAX];
 	int n_notes, n_reports, n_keys;
@@ -72,6 +73,19 @@ enum qb_status link_refresh(struct link *l, struct qb_error *e)
 	assert_true(service->looks < 2000);
 	l->now_gps_ns = service_now();
 	return QB_OK;
+}
+
+static inline bool service_silent(struct qb_error *e)
+{
+	bool silent = service_now() >= service->silent_from_ns && service_now() < service->silent_to_ns;
+	return silent && qb_fail(e, QB_UNREACHABLE, NULL, NULL, "no answer") != QB_OK;
+}
+
+/* A system clock that runs by itself: a tenth of a second each time that somebody looks. */
+static inline int64_t service_tick(void *state)
+{
+	(void)state;
+	return service->step[0] += NS_PER_S / 10;
 }
 
 static inline json_t *service_slot(int64_t n)
@@ -108,6 +122,9 @@ enum qb_status link_get(struct link *l, const char *path, json_t **out, struct q
 	int end = 0;
 	enum qb_status st = QB_OK;
 	(void)l;
+	*out = NULL;
+	if (service_silent(e))
+		return QB_UNREACHABLE;
 	*out = json_object();
 	if (sscanf(path, "/v1/campaigns/fells/slots/%lld%n", &n, &end) == 1 && path[end] == '\0') {
 		json_decref(*out);
@@ -168,6 +185,8 @@ enum qb_status link_post(struct link *l, const char *path, const json_t *body, j
 	struct buf b = {0}, content = {0};
 	const char *id = json_string_value(json_object_get(json_object_get(body, "entry"), "record_id"));
 	(void)l, (void)out;
+	if (service_silent(e))
+		return QB_UNREACHABLE;
 	assert_int_equal(sscanf(path, "/v1/campaigns/fells/recipes/%lld/%15[a-z]", &n, kind), 2);
 	bool report = strcmp(kind, "report") == 0;
 	if (report ? service->n_reports > 0 : false)
@@ -319,7 +338,8 @@ static inline void service_driver(struct service *s)
 	struct driver *d = &s->driver;
 	struct prekeys_for what = {.station = "tarn", .place = RECIPE_MAIN, .count = SERVICE_SLOTS};
 	memcpy(what.campaign, scene_campaign, 16);
-	*d = (struct driver){.log = {.fd = -1}, .campaign = &s->campaign, .group = s->scene.g};
+	*d =
+	    (struct driver){.log = {.fd = -1}, .system = clock_system(), .campaign = &s->campaign, .group = s->scene.g};
 	d->link.rehearsal = true;
 	party_key_new(&d->home.key);
 	party_key_public(&d->home.key, &d->home.pub);
@@ -350,7 +370,20 @@ static inline void service_begin(double gain)
 	const int64_t steps[] = {-60, -4, 0, 9, 16};
 	for (size_t i = 0; i < sizeof steps / sizeof steps[0]; i++)
 		s->step[s->n_steps++] = SERVICE_START + steps[i] * NS_PER_S;
+	s->silent_from_ns = STATES_NEVER;
 	s->held_from_ns = s->stopped_from_ns = STATES_NEVER;
+}
+
+/* The same with the system's clock, from the freeze on. */
+static inline void service_begin_system(double contact_s)
+{
+	service_begin(1);
+	service->step[0] = SERVICE_START - SERVICE_LEAD;
+	service->n_steps = 1;
+	service->driver.link.rehearsal = false;
+	service->driver.opt.contact_s = contact_s;
+	service->driver.system = (struct clock_source){.now_gps_ns = service_tick};
+	service->driver.contact_ns = service->step[0];
 }
 
 static inline void service_end(void)
