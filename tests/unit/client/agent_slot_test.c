@@ -339,7 +339,7 @@ static void short_loss_of_contact(void **state)
 static void long_loss_of_contact(void **state)
 {
 	(void)state;
-	service_begin_system(1);
+	service_begin_system(1.7);
 	service->silent_from_ns = SERVICE_START + 6 * NS_PER_S;
 	service->silent_to_ns = SERVICE_START + 17 * NS_PER_S;
 	run(0);
@@ -348,6 +348,7 @@ static void long_loss_of_contact(void **state)
 	assert_string_equal(service->report.reason, "no contact with the service");
 	double ended = (double)(service->report.played_to_ns - SERVICE_START) / 1e9;
 	assert_true(ended > 7 && ended < 9);
+	assert_true(peak(x, sample_of(7), sample_of(ended)) > 0);
 	assert_true(peak(x, sample_of(ended), SERVICE_N) == 0);
 	qb_free(x);
 	service_end();
