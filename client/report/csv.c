@@ -13,7 +13,8 @@ static void field(struct buf *out, const json_t *v, bool last)
 	if (json_is_integer(v))
 		buf_printf(out, "%" JSON_INTEGER_FORMAT, json_integer_value(v));
 	else if (json_is_real(v))
-		buf_printf(out, "%.15g", json_real_value(v));
+		/* GPS times to the microsecond, everything else to 15 digits. */
+		buf_printf(out, fabs(json_real_value(v)) >= 1e8 ? "%.6f" : "%.15g", json_real_value(v));
 	else if (json_is_boolean(v))
 		buf_text(out, json_is_true(v) ? "true" : "false");
 	if (s != NULL && *s != '\0') {

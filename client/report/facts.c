@@ -110,7 +110,7 @@ char *facts_significant(char out[static FACT], double x, int digits)
 {
 	if (!isfinite(x))
 		return unknown(out);
-	if (x >= 1e6 || (fabs(x) < 1e-3 && (x < 0 || x > 0))) {
+	if (x >= 1e6 || (fabs(x) < 1e-5 && (x < 0 || x > 0))) {
 		(void)snprintf(out, FACT, "%.*e", digits - 1, x);
 		return out;
 	}
@@ -135,6 +135,14 @@ char *facts_count(char out[static FACT], double n)
 	if (!isfinite(n))
 		return unknown(out);
 	(void)snprintf(out, FACT, "%.0f", n);
+	return out;
+}
+
+char *facts_plain(char out[static FACT], double x)
+{
+	if (!isfinite(x))
+		return unknown(out);
+	(void)snprintf(out, FACT, "%.6g", x);
 	return out;
 }
 

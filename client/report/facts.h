@@ -31,6 +31,7 @@ char *facts_range(char out[static FACT], const json_t *pair);         /* "28.7 t
 char *facts_significant(char out[static FACT], double x, int digits); /* "12.7", "0.00013" */
 char *facts_p_value(char out[static FACT], double p);                 /* "0.042", "< 0.0001" */
 char *facts_count(char out[static FACT], double n);                   /* "27" */
+char *facts_plain(char out[static FACT], double x);                   /* "0.5", "95": as it was set */
 char *facts_utc(char out[static FACT], double gps);                   /* "2027-01-22 21:02:09 UTC" */
 char *facts_duration(char out[static FACT], double seconds);          /* "8.7 days", "3.2 hours" */
 

@@ -7,6 +7,10 @@
 void figure_escape(struct buf *out, const char *text)
 {
 	for (; *text != '\0'; text++) {
+		if (text[0] == ' ' && text[1] == '%') {
+			buf_text(out, "&#160;"); /* a number keeps its unit when the line breaks */
+			continue;
+		}
 		switch (*text) {
 		case '&':
 			buf_text(out, "&amp;");
@@ -117,7 +121,7 @@ static double first_tick(const struct figure_axis *a, double step)
 static double round_step(double span, int n)
 {
 	const double raw = span / n, power = pow(10, floor(log10(raw))), lead = raw / power;
-	return power * (lead <= 1 ? 1 : lead <= 2 ? 2 : lead <= 5 ? 5 : 10);
+	return power * (lead <= 1 ? 1 : lead <= 2 ? 2 : lead <= 2.5 ? 2.5 : lead <= 5 ? 5 : 10);
 }
 
 static void tick_text(char out[static 40], double value, const char *suffix)

@@ -11,49 +11,8 @@
 #include "client/report/facts.h"
 #include "client/report/figure.h"
 #include "client/report/figures.h"
+#include "client/report/page.h"
 #include "client/report/style.h"
-
-#define MANY 60 /* rows of a list in the page */
-
-static void cell(struct buf *out, const char *cls, const char *text)
-{
-	buf_printf(out, *cls != '\0' ? "<td class=\"%s\">" : "<td>", cls);
-	figure_escape(out, text);
-	buf_text(out, "</td>");
-}
-
-/* Column heads are separated by '|'; a leading '<' aligns left. */
-static void table_begin(struct buf *out, const char *caption, const char *heads)
-{
-	buf_text(out, "<div class=\"scroll\"><table><caption>");
-	figure_escape(out, caption);
-	buf_text(out, "</caption><thead><tr>");
-	while (*heads != '\0') {
-		const bool left = *heads == '<';
-		const size_t n = strcspn(heads + left, "|");
-		buf_printf(out, "<th scope=\"col\"%s>%.*s</th>", left ? " class=\"t\"" : "", (int)n, heads + left);
-		heads += left + n;
-		heads += *heads == '|';
-	}
-	buf_text(out, "</tr></thead><tbody>\n");
-}
-
-static void table_end(struct buf *out)
-{
-	buf_text(out, "</tbody></table></div>\n");
-}
-
-static void section(struct buf *out, const char *id, const char *title, const char *lead)
-{
-	buf_printf(out, "<section id=\"%s\"><h2>%s</h2><p class=\"lead\">%s</p>\n", id, title, lead);
-}
-
-static void cut_note(struct buf *out, size_t n, const char *file)
-{
-	if (n > MANY)
-		buf_printf(out, "<p class=\"note\">The first %d of %zu are shown; all are in <code>%s</code>.</p>\n",
-		           MANY, n, file);
-}
 
 static void key_number(struct buf *out, const char *cls, const char *number, const char *words)
 {
@@ -63,7 +22,7 @@ static void key_number(struct buf *out, const char *cls, const char *number, con
 static void summary(struct buf *out, const json_t *doc)
 {
 	char a[FACT], text[2 * FACT];
-	section(out, "summary", "In one page", "What was found, what was missed, and what may be real.");
+	page_section(out, "summary", "In one page", "What was found, what was missed, and what may be real.");
 	buf_text(out, "<div class=\"keys\">");
 	(void)snprintf(text, sizeof text, "%.0f of %.0f", facts_number(doc, "comparison.union.found"),
 	               facts_number(doc, "comparison.union.live"));
@@ -116,19 +75,19 @@ static void drill_table(struct buf *out, const json_t *doc)
 	struct buf names = {0};
 	char a[FACT];
 	buf_text(out, "<details><summary>Table behind this figure</summary>");
-	table_begin(out, "Played drills", "<slot|<time (UTC)|<state|network SNR|<claimed by");
-	for (size_t i = 0; i < json_array_size(list) && i < MANY; i++) {
+	page_table_begin(out, "Played drills", "<slot|<time (UTC)|<state|network SNR|<claimed by");
+	for (size_t i = 0; i < json_array_size(list) && i < PAGE_ROWS; i++) {
 		const json_t *d = json_array_get(list, i);
 		buf_text(out, "<tr>");
-		cell(out, "t", facts_text(d, "slot_id"));
-		cell(out, "t", facts_utc(a, facts_number(d, "arrival_gps")));
-		cell(out, "t", facts_text(d, "state"));
-		cell(out, "", facts_significant(a, facts_number(d, "network_snr"), 3));
-		cell(out, "t", claimants(&names, json_object_get(d, "claimed_by")));
+		page_cell(out, "t", facts_text(d, "slot_id"));
+		page_cell(out, "t", page_utc(a, facts_number(d, "arrival_gps")));
+		page_cell(out, "t", facts_text(d, "state"));
+		page_cell(out, "", facts_significant(a, facts_number(d, "network_snr"), 3));
+		page_cell(out, "t", claimants(&names, json_object_get(d, "claimed_by")));
 		buf_text(out, "</tr>\n");
 	}
-	table_end(out);
-	cut_note(out, json_array_size(list), "drills.csv");
+	page_table_end(out);
+	page_cut_note(out, json_array_size(list), "drills.csv");
 	buf_text(out, "</details>");
 	buf_free(&names);
 }
@@ -138,17 +97,16 @@ static void campaign(struct buf *out, const json_t *doc)
 	const char *word;
 	char a[FACT], b[FACT];
 	json_t *n;
-	section(out, "campaign", "1. The campaign",
-	        "Slot states come from the operations log as it stood before any claim was opened.");
-	table_begin(out, "Slots by state", "<state|slots");
+	page_section(out, "campaign", "1. The campaign",
+	             "Slot states come from the operations log as it stood before any claim was opened.");
+	buf_text(out, "<ul class=\"states\">");
 	json_object_foreach((json_t *)(uintptr_t)json_object_get(doc, "slot_states"), word, n)
 	{
-		buf_text(out, "<tr>");
-		cell(out, "t", word);
-		cell(out, "", facts_count(a, json_number_value(n)));
-		buf_text(out, "</tr>\n");
+		buf_printf(out, "<li><b>%s</b> ", facts_count(a, json_number_value(n)));
+		figure_escape(out, strcmp(word, "failed_delivery") == 0 ? "failed in delivery" : word);
+		buf_text(out, "</li>");
 	}
-	table_end(out);
+	buf_text(out, "</ul>\n");
 	buf_printf(out, "<p class=\"note\">Observing time %s; away from drills and vetoes %s.</p>\n",
 	           facts_duration(a, facts_number(doc, "observing_livetime_s")),
 	           facts_duration(b, facts_number(doc, "background_livetime_s")));
@@ -162,275 +120,68 @@ static void campaign(struct buf *out, const json_t *doc)
 	buf_text(out, "</section>\n");
 }
 
-static void unexplained(struct buf *out, const json_t *doc)
+/* Rows of groups seen by at least `least` and at most `most` pipelines; returns how many there are. */
+static size_t group_rows(struct buf *out, const json_t *doc, size_t least, size_t most)
 {
-	const json_t *groups = facts_at(doc, "unexplained_groups.groups");
-	const size_t all = json_array_size(facts_at(doc, "comparison.pipelines"));
 	struct buf names = {0};
 	char a[FACT];
-	section(out, "unexplained", "2. Claims that match no drill",
-	        "None of these is called false. Times claimed by every pipeline come first: they go to the people who "
-	        "follow events "
-	        "up before anything else in this report is discussed.");
-	table_begin(out, "Groups of unexplained claims, most pipelines first",
-	            "<time (UTC)|GPS, s|pipelines|<who|<claims");
-	for (size_t i = 0; i < json_array_size(groups) && i < MANY; i++) {
-		const json_t *g = json_array_get(groups, i);
+	size_t i, rows = 0;
+	json_t *g;
+	json_array_foreach((json_t *)(uintptr_t)facts_at(doc, "unexplained_groups.groups"), i, g)
+	{
 		const size_t n = json_array_size(json_object_get(g, "pipelines"));
-		buf_text(out, n == all && all > 1 ? "<tr class=\"first\">" : "<tr>");
-		cell(out, "t", facts_utc(a, facts_number(g, "time_gps")));
+		if (n < least || n > most || ++rows > PAGE_ROWS)
+			continue;
+		buf_text(out, "<tr>");
+		page_cell(out, "t", page_utc(a, facts_number(g, "time_gps")));
 		(void)snprintf(a, sizeof a, "%.3f", facts_number(g, "time_gps"));
-		cell(out, "", a);
-		cell(out, "", facts_count(a, (double)n));
-		cell(out, "t", claimants(&names, json_object_get(g, "pipelines")));
-		cell(out, "t", claimants(&names, json_object_get(g, "claims")));
+		page_cell(out, "", a);
+		page_cell(out, "t", claimants(&names, json_object_get(g, "pipelines")));
+		page_cell(out, "w", claimants(&names, json_object_get(g, "claims")));
 		buf_text(out, "</tr>\n");
 	}
-	table_end(out);
-	cut_note(out, json_array_size(groups), "unexplained.csv");
-	buf_text(out, "</section>\n");
 	buf_free(&names);
+	return rows;
 }
 
-static void efficiency_row(struct buf *out, const char *name, const json_t *eff, const json_t *itt, bool first)
+static void unexplained(struct buf *out, const json_t *doc)
 {
-	char a[FACT];
-	buf_text(out, first ? "<tr class=\"first\">" : "<tr>");
-	cell(out, "t", name);
-	cell(out, "", facts_count(a, facts_number(eff, "found")));
-	cell(out, "", facts_count(a, facts_number(eff, "live")));
-	cell(out, "", facts_percent(a, facts_number(eff, "estimate")));
-	cell(out, "", facts_range(a, json_object_get(eff, "clopper_pearson")));
-	cell(out, "", facts_range(a, json_object_get(eff, "wilson")));
-	cell(out, "", facts_percent(a, facts_element(eff, "corrected", 0)));
-	cell(out, "", facts_percent(a, facts_number(itt, "estimate")));
-	buf_text(out, "</tr>\n");
-}
-
-static void thresholds(struct buf *out, const json_t *doc)
-{
-	const char *name;
-	char a[FACT];
-	size_t i, k;
-	json_t *row;
-	if (json_array_size(facts_at(doc, "settings_used.far_thresholds_per_year")) == 0)
-		return;
-	table_begin(out, "Found with a stated false-alarm rate below the threshold",
-	            "<pipeline|below, per year|found|fraction|Clopper-Pearson|Wilson");
-	for (i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
-		json_array_foreach(json_object_get(facts_pipeline_block(doc, name), "efficiency_by_far"), k, row)
-		{
-			buf_text(out, "<tr>");
-			cell(out, "t", k == 0 ? name : "");
-			cell(out, "", facts_significant(a, facts_number(row, "false_alarm_rate_below_per_year"), 3));
-			cell(out, "", facts_count(a, facts_number(row, "found")));
-			cell(out, "", facts_percent(a, facts_number(row, "estimate")));
-			cell(out, "", facts_range(a, json_object_get(row, "clopper_pearson")));
-			cell(out, "", facts_range(a, json_object_get(row, "wilson")));
-			buf_text(out, "</tr>\n");
-		}
+	static const char heads[] = "<time (UTC)|GPS, s|<claimed by|<claims";
+	const size_t pipelines = json_array_size(facts_at(doc, "comparison.pipelines"));
+	struct buf rows = {0};
+	page_section(
+	    out, "unexplained", "2. Claims that match no drill",
+	    "None of these is called false. Times claimed by every pipeline come first: they go to the people who "
+	    "follow events "
+	    "up before anything else in this report is discussed.");
+	if (pipelines > 1) {
+		const size_t all = group_rows(&rows, doc, pipelines, pipelines);
+		page_table_begin(out, "Claimed by every pipeline", heads);
+		buf_text(out, all > 0 ? (const char *)rows.data : "<tr><td class=\"t\" colspan=\"4\">none</td></tr>");
+		page_table_end(out);
+		page_cut_note(out, all, "unexplained.csv");
+		buf_clear(&rows);
 	}
-	table_end(out);
-}
-
-static void efficiency(struct buf *out, const json_t *doc)
-{
-	const char *name;
-	section(out, "efficiency", "3. Efficiency",
-	        "The share of verified live drills that were found. The wide bar holds the true share at least as "
-	        "often as the "
-	        "confidence says; the narrow one does so on average.");
-	buf_text(out, "<figure>");
-	figures_intervals(out, doc);
-	buf_text(out,
-	         "<figcaption>Dot: found of live. Wide bar: Clopper-Pearson. Narrow bar: Wilson. Diamond: found of all "
-	         "played drills, those set aside included.</figcaption></figure>\n");
-	table_begin(out, "Efficiency; corrected means without accidental matches",
-	            "<|found|live|fraction|Clopper-Pearson|Wilson|corrected|of all played");
-	efficiency_row(out, "at least one", facts_at(doc, "comparison.union"),
-	               facts_at(doc, "comparison.union_intention_to_treat"), true);
-	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
-		const json_t *p = facts_pipeline_block(doc, name);
-		efficiency_row(out, name, json_object_get(p, "efficiency"), json_object_get(p, "intention_to_treat"),
-		               false);
+	const size_t some = group_rows(&rows, doc, 2, pipelines - 1);
+	if (some > 0) {
+		page_table_begin(out, "Claimed by more than one pipeline, but not by all", heads);
+		buf_text(out, (const char *)rows.data);
+		page_table_end(out);
+		page_cut_note(out, some, "unexplained.csv");
 	}
-	table_end(out);
-	thresholds(out, doc);
+	buf_clear(&rows);
+	const size_t alone = group_rows(&rows, doc, 1, 1);
+	if (alone > 0) {
+		buf_printf(out, "<details%s><summary>Claimed by one pipeline alone: %zu</summary>",
+		           pipelines == 1 ? " open" : "", alone);
+		page_table_begin(out, "Claimed by one pipeline, in time order", heads);
+		buf_text(out, (const char *)rows.data);
+		page_table_end(out);
+		page_cut_note(out, alone, "unexplained.csv");
+		buf_text(out, "</details>\n");
+	}
 	buf_text(out, "</section>\n");
-}
-
-static void curve_rows(struct buf *out, const char *name, const json_t *curve)
-{
-	char a[FACT], b[FACT], text[2 * FACT + 8];
-	size_t i;
-	json_t *bin;
-	json_array_foreach(json_object_get(curve, "bins"), i, bin)
-	{
-		buf_text(out, "<tr>");
-		cell(out, "t", i == 0 ? name : "");
-		(void)snprintf(text, sizeof text, "%s to %s", facts_significant(a, facts_number(bin, "lower_edge"), 3),
-		               facts_significant(b, facts_number(bin, "upper_edge"), 3));
-		cell(out, "", text);
-		cell(out, "", facts_count(a, facts_number(bin, "found")));
-		cell(out, "", facts_count(a, facts_number(bin, "drills")));
-		cell(out, "", facts_percent(a, facts_number(bin, "efficiency")));
-		cell(out, "", facts_range(a, json_object_get(bin, "wilson")));
-		cell(out, "", facts_range(a, json_object_get(bin, "clopper_pearson")));
-		buf_text(out, "</tr>\n");
-	}
-}
-
-static void curves(struct buf *out, const json_t *doc)
-{
-	const char *name;
-	const json_t *u = facts_at(doc, "comparison.union_curves.network_snr");
-	if (json_array_size(json_object_get(u, "bins")) == 0)
-		return;
-	section(out, "curves", "4. Efficiency along loudness",
-	        "Bins hold equally many drills. The sand-coloured bar, where the plan asks for one, bounds the "
-	        "efficiency at that "
-	        "point and assumes only that louder drills are found no less often (Kim, Fay and Proschan 2018).");
-	buf_text(out, "<figure><div class=\"pair\">");
-	figures_curve(out, u, "at least one pipeline", 0);
-	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++)
-		figures_curve(out, facts_at(facts_pipeline_block(doc, name), "curves.network_snr"), name,
-		              (unsigned)i + 1);
-	buf_text(out, "</div><details><summary>Table behind these figures</summary>");
-	table_begin(out, "Efficiency by network signal-to-noise ratio",
-	            "<|network SNR|found|drills|fraction|Wilson|Clopper-Pearson");
-	curve_rows(out, "at least one", u);
-	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++)
-		curve_rows(out, name, facts_at(facts_pipeline_block(doc, name), "curves.network_snr"));
-	table_end(out);
-	buf_text(out, "</details></figure></section>\n");
-}
-
-static void found_by(struct buf *out, const json_t *doc)
-{
-	const char *bits, *name;
-	char a[FACT];
-	double most = 1;
-	json_t *n;
-	const json_t *table = facts_at(doc, "comparison.found_by");
-	section(out, "found-by", "5. Who found what", "Live drills by the exact set of pipelines that found them.");
-	json_object_foreach((json_t *)(uintptr_t)table, bits, n) most = fmax(most, json_number_value(n));
-	table_begin(out, "Sets of pipelines", "<found by|drills|<");
-	json_object_foreach((json_t *)(uintptr_t)table, bits, n)
-	{
-		struct buf who = {0};
-		for (size_t i = 0; bits[i] != '\0' && (name = facts_pipeline(doc, i)) != NULL; i++)
-			if (bits[i] == '1')
-				buf_printf(&who, "%s%s", who.len > 0 ? " and " : "", name);
-		buf_text(out, "<tr>");
-		cell(out, "t", who.len > 0 ? (const char *)who.data : "nobody");
-		cell(out, "", facts_count(a, json_number_value(n)));
-		buf_printf(out,
-		           "<td class=\"t\" style=\"width:55%%\"><span class=\"bar%s\" "
-		           "style=\"width:%.1f%%\"></span></td></tr>\n",
-		           who.len > 0 ? "" : " none", 100 * json_number_value(n) / most);
-		buf_free(&who);
-	}
-	table_end(out);
-	buf_text(out, "</section>\n");
-}
-
-static void missed(struct buf *out, const json_t *doc)
-{
-	json_t *list = facts_missed(doc);
-	char a[FACT];
-	section(out, "missed", "6. Live drills that nobody found",
-	        "The loud ones deserve a cause: data quality, a pipeline that was down, or a kind of signal that no "
-	        "search covers.");
-	table_begin(out, "Missed by every pipeline, loudest first",
-	            "<slot|<time (UTC)|network SNR|chirp mass, M&#9737;|distance, Mpc");
-	for (size_t i = 0; i < json_array_size(list) && i < MANY; i++) {
-		const json_t *m = json_array_get(list, i);
-		buf_text(out, "<tr>");
-		cell(out, "t", facts_text(m, "slot_id"));
-		cell(out, "t", facts_utc(a, facts_number(m, "arrival_gps")));
-		cell(out, "", facts_significant(a, facts_number(m, "network_snr"), 3));
-		cell(out, "", facts_significant(a, facts_number(m, "chirp_mass_msun"), 3));
-		cell(out, "", facts_significant(a, facts_number(m, "distance_mpc"), 3));
-		buf_text(out, "</tr>\n");
-	}
-	if (json_array_size(list) == 0)
-		buf_text(out, "<tr><td class=\"t\" colspan=\"5\">none</td></tr>");
-	table_end(out);
-	cut_note(out, json_array_size(list), "missed.csv");
-	buf_text(out, "</section>\n");
-	json_decref(list);
-}
-
-static void residual_rows(struct buf *out, const json_t *doc, const char *parameter, const char *label, double factor)
-{
-	const char *name;
-	char a[FACT];
-	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
-		const json_t *r = json_object_get(json_object_get(json_object_get(doc, "residuals"), name), parameter);
-		buf_text(out, "<tr>");
-		cell(out, "t", i == 0 ? label : "");
-		cell(out, "t", name);
-		cell(out, "", facts_count(a, facts_number(r, "n")));
-		cell(out, "", facts_significant(a, facts_number(r, "mean") * factor, 3));
-		cell(out, "", facts_significant(a, facts_number(r, "sd") * factor, 3));
-		cell(out, "", facts_significant(a, facts_number(r, "median") * factor, 3));
-		cell(out, "", facts_count(a, facts_number(r, "stated_above_truth")));
-		cell(out, "", facts_count(a, facts_number(r, "stated_below_truth")));
-		cell(out, "", facts_p_value(a, facts_number(r, "sign_p")));
-		buf_text(out, "</tr>\n");
-	}
-}
-
-static void parameters(struct buf *out, const json_t *doc)
-{
-	section(out, "parameters", "7. Stated against true values",
-	        "Of found drills only. The sign test asks whether stated values lie above the truth as often as below; "
-	        "it assumes "
-	        "nothing about their distribution. Honest uncertainties give a scatter of about one stated sigma.");
-	buf_text(out, "<figure><div class=\"pair\">");
-	figures_residuals(out, doc, "arrival_gps");
-	figures_residuals(out, doc, "chirp_mass_msun");
-	buf_text(out,
-	         "</div><figcaption>One dot per found drill; the tall mark is the median.</figcaption></figure>\n");
-	table_begin(out,
-	            "Residuals; p-values belong to one pipeline's parameters and are not corrected for their number",
-	            "<|<pipeline|n|mean|scatter|median|above|below|sign test p");
-	residual_rows(out, doc, "arrival_gps", "arrival, ms", 1e3);
-	residual_rows(out, doc, "chirp_mass_msun", "chirp mass, stated sigmas", 1);
-	table_end(out);
-	buf_text(out, "</section>\n");
-}
-
-static void nulls(struct buf *out, const json_t *doc)
-{
-	const char *name;
-	char a[FACT];
-	section(out, "nulls", "8. Null slots and accidents",
-	        "Null slots take the same path as live ones at gain zero. Claims near them beyond chance mean a "
-	        "disturbance, or a leak.");
-	table_begin(out,
-	            "Unexplained claims near null slots (p-values of the blindness family, not corrected for their "
-	            "number), and the "
-	            "chance of an accidental match",
-	            "<pipeline|null slots|claims near one|expected|p of so many|background claims|accidental "
-	            "match|crowded drills|"
-	            "fraction without them");
-	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
-		const json_t *p = facts_pipeline_block(doc, name), *t = json_object_get(p, "null_slot_test");
-		buf_text(out, "<tr>");
-		cell(out, "t", name);
-		cell(out, "", facts_count(a, facts_number(t, "null_slots")));
-		cell(out, "", facts_count(a, facts_number(t, "near_null_claims")));
-		cell(out, "", facts_significant(a, facts_number(t, "expected"), 2));
-		cell(out, "", facts_p_value(a, facts_number(t, "p_too_many")));
-		cell(out, "", facts_count(a, facts_number(p, "accidental.background_claims")));
-		cell(out, "", facts_percent(a, facts_number(p, "accidental.probability")));
-		cell(out, "", facts_count(a, facts_number(p, "efficiency_uncrowded.crowded_live")));
-		cell(out, "", facts_percent(a, facts_number(p, "efficiency_uncrowded.estimate")));
-		buf_text(out, "</tr>\n");
-	}
-	table_end(out);
-	buf_text(out, "</section>\n");
+	buf_free(&rows);
 }
 
 static void statuses(struct buf *out, const json_t *doc)
@@ -440,29 +191,29 @@ static void statuses(struct buf *out, const json_t *doc)
 	    "in_vetoed_time", "superseded",       "late",      "malformed"};
 	const char *name;
 	char a[FACT];
-	table_begin(out, "What became of every claim",
-	            "<pipeline|claims|found|matched, set aside|duplicate|unexplained|outside observing|in vetoed "
-	            "time|superseded|"
-	            "late|malformed");
+	page_table_begin(out, "What became of every claim",
+	                 "<pipeline|claims|found|matched, set aside|duplicate|unexplained|outside observing|in vetoed "
+	                 "time|superseded|"
+	                 "late|malformed");
 	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
 		const json_t *p = facts_pipeline_block(doc, name);
 		buf_text(out, "<tr>");
-		cell(out, "t", name);
-		cell(out, "", facts_count(a, facts_number(p, "claims_in_file")));
+		page_cell(out, "t", name);
+		page_cell(out, "", facts_count(a, facts_number(p, "claims_in_file")));
 		for (size_t k = 0; k < sizeof words / sizeof words[0]; k++) {
 			const double n = facts_number(json_object_get(p, "status_counts"), words[k]);
-			cell(out, "", facts_count(a, isfinite(n) ? n : 0));
+			page_cell(out, "", facts_count(a, isfinite(n) ? n : 0));
 		}
 		buf_text(out, "</tr>\n");
 	}
-	table_end(out);
+	page_table_end(out);
 }
 
 static void notes(struct buf *out, const json_t *doc)
 {
 	json_t *list = facts_limits(doc), *line;
 	size_t i;
-	section(out, "notes", "9. Notes", "How to read this report, and what it does not answer.");
+	page_section(out, "notes", "9. Notes", "How to read this report, and what it does not answer.");
 	statuses(out, doc);
 	buf_printf(
 	    out,
@@ -518,12 +269,12 @@ enum qb_status report_html(const json_t *doc, struct buf *out, struct qb_error *
 	summary(out, doc);
 	campaign(out, doc);
 	unexplained(out, doc);
-	efficiency(out, doc);
-	curves(out, doc);
-	found_by(out, doc);
-	missed(out, doc);
-	parameters(out, doc);
-	nulls(out, doc);
+	numbers_efficiency(out, doc);
+	numbers_curves(out, doc);
+	numbers_found_by(out, doc);
+	numbers_missed(out, doc);
+	numbers_parameters(out, doc);
+	numbers_nulls(out, doc);
 	notes(out, doc);
 	buf_text(
 	    out,

@@ -34,14 +34,15 @@ const char *const report_style[] = {
     ".key.event b{color:var(--event)}\n",
     "dl{display:grid;grid-template-columns:160px 1fr;margin:20px 0 0;border-top:1px solid var(--rule)}\n",
     "dt,dd{margin:0;padding:12px 0;border-bottom:1px solid var(--rule)}\n",
-    "dt{font-weight:600;color:var(--deep)}dd{max-width:80ch}\n",
+    "dt{font-weight:600;color:var(--deep)}\n",
     "table{border-collapse:collapse;width:100%;font-size:14.5px;font-variant-numeric:tabular-nums;"
     "margin:10px 0 18px}\n",
     "caption{text-align:left;color:var(--soft);font-size:14px;padding:0 0 6px}\n",
     "th{font-weight:600;text-align:right;border-bottom:2px solid var(--deep);padding:7px 10px;"
     "vertical-align:bottom}\n",
     "td{text-align:right;border-bottom:1px solid var(--rule);padding:7px 10px}\n",
-    "th.t,td.t{text-align:left}tbody tr:hover{background:#f3efe2}tr.first td{font-weight:600}\n",
+    "th.t,td.t,td.w{text-align:left}td{white-space:nowrap}td.w{white-space:normal;min-width:190px}tbody "
+    "tr:hover{background:#f3efe2}tr.first td{font-weight:600}\n",
     ".scroll{overflow-x:auto}.note{font-size:14px;color:var(--soft);max-width:80ch}\n",
     "figure{margin:14px 0 20px;background:var(--card);border:1px solid var(--rule);padding:16px 18px 12px}\n",
     "figcaption{font-size:14px;color:var(--soft);margin-top:6px;max-width:90ch}\n",
@@ -74,5 +75,7 @@ const char *const report_style[] = {
     "@media print{nav{display:none}body{background:#fff;font-size:12px}header{background:#fff;color:#000;"
     "padding:0 0 12px}header p,header .kind{color:#333}section{break-inside:avoid-page;padding-top:18px}"
     "figure{break-inside:avoid}}\n",
+    ".states{list-style:none;display:flex;flex-wrap:wrap;gap:8px 30px;margin:0 0 12px;padding:12px 18px;"
+    "background:var(--card);border:1px solid var(--rule)}.states b{font-size:19px;font-variant-numeric:tabular-nums}\n",
     NULL,
 };

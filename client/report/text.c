@@ -16,7 +16,9 @@ static void wrap(struct buf *out, const char *lead, const char *text)
 	size_t column = indent;
 	buf_text(out, lead);
 	for (const char *p = text; *p != '\0';) {
-		const size_t n = strcspn(p, " ");
+		size_t n = strcspn(p, " ");
+		if (p[n] == ' ' && p[n + 1] == '%') /* a number keeps its unit */
+			n += 1 + strcspn(p + n + 1, " ");
 		if (column > indent && column + 1 + n > WIDTH) {
 			buf_printf(out, "\n%*s", (int)indent, "");
 			column = indent;
