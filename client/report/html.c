@@ -21,11 +21,11 @@ static void key_number(struct buf *out, const char *cls, const char *number, con
 
 static void summary(struct buf *out, const json_t *doc)
 {
-	char a[FACT], text[2 * FACT];
+	char a[FACT], b[FACT], text[2 * FACT + 8];
 	page_section(out, "summary", "In one page", "What was found, what was missed, and what may be real.");
 	buf_text(out, "<div class=\"keys\">");
-	(void)snprintf(text, sizeof text, "%.0f of %.0f", facts_number(doc, "comparison.union.found"),
-	               facts_number(doc, "comparison.union.live"));
+	(void)snprintf(text, sizeof text, "%s of %s", facts_count(a, facts_number(doc, "comparison.union.found")),
+	               facts_count(b, facts_number(doc, "comparison.union.live")));
 	key_number(out, "found", text, "live drills found by at least one pipeline");
 	key_number(out, "missed", facts_count(a, (double)json_array_size(facts_at(doc, "missed.by_all"))),
 	           "live drills found by nobody");
@@ -215,13 +215,16 @@ static void notes(struct buf *out, const json_t *doc)
 	size_t i;
 	page_section(out, "notes", "9. Notes", "How to read this report, and what it does not answer.");
 	statuses(out, doc);
-	buf_printf(
-	    out,
-	    "<p class=\"note\">Matching window: the smaller of %.4g s and %.4g s plus %.4g times the stated timing "
-	    "uncertainty. Claims count until GPS %.3f. Confidence %.4g %%.</p><ul class=\"note\">",
-	    facts_number(doc, "settings_used.match_max_s"), facts_number(doc, "settings_used.match_base_s"),
-	    facts_number(doc, "settings_used.match_sigma_factor"), facts_number(doc, "settings_used.closing_gps"),
-	    100 * facts_number(doc, "settings_used.confidence"));
+	char most[FACT], base[FACT], factor[FACT], confidence[FACT], closing[FACT];
+	buf_printf(out,
+	           "<p class=\"note\">Matching window: the smaller of %s s and %s s plus %s times the stated timing "
+	           "uncertainty. "
+	           "Claims count until %s. Confidence %s&#160;%%.</p><ul class=\"note\">",
+	           facts_plain(most, facts_number(doc, "settings_used.match_max_s")),
+	           facts_plain(base, facts_number(doc, "settings_used.match_base_s")),
+	           facts_plain(factor, facts_number(doc, "settings_used.match_sigma_factor")),
+	           facts_utc(closing, facts_number(doc, "settings_used.closing_gps")),
+	           facts_plain(confidence, 100 * facts_number(doc, "settings_used.confidence")));
 	json_array_foreach(list, i, line)
 	{
 		buf_text(out, "<li>");
@@ -248,8 +251,10 @@ static void page_begin(struct buf *out, const json_t *doc)
 	buf_text(out, "</style></head><body>\n");
 	buf_text(out, "<header><div class=\"in\"><p class=\"kind\">Blind drill audit</p><h1>");
 	figure_escape(out, set);
-	buf_printf(out, "</h1><p>%zu pipelines, %.0f live drills, %zu claims</p></div></header>\n",
-	           json_array_size(facts_at(doc, "comparison.pipelines")), facts_number(doc, "comparison.union.live"),
+	char live[FACT];
+	buf_printf(out, "</h1><p>%zu pipelines, %s live drills, %zu claims</p></div></header>\n",
+	           json_array_size(facts_at(doc, "comparison.pipelines")),
+	           facts_count(live, facts_number(doc, "comparison.union.live")),
 	           json_array_size(facts_at(doc, "claims")));
 	buf_text(out,
 	         "<nav aria-label=\"Sections\"><div class=\"in\"><ol><li><a href=\"#summary\">Summary</a></li>"

@@ -36,8 +36,7 @@ static void thresholds(struct buf *out, const json_t *doc)
 		{
 			buf_text(out, "<tr>");
 			page_cell(out, "t", k == 0 ? name : "");
-			(void)snprintf(a, sizeof a, "%.6g", facts_number(row, "false_alarm_rate_below_per_year"));
-			page_cell(out, "", a);
+			page_cell(out, "", facts_plain(a, facts_number(row, "false_alarm_rate_below_per_year")));
 			page_cell(out, "", facts_count(a, facts_number(row, "found")));
 			page_cell(out, "", facts_percent(a, facts_number(row, "estimate")));
 			page_cell(out, "", facts_range(a, json_object_get(row, "clopper_pearson")));

@@ -158,7 +158,7 @@ static void tables_hold_every_row(void **state)
 	} want[] = {
 	    {"efficiency.csv", 4, "\r\n\"amber\",9,27,0.333333333333333,0.165188179687316,"},
 	    {"unexplained.csv", 36, "\"birch\",\"birch-000021\","},
-	    {"missed.csv", 14, "\"slot-000003\",1800039224.26870"},
+	    {"missed.csv", 14, "\"slot-000003\",1800039224.268695,"},
 	    {"drills.csv", 31, ",\"amber birch cedar\"\r\n"},
 	    {"residuals.csv", 9 + 13 + 10 + 9 + 12 + 10, "\"amber-000002\",\"slot-000008\",\"arrival_gps\","},
 	    {"claims.csv", 95, "\"birch\",\"birch-000021\",\"unexplained\",,\"near_null_slot\"\r\n"},
