@@ -1,4 +1,6 @@
 /* The noun `audit`: computes the audit of an open set and writes its document. */
+#include <string.h>
+
 #include "client/cli/audit_source.h"
 #include "client/cli/cli.h"
 #include "client/report/report.h"
@@ -6,11 +8,15 @@
 #include "server/base/alloc.h"
 #include "server/base/buf.h"
 
-#include <string.h>
+#define PRETTY_UP_TO ((size_t)16 << 20) /* larger documents are for programs: written without indents */
 
 static enum qb_status write_document(struct cli_call *c, const char *path, const json_t *doc)
 {
 	char *text = json_pretty(doc);
+	if (strlen(text) > PRETTY_UP_TO) {
+		qb_free(text);
+		text = json_text(doc);
+	}
 	const enum qb_status st = file_write(path, 0644, text, strlen(text), cli_error(c));
 	qb_free(text);
 	return st;
