@@ -35,7 +35,7 @@ struct imr {
 	double eta, chi_eff, chi_pn;
 	double coefficient[IMR_COEFFICIENTS];
 	double final_spin, final_mass, f_ring, f_damp, f_peak; /* dimensionless frequencies M f */
-	double amplitude_pn[7], phase_pn[8], phase_log5;       /* phase_pn[5]: without (1 + ln), see imr.c */
+	double amplitude_pn[7], phase_pn[8];                   /* phase_pn[5] multiplies 1 + ln(pi f) */
 	double delta[5];
 	double c1_int, c2_int, c1_mr, c2_mr; /* joins */
 	double t0, phase_peak;               /* alignment at f_peak */
