@@ -5,6 +5,7 @@
 
 #include "server/base/alloc.h"
 #include "server/wave/constants.h"
+#include "server/wave/noise.h"
 #include "server/wave/response.h"
 #include "server/wave/spectrum.h"
 
@@ -29,7 +30,8 @@ static size_t quadrature(const struct wave_source *s, double low, double high, d
 		for (int i = 0; i < POINTS; i++) {
 			double t = mid + (i < 5 ? -h * x[i] : h * x[i - 5]), weight = h * c[i < 5 ? i : i - 5];
 			f[n] = logs ? exp(t) : t;
-			w[n++] = logs ? weight * f[n - 1] : weight;
+			w[n] = logs ? weight * f[n] : weight;
+			n++;
 		}
 	}
 	return n;
