@@ -91,11 +91,17 @@ static void within_an_excluded_band(void **state)
 	(void)state;
 	struct drive d;
 	struct qb_error e;
+	struct drill_recipe r;
 	service_begin(1);
+	service_recipe(service, 0, 1, 2e-21, &r); /* some counts of RMS */
 	service->plan.n_excluded_bands = 1;
+	service->plan.excluded_bands_hz[0][0] = 505;
+	service->plan.excluded_bands_hz[0][1] = 515;
+	assert_int_equal(make(&r, &d, &e), QB_OK);
+	drive_free(&d);
 	service->plan.excluded_bands_hz[0][0] = 145;
 	service->plan.excluded_bands_hz[0][1] = 155;
-	assert_int_equal(make(&service->recipe[0], &d, &e), QB_REFUSED);
+	assert_int_equal(make(&r, &d, &e), QB_REFUSED);
 	assert_non_null(strstr(e.what, "band"));
 	service_end();
 }
