@@ -1,0 +1,236 @@
+/* The full opening: one partial opening per record, in the order of positions, by both cores. */
+#include "client/cli/opening_join.h"
+
+#include <pthread.h>
+#include <stdio.h>
+#include <string.h>
+#include <unistd.h>
+
+#include "client/cli/keygen.h"
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+
+#define RECORDS_MAX 4000000
+#define THREADS     2
+
+static enum qb_status read_item(const json_t *j, struct sealed_item *out, struct qb_error *e)
+{
+	const char *text;
+	int64_t type;
+	const char *station = json_string_value(json_object_get(j, "station"));
+	enum qb_status st = json_int(j, "position", "record", 0, INT64_MAX, &out->position, e);
+	if (st == QB_OK)
+		st = json_int(j, "slot", "record", -1, INT64_MAX, &out->slot, e);
+	if (st == QB_OK)
+		st = json_int(j, "type", "record", 0, RECORD_TYPES - 1, &type, e);
+	if (st == QB_OK)
+		st = json_str(j, "by", "record", &text, e);
+	if (st != QB_OK)
+		return st;
+	out->type = (int)type;
+	(void)snprintf(out->by, sizeof out->by, "%s", text);
+	(void)snprintf(out->station, sizeof out->station, "%s", station != NULL ? station : "");
+	if ((st = json_str(j, "record", "record", &text, e)) == QB_OK && !base64_decode(text, &out->bytes))
+		st = qb_fail(e, QB_FORMAT, "record", NULL, "is not base64");
+	return st;
+}
+
+enum qb_status items_fetch(struct cli_call *c, const struct campaign *k, struct sealed_items *out)
+{
+	json_int_t from = 0;
+	enum qb_status st = QB_OK;
+	*out = (struct sealed_items){0};
+	while (st == QB_OK && from >= 0) {
+		json_t *doc, *j;
+		size_t i;
+		char *path = text_printf("/v1/campaigns/%s/records?from=%lld&limit=200", k->name, (long long)from);
+		st = link_get(&c->link, path, &doc, &c->error);
+		qb_free(path);
+		json_array_foreach(json_object_get(doc, "records"), i, j)
+		{
+			if (st != QB_OK || out->n >= RECORDS_MAX)
+				break;
+			if ((out->n & (out->n - 1)) == 0)
+				out->item = qb_realloc(out->item, out->n > 0 ? 2 * out->n : 1, sizeof *out->item);
+			out->item[out->n] = (struct sealed_item){0};
+			st = read_item(j, &out->item[out->n++], &c->error);
+		}
+		const json_t *next = json_object_get(doc, "next");
+		from = json_is_integer(next) ? json_integer_value(next) : -1;
+		json_decref(doc);
+	}
+	return st;
+}
+
+void items_free(struct sealed_items *items)
+{
+	for (size_t i = 0; i < items->n; i++)
+		buf_free(&items->item[i].bytes);
+	qb_free(items->item);
+	*items = (struct sealed_items){0};
+}
+
+static enum qb_status out_of_place(const struct sealed_item *x, struct qb_error *e)
+{
+	return qb_fail(e, QB_CRYPTO, "record", "do not open; tell the other custodians",
+	               "the %s at position %lld is not the one that the ledger fixed",
+	               record_type_word((enum record_type)x->type), (long long)x->position);
+}
+
+enum qb_status item_check(const struct campaign *k, const struct view *v, const struct custody_group *g,
+                          struct sealed_item *x, struct qb_error *e)
+{
+	enum qb_status st = record_check(g, x->bytes.data, x->bytes.len, &x->rec, e);
+	if (st != QB_OK)
+		return st;
+	const struct record_header *h = &x->rec.header;
+	if ((int)h->type != x->type || partial_full_purpose(h->type) == 0 || h->type == RECORD_CANARY)
+		return out_of_place(x, e);
+	if (h->type == RECORD_SEED)
+		return memcmp(x->rec.id, k->seed_record_id, 64) == 0 ? QB_OK : out_of_place(x, e);
+	if (h->type == RECORD_SLOT) {
+		if (x->slot < 0 || x->slot >= k->n_slots || h->index != (uint64_t)x->slot ||
+		    memcmp(x->rec.id, k->slot[x->slot].record_id, 64) != 0)
+			return out_of_place(x, e);
+		return QB_OK;
+	}
+	const struct view_party *author = view_party_by_id(v, h->author);
+	if (author == NULL || strcmp(author->name, x->by) != 0 || campaign_role(k, author) == ROLE_NONE)
+		return out_of_place(x, e);
+	return QB_OK;
+}
+
+enum qb_status join_confirm(struct cli_call *c, const char *what)
+{
+	char line[16] = "";
+	cli_note(c, "%s", what);
+	if (cli_option(c, "yes") != NULL)
+		return QB_OK;
+	FILE *tty = fopen("/dev/tty", "r+");
+	if (tty == NULL)
+		return qb_fail(&c->error, QB_USAGE, NULL, "give --yes", "there is no terminal to ask on");
+	fprintf(tty, "Open? Type yes: ");
+	fflush(tty);
+	bool yes = fgets(line, sizeof line, tty) != NULL && strcmp(line, "yes\n") == 0;
+	fclose(tty);
+	return yes ? QB_OK : qb_fail(&c->error, QB_REFUSED, "opening", NULL, "not opened: the answer was not yes");
+}
+
+struct share_work {
+	const struct custody_group *g;
+	const struct sealed_items *items;
+	const struct secret *share;
+	uint32_t index;
+	uint8_t leaf[32];
+	size_t from, to;
+	uint8_t *out;
+	struct qb_error error;
+	enum qb_status status;
+};
+
+static void *share_thread(void *arg)
+{
+	struct share_work *w = arg;
+	for (size_t i = w->from; i < w->to && w->status == QB_OK; i++) {
+		const struct record *rec = &w->items->item[i].rec;
+		struct partial_authority auth = {.purpose = partial_full_purpose(rec->header.type)};
+		struct buf b = {0};
+		memcpy(auth.hash, w->leaf, 32);
+		w->status = partial_make(w->g, rec, w->index, w->share, &auth, &b, &w->error);
+		if (w->status == QB_OK)
+			memcpy(w->out + i * PARTIAL_BYTES, b.data, PARTIAL_BYTES);
+		buf_free(&b);
+	}
+	return NULL;
+}
+
+static enum qb_status make_shares(struct cli_call *c, const struct custody_group *g, const struct sealed_items *items,
+                                  const struct secret *share, uint32_t index, const uint8_t *leaf, uint8_t *out)
+{
+	struct share_work work[THREADS] = {0};
+	pthread_t thread[THREADS];
+	enum qb_status st = QB_OK;
+	for (size_t t = 0; t < THREADS; t++) {
+		work[t] = (struct share_work){.g = g,
+		                              .items = items,
+		                              .share = share,
+		                              .index = index,
+		                              .out = out,
+		                              .from = items->n * t / THREADS,
+		                              .to = items->n * (t + 1) / THREADS};
+		memcpy(work[t].leaf, leaf, 32);
+		if (pthread_create(&thread[t], NULL, share_thread, &work[t]) != 0) {
+			share_thread(&work[t]);
+			thread[t] = pthread_self();
+		}
+	}
+	for (size_t t = 0; t < THREADS; t++) {
+		if (!pthread_equal(thread[t], pthread_self()))
+			pthread_join(thread[t], NULL);
+		if (st == QB_OK && work[t].status != QB_OK) {
+			st = work[t].status;
+			c->error = work[t].error;
+		}
+	}
+	return st;
+}
+
+static enum qb_status send_shares(struct cli_call *c, const struct campaign *k, const struct opening *op,
+                                  const uint8_t *shares, size_t count)
+{
+	uint8_t hash[64];
+	char id[33], *text = base64_encode(shares, count * PARTIAL_BYTES);
+	json_t *extra = json_object(), *more = json_object();
+	hex_encode(id, op->id, 16);
+	blake2b_512(hash, shares, count * PARTIAL_BYTES);
+	json_object_set_new(extra, "opening", json_string(id));
+	json_object_set_new(extra, "count", json_integer((json_int_t)count));
+	json_object_set_new(extra, "shares_hash", json_hex_new(hash, 64));
+	json_object_set_new(more, "shares", json_string(text));
+	char *path = text_printf("/v1/campaigns/%s/openings/%s/shares", k->name, id);
+	enum qb_status st =
+	    cli_post_entry(c, path, "opening-shares", k->id, "the request was checked", extra, more, NULL);
+	qb_free(path);
+	qb_free(text);
+	return st;
+}
+
+enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op)
+{
+	struct custody_group *g = QB_NEW(struct custody_group);
+	struct sealed_items items = {0};
+	struct secret *share = NULL;
+	uint8_t *shares = NULL;
+	char what[400];
+	enum qb_status st = campaign_certified_group(k, g, &c->error);
+	if (st == QB_OK && k->state < C_CLOSED)
+		st = qb_fail(&c->error, QB_REFUSED, "opening", NULL, "the ledger has no closing before this request");
+	if (st == QB_OK)
+		st = items_fetch(c, k, &items);
+	for (size_t i = 0; st == QB_OK && i < items.n; i++)
+		st = item_check(k, &c->follow.view, g, &items.item[i], &c->error);
+	if (st == QB_OK) {
+		const struct view_party *asker = view_party_by_id(&c->follow.view, op->asker);
+		(void)snprintf(what, sizeof what,
+		               "Full opening of %s, asked for by %s: %zu records, every slot, claim and report. This "
+		               "ends the blind.\n",
+		               k->name, asker != NULL ? asker->name : "?", items.n);
+		st = join_confirm(c, what);
+	}
+	if (st == QB_OK)
+		st = cli_share(c, k, g, &share);
+	if (st == QB_OK) {
+		shares = qb_alloc(items.n, PARTIAL_BYTES);
+		st = make_shares(c, g, &items, share, (uint32_t)custodian_index(k, c->home.name) + 1, op->authority,
+		                 shares);
+	}
+	if (st == QB_OK)
+		st = send_shares(c, k, op, shares, items.n);
+	if (st == QB_OK)
+		cli_print(c, "%s gave partial openings of %zu records\n", c->home.name, items.n);
+	secret_free(&share);
+	items_free(&items);
+	qb_free(shares);
+	qb_free(g);
+	return st;
+}

@@ -1,0 +1,37 @@
+/* A custodian's part of an opening: check everything, show it, then give partial openings. */
+#ifndef QB_CLIENT_CLI_OPENING_JOIN_H
+#define QB_CLIENT_CLI_OPENING_JOIN_H
+
+#include "client/cli/internal.h"
+#include "server/custody/partial.h"
+
+/* One sealed record as the service hands it out. */
+struct sealed_item {
+	int64_t position, slot;
+	int type;
+	char station[64], by[64];
+	struct buf bytes;  /* owned */
+	struct record rec; /* points into bytes; after item_check */
+};
+struct sealed_items {
+	struct sealed_item *item; /* owned */
+	size_t n;
+};
+/* Every record that the service shows, in the order of positions. */
+enum qb_status items_fetch(struct cli_call *c, const struct campaign *k, struct sealed_items *out) QB_MUST_USE;
+void items_free(struct sealed_items *items);
+/* Proof, group, type and place of a record, against the verified ledger. Errors: QB_CRYPTO with the record's place. */
+enum qb_status item_check(const struct campaign *k, const struct view *v, const struct custody_group *g,
+                          struct sealed_item *item, struct qb_error *e) QB_MUST_USE;
+
+enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op) QB_MUST_USE;
+enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *doc) QB_MUST_USE;
+/* The asker's side: k agreeing, signed answers; *state says "waiting" or the answer. */
+enum qb_status spot_result(struct cli_call *c, struct campaign *k, const json_t *doc, char answer[64]) QB_MUST_USE;
+/* Asks the person at the terminal unless --yes was given. QB_REFUSED: the person said no. */
+enum qb_status join_confirm(struct cli_call *c, const char *what) QB_MUST_USE;
+/* T("quietbell/1/opening/answer", th, authorising hash, answer). */
+void answer_transcript(const struct custody_group *g, const uint8_t commitment[static 64], const char *answer,
+                       uint8_t out[static 64]);
+
+#endif
