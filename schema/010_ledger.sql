@@ -7,7 +7,7 @@ CREATE TABLE leaves (
 CREATE TRIGGER leaves_no_update BEFORE UPDATE ON leaves BEGIN SELECT RAISE(ABORT, 'the ledger is append-only'); END;
 CREATE TRIGGER leaves_no_delete BEFORE DELETE ON leaves BEGIN SELECT RAISE(ABORT, 'the ledger is append-only'); END;
 CREATE TRIGGER leaves_in_order BEFORE INSERT ON leaves
-  WHEN NEW.seq <> (SELECT count(*) FROM leaves) BEGIN SELECT RAISE(ABORT, 'the ledger has no gaps'); END;
+  WHEN NEW.seq <> (SELECT coalesce(max(seq), -1) + 1 FROM leaves) BEGIN SELECT RAISE(ABORT, 'the ledger has no gaps'); END;
 
 CREATE TABLE heads (
   size  INTEGER PRIMARY KEY,

@@ -9,6 +9,7 @@
 #include "client/cli/keygen.h"
 #include "client/cli/opening_join.h"
 #include "server/base/alloc.h"
+#include "server/base/clock.h"
 #include "server/base/text.h"
 #include "server/custody/box.h"
 #include "server/drill/report.h"

@@ -3,6 +3,7 @@
 
 #include "client/cli/opening_join.h"
 #include "server/base/alloc.h"
+#include "server/base/clock.h"
 #include "server/base/text.h"
 
 #define DEADLINE_NS (3600 * NS_PER_S)
