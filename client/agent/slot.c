@@ -18,8 +18,7 @@ struct slot_run {
 	int64_t n, start_ns, end_ns, freeze_ns;
 	int64_t now_ns;    /* the clock that counts, at the last look */
 	int64_t looked_ns; /* the system's clock, at the last look at the slot */
-	bool moved;        /* the clock moved since the look before */
-	bool seen_once;
+	bool seen_once, halt_said;
 	struct watch_slot seen;
 	struct play play;
 	struct drive drive;
@@ -103,28 +102,36 @@ static enum qb_status look(struct slot_run *r, struct qb_error *e)
 		r->seen_once = true;
 	}
 	r->now_ns = now;
-	r->moved = moved;
 	return QB_OK;
 }
 
-/* What stands in the way once the slot has begun. A hold is taken to bear on everything that is not out yet. */
+/*
+ * What stands in the way once the slot has begun. A hold is taken to bear on everything that is not out yet. The line
+ * in the log depends on the cause alone: whether there was anything left to halt is the slot's secret.
+ */
 static void obey(struct slot_run *r)
 {
-	bool lost = watch_contact_lost(r->d), halted = play_halted(&r->play);
+	const struct driver *d = r->d;
+	const struct {
+		bool stands;
+		enum play_state why;
+		int64_t at_ns;
+		const char *reason;
+	} causes[] = {{r->seen.stopped, PLAY_STOPPED, r->seen.stopped_gps_ns, "stopped"},
+	              {r->seen.held, PLAY_HELD, 0, "held"},
+	              {!watch_observing(d->opt.state_file), PLAY_FAILED, 0, "the station is not observing"},
+	              {watch_contact_lost(d), PLAY_FAILED, 0, "no contact with the service"},
+	              {watch_stopping(d), PLAY_FAILED, 0, "the driver was told to end"}};
 	if (r->now_ns < r->start_ns)
 		return;
-	if (r->seen.stopped)
-		halt(r, PLAY_STOPPED, r->seen.stopped_gps_ns, "stopped");
-	if (r->seen.held)
-		halt(r, PLAY_HELD, 0, "held");
-	if (!watch_observing(r->d->opt.state_file))
-		halt(r, PLAY_FAILED, 0, "the station is not observing");
-	if (lost)
-		halt(r, PLAY_FAILED, 0, "no contact with the service");
-	if (watch_stopping(r->d))
-		halt(r, PLAY_FAILED, 0, "the driver was told to end");
-	if (!halted && play_halted(&r->play))
-		say(r, "slot-halted");
+	for (size_t i = 0; i < sizeof causes / sizeof causes[0]; i++) {
+		if (!causes[i].stands)
+			continue;
+		halt(r, causes[i].why, causes[i].at_ns, causes[i].reason);
+		if (!r->halt_said)
+			say(r, "slot-halted");
+		r->halt_said = true;
+	}
 }
 
 /* ---- the key ---- */
