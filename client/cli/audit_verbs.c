@@ -2,6 +2,7 @@
 #include <string.h>
 
 #include "client/cli/audit_source.h"
+#include "client/cli/bundle_verify.h"
 #include "client/cli/cli.h"
 #include "client/report/report.h"
 #include "server/audit/audit.h"
@@ -48,7 +49,11 @@ static enum qb_status run(struct cli_call *c)
 {
 	struct audit_input *in = NULL;
 	json_t *doc = NULL;
-	enum qb_status st = audit_source_folder(cli_option(c, "set"), &in, cli_error(c));
+	const char *set = cli_option(c, "set"), *bundle = cli_option(c, "bundle");
+	if ((set != NULL) == (bundle != NULL))
+		return qb_fail(cli_error(c), QB_USAGE, NULL, NULL, "give --bundle FILE or --set DIR");
+	enum qb_status st =
+	    set != NULL ? audit_source_folder(set, &in, cli_error(c)) : audit_source_bundle(bundle, &in, cli_error(c));
 	if (st == QB_OK)
 		st = audit_run(in, &doc, cli_error(c));
 	if (st == QB_OK)
@@ -59,13 +64,14 @@ static enum qb_status run(struct cli_call *c)
 }
 
 static const struct cli_option run_options[] = {
-    {"set", "DIR", true, "an audit folder: settings.json, slots.jsonl, claims.jsonl"},
+    {"bundle", "FILE", false, "a bundle: verified first, then audited"},
+    {"set", "DIR", false, "an audit folder: settings.json, slots.jsonl, claims.jsonl"},
     {"out", "FILE", false, "write the audit document here and print the report"},
     {NULL, NULL, false, NULL},
 };
 
 const struct cli_verb cli_audit_verbs[] = {
     {"audit", "run", "", run, run_options, "Match claims to drills and compute what was found, missed and unexplained.",
-     "quietbell audit run --set audit-folder --out audit.json"},
+     "quietbell audit run --bundle campaign.bundle --out audit.json"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL},
 };

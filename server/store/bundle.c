@@ -2,28 +2,15 @@
 #include <string.h>
 #include <unistd.h>
 
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+#include "server/ledger/bundle_schema.h"
 #include "server/store/internal.h"
-
-/* The exact schema text of a bundle; the verifier compares it verbatim. */
-static const char *const bundle_schema[] = {
-    "CREATE TABLE bundle.about (key TEXT PRIMARY KEY, value TEXT NOT NULL) STRICT",
-    "CREATE TABLE bundle.leaves (seq INTEGER PRIMARY KEY, frame BLOB NOT NULL) STRICT",
-    "CREATE TABLE bundle.heads (text TEXT NOT NULL) STRICT",
-    "CREATE TABLE bundle.hidden (commitment BLOB PRIMARY KEY, seq INTEGER NOT NULL, nonce BLOB NOT NULL,"
-    " entry BLOB NOT NULL, signature BLOB NOT NULL, author BLOB NOT NULL) STRICT",
-    "CREATE TABLE bundle.records (position INTEGER PRIMARY KEY, type INTEGER NOT NULL, slot INTEGER NOT NULL,"
-    " station TEXT NOT NULL, author BLOB NOT NULL, record_id BLOB NOT NULL, record BLOB NOT NULL) STRICT",
-    "CREATE TABLE bundle.recipes (slot INTEGER NOT NULL, station TEXT NOT NULL, place INTEGER NOT NULL,"
-    " recipe BLOB NOT NULL, PRIMARY KEY (slot, station, place)) STRICT",
-    "CREATE TABLE bundle.prekeys (station TEXT NOT NULL, place INTEGER NOT NULL, points BLOB NOT NULL,"
-    " PRIMARY KEY (station, place)) STRICT",
-    "CREATE TABLE bundle.shares (opening BLOB NOT NULL, custodian TEXT NOT NULL, shares BLOB NOT NULL,"
-    " PRIMARY KEY (opening, custodian)) STRICT",
-    NULL};
 
 /* Copies with the campaign bound; the leaves go in whole, since every proof is about the one ledger. */
 static const char *const copies[] = {
-    "INSERT INTO bundle.hidden SELECT commitment, seq, nonce, entry, signature, author FROM main.hidden"
+    "INSERT INTO bundle.hidden SELECT commitment, seq, received, due, promise, nonce, entry, signature, author FROM "
+    "main.hidden"
     " WHERE campaign = ? AND seq IS NOT NULL ORDER BY seq",
     "INSERT INTO bundle.records SELECT position, type, slot, station, author, record_id, record FROM main.records"
     " WHERE campaign = ? ORDER BY position",
@@ -47,15 +34,18 @@ static enum qb_status fill(struct store *s, const uint8_t campaign[static 16], u
                            const char *version, struct qb_error *e)
 {
 	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && bundle_schema[i] != NULL; i++)
-		st = store_exec(s->db, bundle_schema[i], e);
+	for (const struct bundle_table *t = bundle_tables; st == QB_OK && t->name != NULL; t++) {
+		char *sql = text_printf("CREATE TABLE bundle.%s %s", t->name, t->columns);
+		st = store_exec(s->db, sql, e);
+		qb_free(sql);
+	}
 	char hex[33];
 	for (int i = 0; i < 16; i++)
 		sqlite3_snprintf(3, hex + 2 * i, "%02x", campaign[i]);
 	if (st == QB_OK)
 		st = put_pair(s, "campaign", hex, e);
 	if (st == QB_OK)
-		st = put_pair(s, "format", "quietbell-bundle-1", e);
+		st = put_pair(s, "format", BUNDLE_FORMAT, e);
 	if (st == QB_OK)
 		st = put_pair(s, "written-by", version, e);
 	if (st == QB_OK) {

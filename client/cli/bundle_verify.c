@@ -1,0 +1,372 @@
+/* The checklist: ledger, heads, certificate, records, hidden entries, openings; re-derivation is in bundle_redraw.c. */
+#include "client/cli/bundle_verify.h"
+
+#include <inttypes.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "server/base/alloc.h"
+#include "server/base/text.h"
+
+typedef enum qb_status check_fn(struct verified *v, struct qb_error *e);
+
+static enum qb_status no(struct qb_error *e, const char *what)
+{
+	return qb_fail(e, QB_NO, "bundle", "do not rely on it; ask the custodians for their mirrors", "%s", what);
+}
+
+static enum qb_status check_ledger(struct verified *v, struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	for (uint64_t i = 0; st == QB_OK && i < v->bundle->n_frames; i++)
+		st = follow_take(&v->follow, v->bundle->frame[i].data, v->bundle->frame[i].len, e);
+	char id[33];
+	hex_encode(id, v->bundle->campaign, 16);
+	v->k = st == QB_OK ? view_campaign(&v->follow.view, id) : NULL;
+	return st == QB_OK && v->k == NULL ? no(e, "the ledger does not have the bundle's campaign") : st;
+}
+
+static enum qb_status check_head(struct verified *v, struct qb_error *e)
+{
+	struct head *h = QB_NEW(struct head);
+	uint8_t known[CUSTODY_MAX][SIGN_PUBLIC];
+	struct ledger_hash root;
+	size_t valid = 0;
+	for (int i = 0; i < v->k->n; i++)
+		memcpy(known[i], v->k->custodian[i].party->signing_key, 32);
+	enum qb_status st = head_parse((const char *)v->bundle->head.data, v->bundle->head.len, h, e);
+	if (st == QB_OK)
+		st = head_verify(h, v->follow.view.service_key, (const uint8_t(*)[SIGN_PUBLIC])known, (size_t)v->k->n,
+		                 &valid, e);
+	/* Other people's cosignatures are checked too: an altered line is refused, whoever it is said to be from. */
+	for (size_t i = 0; st == QB_OK && i < h->n_cosigners; i++) {
+		const struct view_party *p = view_party_by_id(&v->follow.view, h->cosigner[i].key_id);
+		struct buf text = {0};
+		head_signed_text(h, &text);
+		if (p == NULL || !sign_verify(p->signing_key, text.data, text.len, h->cosigner[i].signature))
+			st = no(e, "a cosignature is false");
+		buf_free(&text);
+	}
+	tree_root(&v->follow.range, &root);
+	if (st == QB_OK && (h->size != v->follow.n || !hash_equal(&root, &h->root)))
+		st = no(e, "the leaves do not have the root of the signed head");
+	if (st == QB_OK && valid < head_quorum((size_t)v->k->n))
+		st = no(e, "too few custodians cosigned the head");
+	qb_free(h);
+	return st;
+}
+
+static enum qb_status check_certificate(struct verified *v, struct qb_error *e)
+{
+	return campaign_certified_group(v->k, &v->group, e);
+}
+
+static int compare_ids(const void *a, const void *b)
+{
+	return memcmp(a, b, 64);
+}
+
+/* The ids of records that public entries of these types, or published hidden entries, name. */
+struct ids {
+	uint8_t (*id)[64];
+	size_t n;
+};
+
+static void ids_add(struct ids *x, const struct wire_entry *en)
+{
+	if ((x->n & (x->n - 1)) == 0)
+		x->id = qb_realloc(x->id, x->n > 0 ? 2 * x->n : 1, 64);
+	wire_entry_hex(en, "record_id", x->id[x->n++], 64);
+}
+
+static enum qb_status filed_ids(const struct verified *v, struct ids *out, struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	*out = (struct ids){0};
+	for (uint64_t i = 0; st == QB_OK && i < v->follow.n; i++) {
+		struct entry leaf;
+		struct wire_entry en;
+		st = entry_decode(v->follow.frame[i].data, v->follow.frame[i].len, &leaf, e);
+		if (st != QB_OK || leaf.kind == ENTRY_HIDDEN)
+			continue;
+		if ((st = wire_entry_parse((const char *)leaf.body, leaf.body_len, &en, e)) != QB_OK)
+			continue;
+		if (en.has_campaign && memcmp(en.campaign, v->k->id, 16) == 0 &&
+		    (strcmp(en.type->type, "play-note") == 0 || strcmp(en.type->type, "play-report") == 0))
+			ids_add(out, &en);
+		wire_entry_free(&en);
+	}
+	for (size_t i = 0; st == QB_OK && i < v->bundle->n_hidden; i++) {
+		struct wire_entry en;
+		st = wire_entry_parse((const char *)v->bundle->hidden[i].entry.data, v->bundle->hidden[i].entry.len,
+		                      &en, e);
+		if (st == QB_OK && json_object_get(en.doc, "record_id") != NULL)
+			ids_add(out, &en);
+		if (st == QB_OK)
+			wire_entry_free(&en);
+	}
+	if (out->n > 0)
+		qsort(out->id, out->n, 64, compare_ids);
+	return st;
+}
+
+/* Every record is the one that the ledger fixed, and every one that the ledger fixed is there. */
+static enum qb_status check_records(struct verified *v, struct qb_error *e)
+{
+	struct ids filed;
+	int64_t slots = 0, others = 0, seeds = 0;
+	enum qb_status st = filed_ids(v, &filed, e);
+	for (size_t i = 0; st == QB_OK && i < v->bundle->records.n; i++) {
+		struct sealed_item *x = &v->bundle->records.item[i];
+		const struct view_party *p = view_party_by_id(&v->follow.view, v->bundle->author[i]);
+		(void)snprintf(x->by, sizeof x->by, "%s", p != NULL ? p->name : "service");
+		st = item_check(v->k, &v->follow.view, &v->group, x, e);
+		if (st == QB_OK && (memcmp(x->rec.id, v->bundle->record_id[i], 64) != 0 ||
+		                    memcmp(x->rec.header.author, v->bundle->author[i], 16) != 0))
+			st = no(e, "a record's listed id or author is not its own");
+		if (st != QB_OK)
+			break;
+		bool own = x->rec.header.type == RECORD_SLOT || x->rec.header.type == RECORD_SEED;
+		bool note = x->rec.header.type == RECORD_PLAY_NOTE || x->rec.header.type == RECORD_PLAY_REPORT;
+		if (!own && (filed.n == 0 || bsearch(x->rec.id, filed.id, filed.n, 64, compare_ids) == NULL))
+			st = no(e, "a record was never entered in the ledger");
+		uint64_t station = x->rec.header.index / 16 % 16;
+		if (st == QB_OK && note &&
+		    ((int64_t)(x->rec.header.index / 256) != x->slot ||
+		     station >= (uint64_t)v->k->plan->network->n_stations ||
+		     strcmp(v->k->plan->network->stations[station].name, x->station) != 0))
+			st = no(e, "a note or report stands under another slot or station");
+		if (st == QB_OK && !note &&
+		    (x->station[0] != '\0' || (!own && x->slot != -1) ||
+		     (x->rec.header.type == RECORD_SEED && x->slot != -1)))
+			st = no(e, "a record stands under a slot or station that is not its own");
+		slots += x->rec.header.type == RECORD_SLOT;
+		seeds += x->rec.header.type == RECORD_SEED;
+		others += !own;
+	}
+	if (st == QB_OK && (slots != v->k->n_slots || seeds != 1 || others != (int64_t)filed.n))
+		st = no(e, "records that the ledger fixed are missing, or stand twice");
+	qb_free(filed.id);
+	return st;
+}
+
+static enum qb_status check_one_hidden(struct verified *v, const struct bundle_hidden *h, struct qb_error *e)
+{
+	uint8_t commitment[64];
+	struct entry leaf;
+	struct wire_entry en;
+	struct entry_promise p = {.received_gps_ns = h->received_gps_ns, .batch_due_gps_ns = h->due_gps_ns};
+	const struct view_party *author = view_party_by_id(&v->follow.view, h->author);
+	entry_hide(h->nonce, h->entry.data, h->entry.len, commitment);
+	memcpy(p.campaign, v->k->id, 16);
+	memcpy(p.commitment, h->commitment, 64);
+	memcpy(p.signature, h->promise, 64);
+	if (memcmp(commitment, h->commitment, 64) != 0 || h->seq < 0 || (uint64_t)h->seq >= v->follow.n ||
+	    author == NULL)
+		return no(e, "a hidden entry is not what its commitment hides");
+	enum qb_status st = entry_decode(v->follow.frame[h->seq].data, v->follow.frame[h->seq].len, &leaf, e);
+	if (st == QB_OK && (leaf.kind != ENTRY_HIDDEN || memcmp(leaf.body, commitment, 64) != 0))
+		st = no(e, "a hidden entry's commitment is not in the ledger where it should be");
+	if (st == QB_OK)
+		st = entry_promise_verify(&p, v->follow.view.service_key, e);
+	if (st == QB_OK && !entry_verify_body(author->signing_key, h->entry.data, h->entry.len, h->signature))
+		st = no(e, "a hidden entry's signature is not its author's");
+	if (st == QB_OK && (st = wire_entry_parse((const char *)h->entry.data, h->entry.len, &en, e)) == QB_OK) {
+		if (strcmp(en.by, author->name) != 0 || memcmp(en.campaign, v->k->id, 16) != 0 || !en.type->hidden ||
+		    (en.type->roles & ROLE_BIT(campaign_role(v->k, author))) == 0)
+			st = no(e, "a hidden entry's author may not author it");
+		wire_entry_free(&en);
+	}
+	return st;
+}
+
+static enum qb_status check_hidden(struct verified *v, struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	for (size_t i = 0; st == QB_OK && i < v->bundle->n_hidden; i++)
+		st = check_one_hidden(v, &v->bundle->hidden[i], e);
+	return st;
+}
+
+/* Prekeys and recipes against the hashes that were entered before anything was played. */
+static enum qb_status check_recipes(struct verified *v, struct qb_error *e)
+{
+	struct transcript all;
+	uint8_t sealed[64], hash[64], want[64];
+	size_t prekeys = 0, first = 0, end = 0;
+	enum qb_status st = QB_OK;
+	transcript_begin(&all, "quietbell/1/recipe/all");
+	for (int64_t n = 0; n < v->k->n_slots; n++, first = end) {
+		while (end < v->bundle->n_recipes && v->bundle->recipe[end].slot == n)
+			end++;
+		/* the sealer's order: station of the network, then place; the table is sorted by name */
+		for (int i = 0; i < v->k->plan->network->n_stations; i++) {
+			for (size_t r = first; r < end; r++) {
+				const struct bundle_blob *x = &v->bundle->recipe[r];
+				if (strcmp(x->name, v->k->plan->network->stations[i].name) == 0)
+					transcript_field(&all, x->bytes.data, x->bytes.len);
+			}
+		}
+	}
+	transcript_end(&all, sealed);
+	if (end != v->bundle->n_recipes)
+		return no(e, "there are recipes of slots that the campaign does not have");
+	for (uint64_t i = 0; st == QB_OK && i < v->follow.n; i++) {
+		struct entry leaf;
+		struct wire_entry en;
+		if (follow_entry(&v->follow, i, &leaf, &en, NULL) != QB_OK)
+			continue;
+		bool ours = en.has_campaign && memcmp(en.campaign, v->k->id, 16) == 0;
+		if (ours && strcmp(en.type->type, "sealed") == 0) {
+			wire_entry_hex(&en, "recipes_hash", want, 64);
+			if (memcmp(sealed, want, 64) != 0)
+				st = no(e, "the recipes are not those that were sealed");
+		}
+		if (ours && strcmp(en.type->type, "prekeys") == 0) {
+			for (size_t p = 0; p < v->bundle->n_prekeys; p++) {
+				const struct bundle_blob *x = &v->bundle->prekey[p];
+				if (strcmp(x->name, wire_entry_text(&en, "station")) != 0 ||
+				    x->place != wire_entry_int(&en, "place"))
+					continue;
+				blake2b_512(hash, x->bytes.data, x->bytes.len);
+				wire_entry_hex(&en, "points_hash", want, 64);
+				if (memcmp(hash, want, 64) != 0)
+					st = no(e, "one-time keys are not those that a driver left");
+				prekeys++;
+			}
+		}
+		wire_entry_free(&en);
+	}
+	return st == QB_OK && prekeys != v->bundle->n_prekeys ? no(e, "one-time keys that no driver left") : st;
+}
+
+/* k custodians' partial openings, each with its proof, combined; the contents must hash to what was announced. */
+static enum qb_status check_opening(struct verified *v, struct qb_error *e)
+{
+	const struct bundle_blob *set[CUSTODY_MAX];
+	size_t n = 0, records = v->bundle->records.n;
+	struct transcript t;
+	uint8_t hash[64], given[64], id[64];
+	enum qb_status st = QB_OK;
+	for (int i = 0; i < v->k->n_openings; i++) {
+		if (v->k->opening[i].scope == SCOPE_FULL && v->k->opening[i].opened)
+			v->opening = &v->k->opening[i];
+	}
+	if (v->opening == NULL)
+		return no(e, "the campaign was not opened");
+	for (size_t i = 0; i < v->bundle->n_shares; i++) {
+		const struct bundle_blob *x = &v->bundle->share[i];
+		if (memcmp(x->opening, v->opening->id, 16) != 0 || custodian_index(v->k, x->name) < 0 ||
+		    x->bytes.len != records * PARTIAL_BYTES || n == CUSTODY_MAX)
+			return no(e, "a set of partial openings is of another opening or incomplete");
+		set[n++] = x;
+	}
+	if (n < (size_t)v->k->k)
+		return no(e, "too few custodians opened");
+	v->content = QB_NEW_ARRAY(struct buf, records);
+	transcript_begin(&t, "quietbell/1/opening/plaintexts");
+	for (size_t r = 0; st == QB_OK && r < records; r++) {
+		const struct record *rec = &v->bundle->records.item[r].rec;
+		struct partial p[CUSTODY_MAX];
+		struct partial_authority auth = {.purpose = partial_full_purpose(rec->header.type)};
+		memcpy(auth.hash, v->opening->authority, 32);
+		for (size_t i = 0; st == QB_OK && i < n; i++) {
+			st = partial_check(&v->group, rec, &auth, set[i]->bytes.data + r * PARTIAL_BYTES, PARTIAL_BYTES,
+			                   &p[i], e);
+			if (st == QB_OK && p[i].i != (uint32_t)custodian_index(v->k, set[i]->name) + 1)
+				st = no(e, "a partial opening is another custodian's");
+		}
+		if (st == QB_OK)
+			st = partial_open(&v->group, rec, p, n, &v->content[r], e);
+		if (st == QB_OK) {
+			blake2b_512(hash, v->content[r].data, v->content[r].len);
+			memcpy(id, rec->id, 64);
+			transcript_field(&t, id, 64);
+			transcript_field(&t, hash, 64);
+		}
+	}
+	transcript_end(&t, hash);
+	for (uint64_t i = 0; st == QB_OK && i < v->follow.n; i++) {
+		struct entry leaf;
+		struct wire_entry en;
+		if (follow_entry(&v->follow, i, &leaf, &en, NULL) != QB_OK)
+			continue;
+		bool ours = en.has_campaign && memcmp(en.campaign, v->k->id, 16) == 0;
+		if (ours && strcmp(en.type->type, "opened") == 0) {
+			wire_entry_hex(&en, "plaintexts_hash", given, 64);
+			if (memcmp(hash, given, 64) != 0)
+				st = no(e, "the contents are not those that the service announced");
+		}
+		wire_entry_free(&en);
+	}
+	return st;
+}
+
+static const struct {
+	const char *property, *how;
+	check_fn *fn;
+} checks[] = {
+    {"the ledger is whole and every entry is its author's",
+     "place, format, Ed25519 signature and meaning of every leaf", check_ledger},
+    {"one history, held by the custodians", "Merkle root, the service's signature, a quorum of cosignatures",
+     check_head},
+    {"the group key belongs to all custodians together", "recomputed from the signed deals, certified by all",
+     check_certificate},
+    {"no record was added, altered, exchanged or left out", "proof of each record, and its id in the ledger",
+     check_records},
+    {"hidden entries are what was promised at the time", "commitments, promises and authors' signatures", check_hidden},
+    {"recipes and one-time keys are those of the sealing", "hashes entered before anything was played", check_recipes},
+    {"enough custodians opened, each correctly", "proof of each partial opening, combination, hash of all contents",
+     check_opening},
+    {"nobody chose the draw", "every contribution fits the commitment made before it; the seed follows", verify_seed},
+    {"the opened contents are what was sealed", "sealed again from the seed: byte for byte the same records",
+     verify_reseal},
+    {"every drill is what the plan draws from the seed", "drawn again: all numbers agree to 1e-6", verify_redraw},
+};
+
+enum qb_status bundle_verify(const char *path, struct verified **out, struct qb_error *e)
+{
+	struct verified *v = QB_NEW(struct verified);
+	enum qb_status st = bundle_read(path, &v->bundle, e);
+	*out = NULL;
+	if (st != QB_OK) {
+		qb_free(v);
+		return st;
+	}
+	v->all = true;
+	for (size_t i = 0; i < sizeof checks / sizeof checks[0]; i++) {
+		struct verify_check *c = &v->check[v->n_checks++];
+		struct qb_error one = {0};
+		char line[1000];
+		*c = (struct verify_check){.property = checks[i].property, .how = checks[i].how};
+		if (!v->all)
+			continue; /* what rests on a broken property is not judged */
+		c->done = true;
+		c->holds = checks[i].fn(v, &one) == QB_OK;
+		(void)snprintf(c->detail, sizeof c->detail, "%.399s",
+		               c->holds ? "" : qb_error_line(&one, line, sizeof line));
+		if (!c->holds) {
+			v->all = false;
+			st = qb_fail(e, QB_NO, "bundle", "do not rely on it", "not verified: %s: %.250s", c->property,
+			             c->detail);
+		}
+	}
+	*out = v;
+	return st;
+}
+
+void verified_free(struct verified **vp)
+{
+	struct verified *v = *vp;
+	if (v == NULL)
+		return;
+	for (size_t i = 0; v->content != NULL && i < v->bundle->records.n; i++)
+		buf_wipe(&v->content[i]);
+	qb_free(v->content);
+	secret_free(&v->seed);
+	follow_close(&v->follow);
+	bundle_free(&v->bundle);
+	qb_free(v);
+	*vp = NULL;
+}

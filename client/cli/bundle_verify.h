@@ -1,0 +1,53 @@
+/*
+ * Offline verification of a bundle: each property by name, how it was checked, and whether it holds; then everything
+ * that was opened, for the audit.
+ */
+#ifndef QB_CLIENT_CLI_BUNDLE_VERIFY_H
+#define QB_CLIENT_CLI_BUNDLE_VERIFY_H
+
+#include "client/cli/bundle_file.h"
+#include "server/audit/input.h"
+#include "server/drill/truth.h"
+
+#define VERIFY_CHECKS 12
+
+struct verify_check {
+	const char *property, *how;
+	bool done, holds;
+	char detail[400]; /* why not, or a count */
+};
+struct verified {
+	struct bundle *bundle; /* owned */
+	struct follow follow;  /* the ledger, verified leaf by leaf */
+	struct campaign *k;    /* in follow.view */
+	struct custody_group group;
+	struct opening *opening; /* the full one */
+	struct buf *content;     /* of each record, opened; owned */
+	struct secret *seed;
+	uint64_t audit_seed;
+	struct verify_check check[VERIFY_CHECKS];
+	int n_checks;
+	bool all;
+};
+/*
+ * Returned: *out    also when a property fails (out->all is false); NULL only when the file can't be read as a bundle
+ * Errors:   QB_NO   something does not hold (e says the first); QB_IO
+ */
+enum qb_status bundle_verify(const char *path, struct verified **out, struct qb_error *e) QB_MUST_USE;
+void verified_free(struct verified **v);
+
+/* Re-derivation from the seed (bundle_redraw.c). Errors: QB_NO with what differs. */
+enum qb_status verify_seed(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_reseal(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_redraw(struct verified *v, struct qb_error *e) QB_MUST_USE;
+
+/* Settings, slots and claims of a verified bundle as the audit reads them, owned by the caller. */
+struct bundle_audit {
+	json_t *settings, *slots, *claims; /* object, array, array */
+};
+enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *out, struct qb_error *e) QB_MUST_USE;
+void bundle_audit_free(struct bundle_audit *a);
+/* The same as an input for audit_run. */
+enum qb_status audit_source_bundle(const char *path, struct audit_input **out, struct qb_error *e) QB_MUST_USE;
+
+#endif
