@@ -71,6 +71,10 @@ enum qb_status store_bundle_write(struct store *s, const uint8_t campaign[static
                                   const char *head, const char *version, const char *path, struct qb_error *e)
 {
 	(void)unlink(path);
+	/* the connection may not create files of its own: an empty one becomes the bundle */
+	enum qb_status made = file_write(path, 0600, "", 0, e);
+	if (made != QB_OK)
+		return made;
 	struct query q = q_begin(s, "ATTACH DATABASE ? AS bundle", e);
 	q_text(&q, path);
 	enum qb_status st = q_done(&q);
