@@ -10,7 +10,7 @@
 #include <cmocka.h>
 
 #define near_abs(got, want, tol) near_check(#got, (got), (want), (tol), __FILE__, __LINE__)
-#define near_rel(got, want, tol) near_check(#got, (got), (want), (tol) * fabs(want), __FILE__, __LINE__)
+#define near_rel(got, want, tol) near_check(#got, (got), (want), (tol)*fabs(want), __FILE__, __LINE__)
 
 static inline void near_check(const char *text, double got, double want, double bound, const char *file, int line)
 {

@@ -66,7 +66,9 @@ static enum qb_status contribution(const struct part *p, struct secret **out)
 			transcript_end(&t, h);
 			memcpy(secret_bytes(*out), h, CONTRIBUTION_BYTES);
 		}
-		st = keyfile_write(path, KEYFILE_OTHER, level_of(p), p->c->home.passphrase, *out, &p->c->error);
+		/* it is of use for hours, not years: the level of party keys will do */
+		st = keyfile_write(path, KEYFILE_OTHER, p->c->link.rehearsal ? KEYFILE_INTERACTIVE : KEYFILE_MODERATE,
+		                   p->c->home.passphrase, *out, &p->c->error);
 		if (st != QB_OK)
 			secret_free(out);
 	}
