@@ -168,7 +168,7 @@ static void loudness_and_redshift(void **state)
 		demo_draw(p, false, i, &t);
 		uint64_t base = 64 * (uint64_t)t.redraws;
 		double u = demo_uniform(&seed, base + 8), sum = 0, v = 0;
-		double wanted = 1 / (1.0 / 6 - u * (1.0 / 6 - 1.0 / 30)); /* p ~ x^-2 from 6 to 30 */
+		double wanted = 1 / (1.0 / 8 - u * (1.0 / 8 - 1.0 / 40)); /* p ~ x^-2 from 8 to 40 */
 		near_rel(t.network_snr, wanted, 1e-9);
 		for (int s = 0; s < t.n_stations; s++)
 			sum += t.station[s].snr * t.station[s].snr;
@@ -256,7 +256,7 @@ static void weight_in_the_station_frame(void **state)
 		assert_true(signal_get(&t.source, "primary_mass_msun", &m) &&
 		            signal_get(&t.source, "distance_mpc", &d));
 		near_abs(t.redshift, 0, 0);
-		double rho = t.network_snr, q_rho = pow(rho, -2) / (1.0 / 6 - 1.0 / 30);
+		double rho = t.network_snr, q_rho = pow(rho, -2) / (1.0 / 8 - 1.0 / 40);
 		double q_m = 1.35 / (pow(25, -1.35) - pow(50, -1.35)) * pow(m, -2.35);
 		near_rel(t.weight_mpc3, 1 / (m * M_LN2) / q_m * 4 * M_PI * d * d / (q_rho * rho / d), 1e-8);
 		n++;
@@ -290,7 +290,7 @@ static void weight_in_the_source_frame(void **state)
 		double d1 = luminosity_distance_mpc(z - h), d2 = luminosity_distance_mpc(z + h);
 		double v1 = pow(d1 / (1 + z - h), 3), v2 = pow(d2 / (1 + z + h), 3);
 		double volume = 4 * M_PI / 3 * (v2 - v1) / (d2 - d1) / (1 + z);
-		double q_rho = pow(t.network_snr, -2) / (1.0 / 6 - 1.0 / 30);
+		double q_rho = pow(t.network_snr, -2) / (1.0 / 8 - 1.0 / 40);
 		/* Target and draw have the same mass distribution: they cancel. */
 		near_rel(t.weight_mpc3, volume / (q_rho * slope), 1e-4);
 		plan_free(&q);

@@ -93,7 +93,7 @@ static void wrong_files(void **state)
 {
 	(void)state;
 	wrong("redraws: 100", "redrawz: 100", QB_FORMAT, "plan.yaml:46: redrawz", "unknown key");
-	wrong("index: 2, from: 6", "indes: 2, from: 6", QB_FORMAT, "network_snr", "'index' is missing");
+	wrong("index: 2, from: 8", "indes: 2, from: 8", QB_FORMAT, "network_snr", "'index' is missing");
 	wrong("quality: ", "qualitat: ", QB_FORMAT, "drills.families[1]", "quality");
 	wrong("stations_needed: 2\n", "", QB_FORMAT, "plan.yaml", "'stations_needed' is missing");
 	wrong("campaign: fells-rehearsal\n", "", QB_FORMAT, "plan.yaml", "'campaign' is missing");
@@ -122,7 +122,7 @@ static void wrong_files(void **state)
 	wrong("to: primary_mass_msun", "to: tertiary_mass_msun", QB_FORMAT, "secondary_mass_msun", "stands above");
 	wrong("orientation: isotropic", "orientation: sideways", QB_FORMAT, "orientation", "isotropic");
 	wrong("weight: 3", "weight: 0", QB_RANGE, "families[0].weight", "'0'");
-	wrong("      network_snr:         {inverse-power: {index: 2, from: 6, to: 30}}\n", "", QB_FORMAT, "families[0]",
+	wrong("      network_snr:         {inverse-power: {index: 2, from: 8, to: 30}}\n", "", QB_FORMAT, "families[0]",
 	      "network_snr");
 	wrong("weight: 3\n", "weight: 3\n      distance_mpc: 500\n", QB_FORMAT, "families[0]", "network_snr");
 	wrong("      primary_mass_msun:   {power-law: {index: -2.35, from: 25, to: 50}}\n      secondary_mass_msun: "
