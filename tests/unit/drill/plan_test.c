@@ -122,7 +122,7 @@ static void wrong_files(void **state)
 	wrong("to: primary_mass_msun", "to: tertiary_mass_msun", QB_FORMAT, "secondary_mass_msun", "stands above");
 	wrong("orientation: isotropic", "orientation: sideways", QB_FORMAT, "orientation", "isotropic");
 	wrong("weight: 3", "weight: 0", QB_RANGE, "families[0].weight", "'0'");
-	wrong("      network_snr:         {inverse-power: {index: 2, from: 8, to: 30}}\n", "", QB_FORMAT, "families[0]",
+	wrong("      network_snr:         {inverse-power: {index: 2, from: 8, to: 40}}\n", "", QB_FORMAT, "families[0]",
 	      "network_snr");
 	wrong("weight: 3\n", "weight: 3\n      distance_mpc: 500\n", QB_FORMAT, "families[0]", "network_snr");
 	wrong("      primary_mass_msun:   {power-law: {index: -2.35, from: 25, to: 50}}\n      secondary_mass_msun: "
