@@ -319,7 +319,8 @@ enum qb_status assign_claims(const struct assign_claim *claims, size_t n_claims,
 		const double dt = claims[i].arrival_gps - drills[out->drill_of[i]].arrival_gps;
 		out->total_weight += assign_weight(dt, claims[i].window_s);
 	}
-	qsort(out->sizes, out->n_sizes, sizeof *out->sizes, sizes_ascend);
+	if (out->n_sizes > 0)
+		qsort(out->sizes, out->n_sizes, sizeof *out->sizes, sizes_ascend);
 	qb_free(w.claim_at);
 	qb_free(w.drill_at);
 	qb_free(w.parent);

@@ -23,7 +23,7 @@ enum qb_status {
 };
 
 #define QB_MUST_USE     __attribute__((warn_unused_result))
-#define QB_PRINTF(f, a) __attribute__((format(printf, f, a)))
+#define QB_PRINTF(f, a) __attribute__((format(printf, f, a), nonnull(f)))
 
 struct qb_error {
 	enum qb_status status; /* QB_OK while nothing was reported */
