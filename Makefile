@@ -102,6 +102,7 @@ outside: $(outside_bin) $(helper_bin)
 	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(outside_bin) $(wildcard tests/outside/*_test.py)
 
 system: all
+	@rm -rf $(BUILD)/demo-sealed
 	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(sort $(wildcard tests/system/[0-9]*))
 test:
 	@tests/all $(BUILD)
