@@ -4,6 +4,7 @@
 #include <sqlite3.h>
 #include <stdio.h>
 #include <string.h>
+#include <sys/stat.h>
 #include <unistd.h>
 
 #include "server/base/alloc.h"
@@ -176,6 +177,26 @@ static enum qb_status check_schema(struct reader *r)
 	           : bad(r, "is no bundle: its tables are not those of the format");
 }
 
+static int64_t pragma(struct reader *r, const char *sql)
+{
+	sqlite3_stmt *s = NULL;
+	int64_t v = -1;
+	if (sqlite3_prepare_v2(r->db, sql, -1, &s, NULL) == SQLITE_OK && sqlite3_step(s) == SQLITE_ROW)
+		v = sqlite3_column_int64(s, 0);
+	sqlite3_finalize(s);
+	return v;
+}
+
+/* SQLite forgives a last page that is cut; a bundle has every byte of every page, and none behind them. */
+static enum qb_status check_size(struct reader *r, const char *path)
+{
+	struct stat f;
+	int64_t pages = pragma(r, "PRAGMA page_count"), size = pragma(r, "PRAGMA page_size");
+	if (stat(path, &f) != 0 || pages <= 0 || size <= 0 || f.st_size != pages * size)
+		return bad(r, "is truncated, or something was put behind it");
+	return QB_OK;
+}
+
 static enum qb_status read_all(struct reader *r)
 {
 	static const struct {
@@ -214,7 +235,9 @@ enum qb_status bundle_read(const char *path, struct bundle **out, struct qb_erro
 		sqlite3_db_config(r.db, SQLITE_DBCONFIG_DEFENSIVE, 1, NULL);
 		sqlite3_db_config(r.db, SQLITE_DBCONFIG_TRUSTED_SCHEMA, 0, NULL);
 		sqlite3_exec(r.db, "PRAGMA cell_size_check=ON", NULL, NULL, NULL);
-		st = read_all(&r);
+		st = check_size(&r, path);
+		if (st == QB_OK)
+			st = read_all(&r);
 	}
 	sqlite3_close(r.db);
 	if (st != QB_OK)
