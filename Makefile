@@ -130,6 +130,14 @@ $(BUILD)/fuzz/%: tests/fuzz/%.c
 fuzz: $(fuzz_bin)
 	@tests/fuzz/run $(FUZZ_SECONDS) $(fuzz_bin)
 
+# Figures, never pass or fail: each operation beside the bare library calls that it needs, in one run.
+bench_bin := $(patsubst %.c,$(BUILD)/%,$(wildcard tests/bench/*_bench.c))
+$(BUILD)/tests/bench/%: tests/bench/%.c $(lib)
+	@mkdir -p $(@D)
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(QB_LDFLAGS) -o $@ $< $(lib) $(LIBS_COMMON)
+bench: $(bench_bin)
+	@for b in $(bench_bin); do $$b || exit 1; done
+
 deps:
 	deploy/deps all
 lint:
