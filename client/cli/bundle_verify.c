@@ -181,11 +181,32 @@ static enum qb_status check_one_hidden(struct verified *v, const struct bundle_h
 	return st;
 }
 
+static int by_seq(const void *a, const void *b)
+{
+	const struct bundle_hidden *const *x = a, *const *y = b;
+	return ((*x)->seq > (*y)->seq) - ((*x)->seq < (*y)->seq);
+}
+
+/* None is left out: at the closing the service fixed how many there are, and which. */
 static enum qb_status check_hidden(struct verified *v, struct qb_error *e)
 {
+	size_t n = v->bundle->n_hidden;
+	const struct bundle_hidden **sorted = QB_NEW_ARRAY(const struct bundle_hidden *, n);
+	uint8_t(*commitments)[64] = qb_alloc(n, 64), hash[64];
 	enum qb_status st = QB_OK;
-	for (size_t i = 0; st == QB_OK && i < v->bundle->n_hidden; i++)
-		st = check_one_hidden(v, &v->bundle->hidden[i], e);
+	for (size_t i = 0; st == QB_OK && i < n; i++) {
+		sorted[i] = &v->bundle->hidden[i];
+		st = check_one_hidden(v, sorted[i], e);
+	}
+	if (st == QB_OK && n > 0)
+		qsort(sorted, n, sizeof *sorted, by_seq);
+	for (size_t i = 0; st == QB_OK && i < n; i++)
+		memcpy(commitments[i], sorted[i]->commitment, 64);
+	view_hidden_summary((const uint8_t(*)[64])commitments, n, hash);
+	if (st == QB_OK && (v->k->hidden_count != (int64_t)n || memcmp(hash, v->k->hidden_hash, 64) != 0))
+		st = no(e, "hidden entries that were fixed at the closing are missing, or there are others");
+	qb_free(sorted);
+	qb_free(commitments);
 	return st;
 }
 

@@ -178,7 +178,8 @@ bool clock_utc_parse(const char *s, int64_t *gps_ns)
 	    !digits_at(s + 11, 2, &h) || !digits_at(s + 14, 2, &mi) || !digits_at(s + 17, 2, &sec) ||
 	    !fraction_parse(s + 19, &end, &ns) || strcmp(end, "Z") != 0)
 		return false;
-	if (y < 1980 || y > 2250 || mo < 1 || mo > 12 || d < 1 || d > month_days[mo - 1] || h > 23 || mi > 59 || sec > 60)
+	if (y < 1980 || y > 2250 || mo < 1 || mo > 12 || d < 1 || d > month_days[mo - 1] || h > 23 || mi > 59 ||
+	    sec > 60)
 		return false;
 	bool leap_year = (y % 4 == 0 && y % 100 != 0) || y % 400 == 0;
 	if (mo == 2 && d == 29 && !leap_year)

@@ -28,6 +28,8 @@ enum qb_status case_close(struct ops *o, struct campaign *c, const struct ops_ca
 	if (st == QB_OK && (st = txn_begin(&t, o, "close", e)) == QB_OK) {
 		st = hidden_batches(&t, c, true, e);
 		if (st == QB_OK)
+			st = hidden_summary(&t, c, e);
+		if (st == QB_OK)
 			st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
 		if (st == QB_OK)
 			st = txn_commit(&t, e);

@@ -3,6 +3,7 @@
  * `batch` of the plan, filled up with random ones, so that the ledger does not tell that something happened.
  */
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include "server/base/alloc.h"
@@ -153,5 +154,54 @@ enum qb_status hidden_batches(struct txn *t, struct campaign *c, bool flush, str
 		st = batch_time_put(t->o, c, last, e);
 	if (st == QB_OK)
 		c->last_batch_ns = last;
+	return st;
+}
+
+struct entered {
+	uint8_t commitment[64];
+	int64_t seq;
+};
+struct all_entered {
+	struct entered *x;
+	size_t n;
+};
+
+static enum qb_status collect_entered(void *state, const struct store_hidden *h, struct qb_error *e)
+{
+	struct all_entered *all = state;
+	(void)e;
+	if (h->seq < 0)
+		return QB_OK;
+	all->x = qb_realloc(all->x, all->n + 1, sizeof *all->x);
+	memcpy(all->x[all->n].commitment, h->commitment, 64);
+	all->x[all->n++].seq = h->seq;
+	return QB_OK;
+}
+
+static int by_seq(const void *a, const void *b)
+{
+	const struct entered *x = a, *y = b;
+	return (x->seq > y->seq) - (x->seq < y->seq);
+}
+
+enum qb_status hidden_summary(struct txn *t, const struct campaign *c, struct qb_error *e)
+{
+	struct all_entered all = {0};
+	uint8_t hash[64];
+	enum qb_status st = store_hidden_all(t->o->store, c->id, collect_entered, &all, e);
+	if (all.n > 0)
+		qsort(all.x, all.n, sizeof *all.x, by_seq);
+	uint8_t(*commitments)[64] = qb_alloc(all.n, 64);
+	for (size_t i = 0; i < all.n; i++)
+		memcpy(commitments[i], all.x[i].commitment, 64);
+	view_hidden_summary((const uint8_t(*)[64])commitments, all.n, hash);
+	if (st == QB_OK) {
+		json_t *extra = json_object();
+		json_object_set_new(extra, "count", json_integer((json_int_t)all.n));
+		json_object_set_new(extra, "commitments_hash", json_hex_new(hash, 64));
+		st = txn_service_entry(t, "hidden-summary", c, "the analysis closes", extra, NULL, NULL, e);
+	}
+	qb_free(commitments);
+	qb_free(all.x);
 	return st;
 }

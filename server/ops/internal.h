@@ -104,6 +104,8 @@ enum qb_status hidden_take(struct txn *t, struct campaign *c, const struct ops_c
                            struct ops_reply *reply, uint8_t commitment[static 64], struct qb_error *e) QB_MUST_USE;
 /* Enters every batch that is due by now; with flush, everything that is pending. */
 enum qb_status hidden_batches(struct txn *t, struct campaign *c, bool flush, struct qb_error *e) QB_MUST_USE;
+/* Fixes which hidden entries there are, so that none can be passed off as a filler later; part of the closing. */
+enum qb_status hidden_summary(struct txn *t, const struct campaign *c, struct qb_error *e) QB_MUST_USE;
 /* After a restart: when the last batch was entered. */
 enum qb_status hidden_batch_time_load(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 bool hidden_due(const struct ops *o, const struct campaign *c, int64_t now_ns);

@@ -90,7 +90,7 @@ static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, co
 	c->n = c->plan->custodians;
 	c->k = c->plan->custodians_needed;
 	c->attempt = c->sealing_attempt = 1;
-	c->canary_seq = c->sealing_seq = c->sealed_seq = c->closing_seq = NO_SEQ;
+	c->canary_seq = c->sealing_seq = c->sealed_seq = c->closing_seq = c->hidden_count = NO_SEQ;
 	for (int i = 0; st == QB_OK && i < c->n; i++) {
 		custodian_restart(&c->custodian[i]);
 		c->custodian[i].party = view_party_named(v, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
@@ -317,6 +317,9 @@ static void apply_opening(struct campaign *c, const struct wire_entry *en, const
 	if (strcmp(type, "closing") == 0) {
 		c->state = C_CLOSED;
 		c->closing_seq = (int64_t)leaf->seq;
+	} else if (strcmp(type, "hidden-summary") == 0) {
+		c->hidden_count = wire_entry_int(en, "count");
+		wire_entry_hex(en, "commitments_hash", c->hidden_hash, 64);
 	} else if (strcmp(type, "opening-request") == 0) {
 		struct opening op = {.scope = SCOPE_FULL, .seq = (int64_t)leaf->seq};
 		memcpy(op.id, leaf_hash, 16);

@@ -141,6 +141,15 @@ enum qb_status campaign_certified_group(const struct campaign *c, struct custody
 	return st;
 }
 
+void view_hidden_summary(const uint8_t (*commitments)[64], size_t n, uint8_t out[static 64])
+{
+	struct transcript t;
+	transcript_begin(&t, "quietbell/1/ledger/hidden-all");
+	for (size_t i = 0; i < n; i++)
+		transcript_field(&t, commitments[i], 64);
+	transcript_end(&t, out);
+}
+
 void campaign_controls(const struct campaign *c, struct states_hold **holds, struct states_stop **stops)
 {
 	*holds = QB_NEW_ARRAY(struct states_hold, (size_t)c->n_holds);

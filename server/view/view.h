@@ -89,6 +89,8 @@ struct campaign {
 	bool prekeys[STATES_MAX_STATIONS][RECIPE_PLACES];
 	int64_t sealing_seq, sealed_seq, closing_seq;
 	uint8_t sealer_key[32], service_commitment[64];
+	int64_t hidden_count; /* of the hidden-summary entry; NO_SEQ before it */
+	uint8_t hidden_hash[64];
 	int64_t n_slots;
 	struct slot_public *slot; /* owned; n_slots */
 	uint8_t seed_record_id[64];
@@ -147,6 +149,8 @@ const char *campaign_state_word(enum campaign_state s);
 /* The certificate verified from the deals, with all n signatures. Errors: QB_CRYPTO; QB_CONFLICT not certified yet. */
 enum qb_status campaign_certified_group(const struct campaign *c, struct custody_group *out,
                                         struct qb_error *e) QB_MUST_USE;
+/* T("quietbell/1/ledger/hidden-all", commitments): what a hidden-summary entry fixes; in the order of the ledger. */
+void view_hidden_summary(const uint8_t (*commitments)[64], size_t n, uint8_t out[static 64]);
 /* All holds and stops as drill/states.h wants them; the arrays are the caller's to free with qb_free. */
 void campaign_controls(const struct campaign *c, struct states_hold **holds, struct states_stop **stops);
 
