@@ -56,7 +56,7 @@ static enum qb_status check_role(struct ops *o, const struct ops_call *call, con
 	if (call->who != NULL && c != NULL && (role = campaign_role(c, call->who)) == ROLE_NONE)
 		return qb_fail(e, QB_REFUSED, NULL, NULL, "%s has no part in this campaign", call->who->name);
 	if ((r->roles & ROLE_BIT(role)) == 0)
-		return qb_fail(e, QB_REFUSED, NULL, NULL, "a %s may not do this", wire_role_word(role));
+		return qb_fail(e, QB_REFUSED, NULL, NULL, "the role '%s' may not do this", wire_role_word(role));
 	return QB_OK;
 }
 
