@@ -411,6 +411,46 @@ static void claims_are_claims(void **state)
 	drop_lists(lists);
 }
 
+/*
+ * SNR^2 falls as a parabola of width 0.3 in ln(mass) around a point between templates: middle and width of the
+ * quantiles are the parabola's, with the bank's spacing (uniform between templates) and 10 % for what the bank lacks.
+ */
+static void mass_follows_the_loudness_of_the_templates(void **state)
+{
+	(void)state;
+	enum { TEMPLATES = 7 };
+	const double step = 0.1, width = 0.3, off = 0.03, top = 400;
+	struct wave_source templates[TEMPLATES];
+	const struct scan_bank row = {TEMPLATES, templates};
+	struct scan_list lists[WAVE_MAX_STATIONS] = {{0}};
+	struct scan_candidate c = {.template = TEMPLATES / 2, .trigger = {3, 3, SCAN_NONE}};
+	struct scan_result r = {.n = 1, .candidate = &c};
+	const struct scan_claim_settings claim = {.pipeline = "amber", .far_ceiling_per_year = 1e12};
+	for (int i = 0; i < 2; i++)
+		lists[i] = (struct scan_list){TEMPLATES, TEMPLATES, QB_NEW_ARRAY(struct scan_trigger, TEMPLATES)};
+	for (int k = 0; k < TEMPLATES; k++) {
+		double x = (k - TEMPLATES / 2) * step, square = top - (x - off) * (x - off) / (width * width);
+		templates[k] = bank.templates[2];
+		templates[k].p[CB_PRIMARY_MASS] = 30 * exp(x);
+		templates[k].p[CB_SECONDARY_MASS] = 30 * exp(x);
+		for (int i = 0; i < 2; i++)
+			lists[i].trigger[k] = (struct scan_trigger){
+			    .t_s = 100 + 0.01 * i, .snr = sqrt(square * (i == 0 ? 0.64 : 0.36)), .template = k};
+		if (k == c.template)
+			c.network_snr = sqrt(square);
+	}
+	json_t *list = scan_claims(network, &row, lists, &r, &claim, START);
+	const json_t *one = json_array_get(list, 0);
+	double middle = source_chirp_mass_msun(&templates[TEMPLATES / 2]) * exp(off);
+	double sigma = sqrt(width * width + step * step / 12 + 0.1 * 0.1);
+	near_rel(quantile(one, "chirp_mass_msun", 2), middle, 1e-6);
+	near_rel(quantile(one, "chirp_mass_msun", 0), middle * exp(-1.6448536269514722 * sigma), 1e-6);
+	near_rel(quantile(one, "chirp_mass_msun", 4), middle * exp(1.6448536269514722 * sigma), 1e-6);
+	near_abs(quantile(one, "arrival_gps", 2), (double)START / 1e9 + 100.005, 2e-6);
+	json_decref(list);
+	drop_lists(lists);
+}
+
 /* ---- refusals ---- */
 
 static void bad_banks_are_refused_in_one_line(void **state)
@@ -475,6 +515,7 @@ int main(void)
 	    cmocka_unit_test(rate_falls_with_ranking),
 	    cmocka_unit_test(coincidence_ends_at_the_light_time),
 	    cmocka_unit_test(claims_are_claims),
+	    cmocka_unit_test(mass_follows_the_loudness_of_the_templates),
 	    cmocka_unit_test(bad_banks_are_refused_in_one_line),
 	    cmocka_unit_test(strain_that_does_not_suit_is_refused),
 	};
