@@ -198,7 +198,7 @@ static void background(const struct search *s, struct events *scratch, struct ev
 	}
 }
 
-/* Background as loud as the candidate, over the background's time; one more is added so that the rate is never 0. */
+/* Background as loud as the candidate, over its time. None as loud counts as one: a limit, and the rate is never 0. */
 static void rate(struct scan_result *r, const struct events *found, const struct events *noise)
 {
 	double floor = 0;
