@@ -178,8 +178,12 @@ static void reload(struct life *l, const char *config_path)
 	struct qb_error e = {0};
 	char line[900];
 	if (config_read(config_path, &fresh, &e) == QB_OK) {
-		__atomic_store_n(&l->log.least, (enum log_level)fresh.log_level, __ATOMIC_RELAXED);
+		/* The event is logged under the more talkative of the two levels, or a change to `error` would go
+		 * unsaid. */
+		enum log_level before = l->log.least, after = (enum log_level)fresh.log_level;
+		__atomic_store_n(&l->log.least, after < before ? after : before, __ATOMIC_RELAXED);
 		log_event(&l->log, LOG_INFO_, "reloaded", NULL);
+		__atomic_store_n(&l->log.least, after, __ATOMIC_RELAXED);
 	} else {
 		log_event(&l->log, LOG_ERROR_, "reload-failed", "reason", qb_error_line(&e, line, sizeof line), NULL);
 	}
