@@ -89,6 +89,21 @@ static enum qb_status run_list(struct cli_call *c)
 	return QB_OK;
 }
 
+/* A link between names that became known after the drafting: nothing is silenced, everybody sees it. */
+static void print_conflicts(struct cli_call *c, const struct campaign *k)
+{
+	for (int i = 0; i < k->plan->n_people; i++) {
+		const struct view_party *p = view_party_named(&c->follow.view, k->plan->person[i].name);
+		for (int j = 0; p != NULL && j < i; j++) {
+			const struct view_party *q = view_party_named(&c->follow.view, k->plan->person[j].name);
+			if (q != NULL && view_one_person(p, q))
+				cli_print(c, "conflict   %s (%s) and %s (%s) are one person\n", q->name,
+				          plan_duty_word(k->plan->person[j].duty), p->name,
+				          plan_duty_word(k->plan->person[i].duty));
+		}
+	}
+}
+
 static enum qb_status run_show(struct cli_call *c)
 {
 	json_t *doc;
@@ -103,7 +118,7 @@ static enum qb_status run_show(struct cli_call *c)
 	if (st == QB_OK && cli_wants_json(c)) {
 		cli_json(c, doc);
 	} else if (st == QB_OK) {
-		int reports = 0;
+		int reports = 0, witnessed = 0;
 		for (int64_t n = 0; n < k->n_slots; n++)
 			reports += __builtin_popcount(k->slot[n].reported);
 		cli_print(c, "campaign   %s (%s%s)\nstate      %s\n", k->name, plan_phase_word(k->plan->phase),
@@ -117,6 +132,11 @@ static enum qb_status run_show(struct cli_call *c)
 			cli_print(c, " %s", k->custodian[i].party->name);
 		cli_print(c, "\nattempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
 		          (unsigned long long)k->sealing_attempt);
+		for (int i = 0; i < k->plan->network->n_stations; i++)
+			witnessed += k->witness_seq[i] != NO_SEQ;
+		cli_print(c, "witnesses  %d of %d stations signed their witness channels\n", witnessed,
+		          k->plan->network->n_stations);
+		print_conflicts(c, k);
 		cli_print(c, "operations %d holds, %d stops, %d play reports\n", k->n_holds, k->n_stops, reports);
 	}
 	json_decref(doc);
@@ -193,6 +213,13 @@ static const struct cli_option keygen_options[] = {
     {"rehearsal-seed", "N", false, "a fixed contribution, for reproducible rehearsals"},
     {NULL, NULL, false, NULL}};
 
+static const struct cli_option witness_options[] = {
+    {"station", "S", true, "the station; the channels of the plan are taken"},
+    {"also", "NAMES", false, "further channels that were found, readable by people on site"},
+    {"also-masked", "NAMES", false, "further channels that were found and are masked now"},
+    {"reason", "TEXT", true, "how the station was looked at, for the ledger"},
+    {NULL, NULL, false, NULL}};
+
 const struct cli_verb cli_campaign_verbs[] = {
     {"campaign", "draft", "PLAN", run_draft, draft_options, "drafts a campaign from a plan",
      "quietbell campaign draft plan.yaml"},
@@ -201,6 +228,9 @@ const struct cli_verb cli_campaign_verbs[] = {
      "quietbell campaign show fells-spring"},
     {"campaign", "keygen", "CAMPAIGN", cli_keygen, keygen_options,
      "a custodian's part: deal, certify, rehearse, contribute", "quietbell campaign keygen fells-spring --wait"},
+    {"campaign", "witness", "CAMPAIGN", cli_witness, witness_options,
+     "signs what could tell live from null at a station (operator, driver)",
+     "quietbell campaign witness fells-spring --station tarn --reason 'walked the racks'"},
     {"campaign", "seal", "CAMPAIGN", run_seal, reason_options, "draws and seals every slot (administrator)",
      "quietbell campaign seal fells-spring"},
     {"campaign", "close", "CAMPAIGN", run_close, reason_options, "closes the analysis (reviewer)",

@@ -8,6 +8,7 @@
 #include <unistd.h>
 
 #include "client/cli/internal.h"
+#include "client/cli/man.h"
 #include "server/base/alloc.h"
 #include "server/base/clock.h"
 #include "server/base/text.h"
@@ -289,6 +290,8 @@ int cli_main(int argc, char **argv)
 		status = argc < 2 ? 2 : 0;
 	} else if (strcmp(argv[1], "--version") == 0) {
 		printf("quietbell %s\n", VERSION);
+	} else if (strcmp(argv[1], "--man") == 0) {
+		cli_man();
 	} else if ((c->verb = find(argv[1], argc > 2 ? argv[2] : NULL, &known)) == NULL) {
 		if (known && argc > 2 && strcmp(argv[2], "--help") == 0) {
 			help_noun(argv[1]);

@@ -53,4 +53,7 @@ void cli_disconnect(struct cli_call *c);
 enum qb_status cli_post_entry(struct cli_call *c, const char *path, const char *type, const uint8_t *campaign,
                               const char *why, json_t *extra, json_t *more, json_t **out) QB_MUST_USE;
 
+/* The verb `campaign witness`. */
+enum qb_status cli_witness(struct cli_call *c) QB_MUST_USE;
+
 #endif

@@ -113,6 +113,52 @@ static enum qb_status run_change(struct cli_call *c)
 	return st;
 }
 
+/* Announces the staged keys; whether that was done before a crash, the ledger says. */
+static enum qb_status announce(struct cli_call *c, const struct party_key *fresh)
+{
+	struct party_public pub;
+	uint8_t statement[64], proof[SIGN_BYTES], id[KEY_ID_BYTES];
+	party_key_public(fresh, &pub);
+	sign_key_id(pub.sign, id);
+	const struct view_party *p = view_party_named(&c->follow.view, c->home.name);
+	if (p != NULL && memcmp(p->key_id, id, sizeof id) == 0)
+		return QB_OK;
+	view_rotation_statement(c->home.key_id, &pub, statement);
+	sign_bytes(fresh->seed, statement, sizeof statement, proof);
+	json_t *extra = json_object();
+	json_object_set_new(extra, "signing_key", json_hex_new(pub.sign, 32));
+	json_object_set_new(extra, "exchange_key", json_hex_new(pub.exchange, 32));
+	json_object_set_new(extra, "proof", json_hex_new(proof, SIGN_BYTES));
+	return cli_post_entry(c, "/v1/parties", "key-rotation", NULL, cli_option(c, "reason"), extra, NULL, NULL);
+}
+
+static enum qb_status run_rotate(struct cli_call *c)
+{
+	struct party_key fresh = {0};
+	enum qb_status st = cli_follow(c);
+	if (st == QB_OK)
+		st = home_keys_staged(&c->home, c->link.rehearsal, &fresh, &c->error);
+	if (st != QB_OK)
+		return st;
+	if (fresh.seed == NULL)
+		party_key_new(&fresh);
+	st = home_keys_stage(&c->home, &fresh, &c->error);
+	if (st == QB_OK)
+		st = announce(c, &fresh);
+	if (st == QB_OK)
+		st = home_keys_swap(&c->home, &c->error);
+	if (st == QB_OK) {
+		party_key_public(&fresh, &c->home.pub);
+		sign_key_id(c->home.pub.sign, c->home.key_id);
+		show(c);
+		cli_note(c, "The old keys are gone from this home; shares and receipts stay.\n");
+	}
+	party_key_free(&fresh);
+	return st;
+}
+
+static const struct cli_option rotate_options[] = {{"reason", "TEXT", true, "why, for the ledger"},
+                                                   {NULL, NULL, false, NULL}};
 static const struct cli_option new_options[] = {
     {"name", "NAME", true, "the party's name, as it will stand in the plan"},
     {"rehearsal", NULL, false, "a quick key file, accepted under a rehearsal clock only"},
@@ -128,4 +174,6 @@ const struct cli_verb cli_key_verbs[] = {
     {"key", "show", "", run_show, NULL, "shows name, key id and fingerprint", "quietbell key show"},
     {"key", "change-passphrase", "", run_change, change_options, "encrypts the key file under a new passphrase",
      "quietbell key change-passphrase"},
+    {"key", "rotate", "", run_rotate, rotate_options, "replaces this party's keys; the old ones sign it",
+     "quietbell key rotate --reason 'yearly'"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

@@ -120,6 +120,40 @@ static enum qb_status read_service(struct home *h, struct qb_error *e)
 	return st;
 }
 
+static enum qb_status write_public(const struct home *h, const char *file, const char *name,
+                                   const struct party_key *key, struct qb_error *e)
+{
+	struct party_public pub;
+	party_key_public(key, &pub);
+	json_t *doc = json_object();
+	json_object_set_new(doc, "name", json_string(name));
+	json_object_set_new(doc, "signing_key", json_hex_new(pub.sign, 32));
+	json_object_set_new(doc, "exchange_key", json_hex_new(pub.exchange, 32));
+	enum qb_status st = write_json(h, file, doc, e);
+	json_decref(doc);
+	return st;
+}
+
+static enum qb_status move(const struct home *h, const char *from, const char *to, struct qb_error *e)
+{
+	char *a = home_path(h, from), *b = home_path(h, to);
+	enum qb_status st = QB_OK;
+	if (access(a, F_OK) == 0 && rename(a, b) != 0)
+		st = qb_fail(e, QB_IO, b, NULL, "can't be replaced: %s", strerror(errno));
+	qb_free(a);
+	qb_free(b);
+	return st;
+}
+
+/* A swap that was cut off between its two files is finished before anything reads them. */
+static enum qb_status finish_swap(const struct home *h, struct qb_error *e)
+{
+	char *next = home_path(h, "key-next.qbk");
+	bool pending = access(next, F_OK) == 0;
+	qb_free(next);
+	return pending ? QB_OK : move(h, "key-next.pub", "key.pub", e);
+}
+
 enum qb_status home_open(const char *dir, bool create, struct home *out, struct qb_error *e)
 {
 	*out = (struct home){0};
@@ -140,6 +174,8 @@ enum qb_status home_open(const char *dir, bool create, struct home *out, struct 
 		st = make_private(out->dir, e);
 	if (st == QB_OK)
 		st = check_private(out->dir, e);
+	if (st == QB_OK)
+		st = finish_swap(out, e);
 	if (st == QB_OK)
 		st = read_public(out, e);
 	if (st == QB_OK)
@@ -253,7 +289,6 @@ enum qb_status home_unlock(struct home *h, const char *passphrase_file, bool reh
 enum qb_status home_key_new(struct home *h, const char *name, const struct party_key *key, enum keyfile_level level,
                             struct qb_error *e)
 {
-	struct party_public pub;
 	char *path = home_path(h, "key.qbk");
 	enum qb_status st = QB_OK;
 	if (access(path, F_OK) == 0 || h->has_key)
@@ -261,19 +296,46 @@ enum qb_status home_key_new(struct home *h, const char *name, const struct party
 		             "there is a key already, and it is never overwritten");
 	if (st == QB_OK)
 		st = keyfile_write_party(path, level, h->passphrase, key, e);
-	if (st == QB_OK) {
-		party_key_public(key, &pub);
-		json_t *doc = json_object();
-		json_object_set_new(doc, "name", json_string(name));
-		json_object_set_new(doc, "signing_key", json_hex_new(pub.sign, 32));
-		json_object_set_new(doc, "exchange_key", json_hex_new(pub.exchange, 32));
-		st = write_json(h, "key.pub", doc, e);
-		json_decref(doc);
-	}
+	if (st == QB_OK)
+		st = write_public(h, "key.pub", name, key, e);
 	if (st == QB_OK)
 		st = read_public(h, e);
 	qb_free(path);
 	return st;
+}
+
+enum qb_status home_keys_stage(struct home *h, const struct party_key *key, struct qb_error *e)
+{
+	char *old = home_path(h, "key.qbk"), *next = home_path(h, "key-next.qbk");
+	struct keyfile_info info = {0};
+	struct buf b = {0};
+	enum qb_status st = file_read(old, 1 << 16, &b, e);
+	if (st == QB_OK)
+		st = keyfile_inspect(b.data, b.len, &info, e);
+	if (st == QB_OK)
+		st = keyfile_write_party(next, info.level, h->passphrase, key, e);
+	if (st == QB_OK)
+		st = write_public(h, "key-next.pub", h->name, key, e);
+	buf_free(&b);
+	qb_free(old);
+	qb_free(next);
+	return st;
+}
+
+enum qb_status home_keys_staged(struct home *h, bool rehearsal, struct party_key *out, struct qb_error *e)
+{
+	char *next = home_path(h, "key-next.qbk");
+	*out = (struct party_key){0};
+	enum qb_status st =
+	    access(next, F_OK) == 0 ? keyfile_read_party(next, h->passphrase, rehearsal, out, e) : QB_OK;
+	qb_free(next);
+	return st;
+}
+
+enum qb_status home_keys_swap(struct home *h, struct qb_error *e)
+{
+	enum qb_status st = move(h, "key-next.qbk", "key.qbk", e);
+	return st == QB_OK ? move(h, "key-next.pub", "key.pub", e) : st;
 }
 
 enum qb_status home_pin(struct home *h, const char *url, const uint8_t key[static SIGN_PUBLIC], struct qb_error *e)

@@ -51,6 +51,16 @@ enum qb_status home_unlock(struct home *h, const char *passphrase_file, bool reh
 /* Writes key.qbk and key.pub (never over existing ones) with the passphrase set before. */
 enum qb_status home_key_new(struct home *h, const char *name, const struct party_key *key, enum keyfile_level level,
                             struct qb_error *e) QB_MUST_USE;
+/*
+ * Replacing the party's keys, so that a crash at any point leaves the old or the new ones whole: the new ones are
+ * staged (key-next.qbk, key-next.pub), announced to the service by the caller, and then take the place of the old ones,
+ * which are gone after that.
+ *
+ * home_keys_staged: *out is empty when none are. home_keys_swap renames.
+ */
+enum qb_status home_keys_stage(struct home *h, const struct party_key *key, struct qb_error *e) QB_MUST_USE;
+enum qb_status home_keys_staged(struct home *h, bool rehearsal, struct party_key *out, struct qb_error *e) QB_MUST_USE;
+enum qb_status home_keys_swap(struct home *h, struct qb_error *e) QB_MUST_USE;
 /* Pins a service: url and key. QB_CRYPTO when another key is pinned already. */
 enum qb_status home_pin(struct home *h, const char *url, const uint8_t key[static SIGN_PUBLIC],
                         struct qb_error *e) QB_MUST_USE;

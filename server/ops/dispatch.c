@@ -23,6 +23,7 @@ static use_case *const cases[R_COUNT] = {
     [R_STOPS] = case_stop,
     [R_STOP_LIFT] = case_stop_lift,
     [R_SEGMENTS] = case_segments,
+    [R_WITNESSES] = case_witness,
     [R_PREKEYS] = case_prekeys,
     [R_RECIPE] = case_recipe,
     [R_RECIPE_KEY] = case_recipe_key,

@@ -227,9 +227,18 @@ enum qb_status case_opening_request(struct ops *o, struct campaign *c, const str
 
 /* ---- seeing ---- */
 
+/* The asker may have replaced his keys since. */
+static bool asked_by(const struct opening *op, const struct view_party *who)
+{
+	bool same = memcmp(op->asker, who->key_id, 16) == 0;
+	for (int i = 0; i < who->n_past; i++)
+		same = same || memcmp(op->asker, who->past[i].key_id, 16) == 0;
+	return same;
+}
+
 static bool may_see(const struct campaign *c, const struct opening *op, const struct view_party *who)
 {
-	return op->scope == SCOPE_FULL || custodian_index(c, who->name) >= 0 || memcmp(op->asker, who->key_id, 16) == 0;
+	return op->scope == SCOPE_FULL || custodian_index(c, who->name) >= 0 || asked_by(op, who);
 }
 
 enum qb_status opening_add_name(void *state, const char *name, const uint8_t *p, size_t n, struct qb_error *e)
@@ -343,7 +352,7 @@ enum qb_status case_opening(struct ops *o, struct campaign *c, const struct ops_
 		st = openable(o, c, op, add_record, &l, e);
 	if (st == QB_OK)
 		st = store_boxes(o->store, c->id, op->id, call->who->name, add_box, boxes, e);
-	if (st == QB_OK && memcmp(op->asker, call->who->key_id, 16) == 0)
+	if (st == QB_OK && asked_by(op, call->who))
 		st = store_boxes(o->store, c->id, op->id, TO_ASKER, add_box, answers, e);
 	json_object_set_new(j, "records", l.list);
 	json_object_set_new(j, "boxes", boxes);

@@ -359,7 +359,7 @@ enum qb_status ops_party_by_key(struct ops *o, const uint8_t key_id[static 16], 
                                 struct qb_error *e)
 {
 	pthread_mutex_lock(&o->lock);
-	const struct view_party *p = view_party_by_id(&o->view, key_id);
+	const struct view_party *p = view_party_acting(&o->view, key_id);
 	if (p != NULL)
 		*out = *p;
 	pthread_mutex_unlock(&o->lock);

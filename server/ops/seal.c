@@ -428,6 +428,11 @@ static enum qb_status may_seal(const struct campaign *c, struct ops *o, struct q
 			               "the driver of %s has left no one-time keys",
 			               c->plan->network->stations[i].name);
 	}
+	int unsigned_station = campaign_witness_missing(c);
+	if (c->plan->phase == PLAN_OBSERVING && unsigned_station >= 0)
+		return qb_fail(e, QB_CONFLICT, "seal", "let its operator run quietbell campaign witness",
+		               "nobody has signed the witness channels of %s",
+		               c->plan->network->stations[unsigned_station].name);
 	if (now_locked(o) >= slots_freeze(&c->plan->slots, 0))
 		return qb_fail(e, QB_CONFLICT, "seal", NULL, "the stretch has begun already");
 	return QB_OK;

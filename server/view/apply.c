@@ -8,6 +8,7 @@
 #include "server/base/alloc.h"
 #include "server/base/check.h"
 #include "server/base/text.h"
+#include "server/view/people.h"
 #include "server/view/view.h"
 
 struct fetch_state {
@@ -23,19 +24,6 @@ static enum qb_status fetch_file(void *state, const char *name, struct buf *out,
 		               "is not with the plan");
 	buf_text(out, text);
 	return QB_OK;
-}
-
-static void apply_party(struct view *v, const struct wire_entry *en, const struct entry *leaf)
-{
-	struct view_party *p = QB_NEW(struct view_party);
-	(void)snprintf(p->name, sizeof p->name, "%s", wire_entry_text(en, "name"));
-	CHECK(wire_role_parse(wire_entry_text(en, "role"), &p->role));
-	wire_entry_hex(en, "signing_key", p->signing_key, 32);
-	wire_entry_hex(en, "exchange_key", p->exchange_key, 32);
-	sign_key_id(p->signing_key, p->key_id);
-	v->party = qb_realloc(v->party, (size_t)v->n_parties + 1, sizeof *v->party);
-	p->seq = (int64_t)leaf->seq;
-	v->party[v->n_parties++] = p;
 }
 
 static void apply_start(struct view *v, const struct wire_entry *en)
@@ -108,6 +96,8 @@ static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, co
 	c->slot = QB_NEW_ARRAY(struct slot_public, (size_t)c->n_slots);
 	for (int64_t i = 0; i < c->n_slots; i++)
 		c->slot[i].freeze_seq = NO_SEQ;
+	for (int i = 0; i < STATES_MAX_STATIONS; i++)
+		c->witness_seq[i] = NO_SEQ;
 	v->campaign = qb_realloc(v->campaign, (size_t)v->n_campaigns + 1, sizeof *v->campaign);
 	v->campaign[v->n_campaigns++] = c;
 	return QB_OK;
@@ -249,6 +239,11 @@ static void apply_control(struct campaign *c, const struct wire_entry *en, const
 {
 	const char *type = en->type->type;
 	int64_t at = leaf->received_gps_ns;
+	if (strcmp(type, "witness-statement") == 0) {
+		int s = plan_station(c->plan, wire_entry_text(en, "station"));
+		if (s >= 0)
+			c->witness_seq[s] = (int64_t)leaf->seq;
+	}
 	if (strcmp(type, "hold") == 0) {
 		c->hold = qb_realloc(c->hold, (size_t)c->n_holds + 1, sizeof *c->hold);
 		c->hold[c->n_holds++] =
@@ -371,8 +366,8 @@ enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_
 		return st;
 	if (strcmp(en.type->type, "service-start") == 0)
 		apply_start(v, &en);
-	else if (strcmp(en.type->type, "enrolment") == 0)
-		apply_party(v, &en, leaf);
+	else if (view_apply_people(v, &en, leaf))
+		st = QB_OK;
 	else if (strcmp(en.type->type, "plan") == 0)
 		st = apply_plan(v, &en, leaf, e);
 	else if (en.has_campaign)

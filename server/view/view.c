@@ -27,15 +27,6 @@ const struct view_party *view_party_named(const struct view *v, const char *name
 	return NULL;
 }
 
-const struct view_party *view_party_by_id(const struct view *v, const uint8_t key_id[static 16])
-{
-	for (int i = 0; i < v->n_parties; i++) {
-		if (memcmp(v->party[i]->key_id, key_id, 16) == 0)
-			return v->party[i];
-	}
-	return NULL;
-}
-
 int custodian_index(const struct campaign *c, const char *name)
 {
 	for (int i = 0; i < c->n; i++) {
@@ -80,6 +71,16 @@ enum wire_role campaign_role(const struct campaign *c, const struct view_party *
 	return p->role;
 }
 
+int campaign_witness_missing(const struct campaign *c)
+{
+	for (int i = 0; i < c->plan->n_witnesses; i++) {
+		int s = plan_station(c->plan, c->plan->witness[i].station);
+		if (s >= 0 && c->witness_seq[s] == NO_SEQ)
+			return s;
+	}
+	return -1;
+}
+
 const char *campaign_state_word(enum campaign_state s)
 {
 	static const char *const words[] = {"drafted", "certified", "rehearsed", "sealing",
@@ -91,7 +92,7 @@ enum qb_status view_author_key(const struct view *v, const struct entry *leaf, u
                                struct qb_error *e)
 {
 	struct wire_entry en;
-	const struct view_party *p = view_party_by_id(v, leaf->author);
+	const struct view_party *p = view_party_acting(v, leaf->author);
 	if (v->started && memcmp(leaf->author, v->service_id, 16) == 0) {
 		memcpy(key, v->service_key, 32);
 		return QB_OK;

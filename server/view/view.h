@@ -17,11 +17,29 @@
 
 #define NO_SEQ (-1)
 
+#define VIEW_KEYS_MAX    8 /* former keys of one party */
+#define VIEW_VOUCHES     2 /* colleagues who must vouch before keys that replace lost ones count */
+#define VIEW_VOUCHES_MAX 8
+
+struct view_key {
+	uint8_t key_id[16], signing_key[32], exchange_key[32];
+	int64_t seq; /* of the entry that brought it */
+};
 struct view_party {
 	char name[64];
 	enum wire_role role; /* as enrolled */
 	uint8_t key_id[16], signing_key[32], exchange_key[32];
-	int64_t seq; /* of the enrolment */
+	int64_t seq;     /* of the first enrolment */
+	int64_t key_seq; /* of the entry from which the present keys count */
+	char person[64]; /* who it is; the party's own name unless a same-person entry says otherwise */
+	bool retired;
+	int64_t retired_seq;
+	struct view_key past[VIEW_KEYS_MAX]; /* former keys: what they signed in their time stays valid */
+	int n_past;
+	bool has_pending; /* new keys, enrolled with a second invitation, wait for VIEW_VOUCHES vouches */
+	struct view_key pending;
+	char voucher[VIEW_VOUCHES_MAX][64];
+	int n_vouchers;
 };
 
 enum campaign_state { C_DRAFTED, C_CERTIFIED, C_REHEARSED, C_SEALING, C_SEALED, C_CLOSED, C_OPENED };
@@ -94,7 +112,8 @@ struct campaign {
 	int64_t n_slots;
 	struct slot_public *slot; /* owned; n_slots */
 	uint8_t seed_record_id[64];
-	int64_t next_freeze; /* first slot without a freeze entry */
+	int64_t next_freeze;                      /* first slot without a freeze entry */
+	int64_t witness_seq[STATES_MAX_STATIONS]; /* newest witness statement; NO_SEQ: none */
 	struct hold *hold;
 	int n_holds;
 	struct stop *stop;
@@ -139,12 +158,37 @@ enum qb_status view_author_key(const struct view *v, const struct entry *leaf, u
 
 struct campaign *view_campaign(const struct view *v, const char *name_or_id);
 const struct view_party *view_party_named(const struct view *v, const char *name);
+/* By a present or former key. */
 const struct view_party *view_party_by_id(const struct view *v, const uint8_t key_id[static 16]);
+/* By the key that counts now; NULL also for a retired party: whose requests are taken. */
+const struct view_party *view_party_acting(const struct view *v, const uint8_t key_id[static 16]);
+/* The signing key with this id, present or former; NULL when nobody has or had it. */
+const uint8_t *view_signing_key(const struct view *v, const uint8_t key_id[static 16]);
+/* Two parties that are one person as far as the ledger says. */
+bool view_one_person(const struct view_party *a, const struct view_party *b);
+/*
+ * Whether a party may take a duty in a campaign, by its person's history: nobody who has another duty there, under any
+ * name. Errors: QB_REFUSED, with the name that stands against it.
+ */
+enum qb_status view_eligible(const struct view *v, const struct campaign *c, const char *name, enum plan_duty duty,
+                             struct qb_error *e) QB_MUST_USE;
+/* T("quietbell/1/party/rotation", old key id, new signing key, new exchange key): what the new key signs. */
+void view_rotation_statement(const uint8_t old_id[static 16], const struct party_public *fresh, uint8_t out[static 64]);
+/*
+ * Whether one party may vouch for the waiting keys of another: another person, once, who has a part in every campaign
+ * under way in which that party has one. Errors: QB_CONFLICT, QB_REFUSED
+ */
+enum qb_status view_may_vouch(const struct view *v, const char *by_name, const char *name,
+                              struct qb_error *e) QB_MUST_USE;
+/* A custodian whose keys are part of a key generation that is under way: they can't change now. */
+bool view_keys_in_use(const struct view *v, const struct view_party *p);
 int custodian_index(const struct campaign *c, const char *name); /* from 0, or -1 */
 int station_of_driver(const struct campaign *c, const char *name);
 struct opening *opening_find(struct campaign *c, const char *id_hex);
 /* The party's role in the campaign; ROLE_NONE when it has none. */
 enum wire_role campaign_role(const struct campaign *c, const struct view_party *p);
+/* The first station with witness channels in the plan that nobody has signed a statement for; -1 when there is none. */
+int campaign_witness_missing(const struct campaign *c);
 const char *campaign_state_word(enum campaign_state s);
 /* The certificate verified from the deals, with all n signatures. Errors: QB_CRYPTO; QB_CONFLICT not certified yet. */
 enum qb_status campaign_certified_group(const struct campaign *c, struct custody_group *out,

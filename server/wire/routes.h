@@ -30,6 +30,7 @@ enum wire_route_id {
 	R_STOPS,
 	R_STOP_LIFT,
 	R_SEGMENTS,
+	R_WITNESSES,
 	R_PREKEYS,
 	R_RECIPE,
 	R_RECIPE_KEY,
