@@ -18,7 +18,7 @@ enum qb_status filing_seal(const struct driver *d, enum record_type type, int64_
 {
 	const struct slots *sl = &d->campaign->plan->slots;
 	struct record_header h = {.type = type,
-	                          .epoch = (uint32_t)d->group.epoch,
+	                          .epoch = (uint32_t)d->group.seal_epoch,
 	                          .index = (uint64_t)slot * 256 + (uint64_t)d->station * 16 + (uint64_t)number,
 	                          .start_gps_ns = slots_start(sl, slot),
 	                          .duration_ns = (uint64_t)sl->slot_ns};

@@ -92,7 +92,7 @@ static enum qb_status send_sealed(struct cli_call *c, const struct campaign *k, 
                                   enum record_type type, const char *entry_type, int64_t sequence, const char *content,
                                   json_t *extra, const char *path, const char *label)
 {
-	struct record_header h = {.type = type, .epoch = (uint32_t)g->epoch, .index = (uint64_t)sequence};
+	struct record_header h = {.type = type, .epoch = (uint32_t)g->seal_epoch, .index = (uint64_t)sequence};
 	struct buf record = {0};
 	struct record rec;
 	uint8_t nonce[32];

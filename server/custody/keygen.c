@@ -25,17 +25,21 @@ static void context_hash(struct keygen_context *c)
 	transcript_end(&t, c->ctx);
 }
 
-static enum qb_status check_parties(const struct keygen_context *c, struct qb_error *e)
+enum qb_status keygen_parties_check(uint32_t n, uint32_t k, const struct party_public *party, struct qb_error *e)
 {
-	for (uint32_t j = 0; j < c->n; j++) {
+	if (n > CUSTODY_MAX || k < 2 || n < 3 || k > n - 1)
+		return qb_fail(e, QB_RANGE, "custodians", "at least 2 must be needed, and one may be absent",
+		               "%u needed of %u; accepted: 2 <= needed <= custodians - 1, at most %d custodians", k, n,
+		               CUSTODY_MAX);
+	for (uint32_t j = 0; j < n; j++) {
 		char who[40];
 		snprintf(who, sizeof who, "custodian %u", j + 1);
-		enum qb_status s = party_public_check(&c->party[j], who, e);
+		enum qb_status s = party_public_check(&party[j], who, e);
 		if (s != QB_OK)
 			return s;
 		for (uint32_t i = 0; i < j; i++)
-			if (memcmp(c->party[i].sign, c->party[j].sign, SIGN_PUBLIC) == 0 ||
-			    memcmp(c->party[i].exchange, c->party[j].exchange, POINT_BYTES) == 0)
+			if (memcmp(party[i].sign, party[j].sign, SIGN_PUBLIC) == 0 ||
+			    memcmp(party[i].exchange, party[j].exchange, POINT_BYTES) == 0)
 				return qb_fail(e, QB_CRYPTO, who, "every custodian needs keys of their own",
 				               "custodians %u and %u share a key", i + 1, j + 1);
 	}
@@ -47,10 +51,9 @@ enum qb_status keygen_context_init(struct keygen_context *out, const uint8_t cam
                                    const struct party_public *parties, struct qb_error *e)
 {
 	*out = (struct keygen_context){0};
-	if (n > CUSTODY_MAX || k < 2 || n < 3 || k > n - 1)
-		return qb_fail(e, QB_RANGE, "custodians", "at least 2 must be needed, and one may be absent",
-		               "%u needed of %u; accepted: 2 <= needed <= custodians - 1, at most %d custodians", k, n,
-		               CUSTODY_MAX);
+	enum qb_status s = keygen_parties_check(n, k, parties, e);
+	if (s != QB_OK)
+		return s;
 	if (epoch > UINT32_MAX)
 		return qb_fail(e, QB_RANGE, "custodians", NULL, "the epoch is too large");
 	memcpy(out->campaign, campaign, CAMPAIGN_ID_BYTES);
@@ -59,10 +62,8 @@ enum qb_status keygen_context_init(struct keygen_context *out, const uint8_t cam
 	out->n = n;
 	out->k = k;
 	memcpy(out->party, parties, n * sizeof *parties);
-	enum qb_status s = check_parties(out, e);
-	if (s == QB_OK)
-		context_hash(out);
-	return s;
+	context_hash(out);
+	return QB_OK;
 }
 
 static void transcript_of_deals(const struct keygen_context *c, const struct deal *deals,
@@ -98,7 +99,7 @@ static void second_generator(struct custody_group *g)
 	struct transcript t;
 	uint8_t wide[64];
 	transcript_begin(&t, "quietbell/1/record/second-generator");
-	transcript_field(&t, g->th, sizeof g->th);
+	transcript_field(&t, g->seal_th, sizeof g->seal_th);
 	transcript_end(&t, wide);
 	CHECK(group_from_hash(g->g2, wide));
 }
@@ -108,7 +109,7 @@ enum qb_status keygen_group(const struct keygen_context *c, const struct deal *d
 {
 	uint8_t sum[CUSTODY_MAX][POINT_BYTES];
 	*out = (struct custody_group){0};
-	struct custody_group g = {.epoch = c->epoch, .n = c->n, .k = c->k};
+	struct custody_group g = {.epoch = c->epoch, .seal_epoch = c->epoch, .n = c->n, .k = c->k};
 	for (uint32_t i = 0; i < c->n; i++) {
 		if (deals[i].from != i + 1)
 			return qb_fail(e, QB_CRYPTO, "all deals", NULL, "deal %u is from custodian %u", i + 1,
@@ -128,6 +129,7 @@ enum qb_status keygen_group(const struct keygen_context *c, const struct deal *d
 			return qb_fail(e, QB_CRYPTO, "all deals", "abandon this attempt and start the next",
 			               "the share of custodian %u vanishes", j + 1);
 	transcript_of_deals(c, deals, g.s, g.th);
+	memcpy(g.seal_th, g.th, sizeof g.seal_th);
 	second_generator(&g);
 	*out = g;
 	return QB_OK;
@@ -198,28 +200,35 @@ void keygen_certificate_encode(const struct custody_group *g, const uint8_t (*si
 		buf_put(out, signature[j], SIGN_BYTES);
 }
 
-enum qb_status keygen_certificate_verify(const struct keygen_context *c, const struct deal *deals, const uint8_t *p,
-                                         size_t n, struct custody_group *out, struct qb_error *e)
+enum qb_status keygen_certificate_check(const struct custody_group *g, const struct party_public *party,
+                                        const uint8_t *p, size_t n, struct qb_error *e)
 {
-	struct custody_group g;
-	*out = (struct custody_group){0};
-	size_t body = 12 + 64 + POINT_BYTES * (1 + (size_t)c->n);
-	if (n != body + (size_t)c->n * SIGN_BYTES || memcmp(p, magic, sizeof magic) != 0)
-		return qb_fail(e, QB_FORMAT, "certificate", NULL, "it is not a certificate of %u custodians", c->n);
-	enum qb_status s = keygen_group(c, deals, &g, e);
-	if (s != QB_OK)
-		return s;
+	size_t body = 12 + 64 + POINT_BYTES * (1 + (size_t)g->n);
+	if (n != body + (size_t)g->n * SIGN_BYTES || memcmp(p, magic, sizeof magic) != 0)
+		return qb_fail(e, QB_FORMAT, "certificate", NULL, "it is not a certificate of %u custodians", g->n);
 	struct buf expected = {0};
 	static const uint8_t none[CUSTODY_MAX][SIGN_BYTES];
-	keygen_certificate_encode(&g, none, &expected);
+	keygen_certificate_encode(g, none, &expected);
 	bool same = memcmp(p, expected.data, body) == 0;
 	buf_free(&expected);
 	if (!same)
 		return qb_fail(e, QB_CRYPTO, "certificate", "do not use this group key",
 		               "it does not say what the signed deals say");
-	for (uint32_t j = 0; j < c->n; j++)
-		if (!keygen_certificate_signed_by(&g, c->party[j].sign, p + body + (size_t)j * SIGN_BYTES))
+	for (uint32_t j = 0; j < g->n; j++)
+		if (!keygen_certificate_signed_by(g, party[j].sign, p + body + (size_t)j * SIGN_BYTES))
 			return qb_fail(e, QB_CRYPTO, "certificate", NULL, "custodian %u did not sign it", j + 1);
-	*out = g;
 	return QB_OK;
+}
+
+enum qb_status keygen_certificate_verify(const struct keygen_context *c, const struct deal *deals, const uint8_t *p,
+                                         size_t n, struct custody_group *out, struct qb_error *e)
+{
+	struct custody_group g;
+	*out = (struct custody_group){0};
+	enum qb_status s = keygen_group(c, deals, &g, e);
+	if (s == QB_OK)
+		s = keygen_certificate_check(&g, c->party, p, n, e);
+	if (s == QB_OK)
+		*out = g;
+	return s;
 }

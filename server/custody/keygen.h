@@ -22,14 +22,19 @@ struct keygen_context {
 	uint8_t ctx[64]; /* T(campaign, epoch, attempt, n, k, then signing key and exchange key of 1..n) */
 };
 
-/* The public outcome: enough to seal, to check and to combine. Obtained only through the functions below. */
+/*
+ * The public outcome: enough to seal, to check and to combine. Obtained only through the functions below and reshare.h.
+ * A resharing changes who holds shares (epoch, n, k, th, Y_j: certificates and partial openings are bound to these),
+ * never the key or what records are bound to (S, ctx, seal_epoch, seal_th, g2), so that every record stays what it was.
+ */
 struct custody_group {
 	uint8_t campaign[CAMPAIGN_ID_BYTES];
-	uint64_t epoch;
+	uint64_t epoch, seal_epoch;
 	uint32_t n, k;
-	uint8_t ctx[64], th[64];
+	uint8_t ctx[64]; /* of the key generation */
+	uint8_t th[64], seal_th[64];
 	uint8_t s[POINT_BYTES];              /* S, the group key */
-	uint8_t g2[POINT_BYTES];             /* second generator of this group, from th */
+	uint8_t g2[POINT_BYTES];             /* second generator of this group, from seal_th */
 	uint8_t y[CUSTODY_MAX][POINT_BYTES]; /* y[j-1] = Y_j = s_j G */
 };
 
@@ -45,6 +50,11 @@ struct deal;
 enum qb_status keygen_context_init(struct keygen_context *out, const uint8_t campaign[static CAMPAIGN_ID_BYTES],
                                    uint64_t epoch, uint64_t attempt, uint32_t n, uint32_t k,
                                    const struct party_public *parties, struct qb_error *e) QB_MUST_USE;
+
+/* The rules that every set of custodians must meet. Errors: QB_RANGE (n, k); QB_CRYPTO (a key, or two that share one).
+ */
+enum qb_status keygen_parties_check(uint32_t n, uint32_t k, const struct party_public *party,
+                                    struct qb_error *e) QB_MUST_USE;
 
 /*
  * Checks every deal as an outsider can and computes S, Y_j, th and the second generator.
@@ -75,6 +85,9 @@ bool keygen_certificate_signed_by(const struct custody_group *g, const uint8_t p
 /* "QBC1" | n u32 | k u32 | th 64 | S 32 | Y_1..Y_n 32 each | signatures of 1..n, 64 each; signature[j-1] is custodian
  * j's */
 void keygen_certificate_encode(const struct custody_group *g, const uint8_t (*signature)[SIGN_BYTES], struct buf *out);
+/* QB_FORMAT, QB_CRYPTO unless p says what g says and bears the signatures of party[0..n-1]. */
+enum qb_status keygen_certificate_check(const struct custody_group *g, const struct party_public *party,
+                                        const uint8_t *p, size_t n, struct qb_error *e) QB_MUST_USE;
 
 /*
  * What a sealer, analyst, custodian or outside auditor runs before using S: everything is recomputed from the signed

@@ -107,7 +107,7 @@ static void challenge(const void *state, const uint8_t a1[static POINT_BYTES], c
 	const struct statement *s = state;
 	struct transcript t;
 	transcript_begin(&t, "quietbell/1/record/proof");
-	transcript_field(&t, s->g->th, sizeof s->g->th);
+	transcript_field(&t, s->g->seal_th, sizeof s->g->seal_th);
 	transcript_field(&t, s->g->s, sizeof s->g->s);
 	transcript_field(&t, s->header, RECORD_HEADER_BYTES);
 	transcript_field(&t, s->h_ct, sizeof s->h_ct);
@@ -126,7 +126,7 @@ static void nonce_derived(const struct statement *s, const uint8_t r[static SCAL
 	struct transcript t;
 	transcript_begin(&t, "quietbell/1/nonce/record");
 	transcript_field(&t, r, SCALAR_BYTES);
-	transcript_field(&t, s->g->th, sizeof s->g->th);
+	transcript_field(&t, s->g->seal_th, sizeof s->g->seal_th);
 	transcript_field(&t, s->g->s, sizeof s->g->s);
 	transcript_field(&t, s->header, RECORD_HEADER_BYTES);
 	transcript_field(&t, s->h_ct, sizeof s->h_ct);
@@ -139,7 +139,7 @@ static void nonce_hedged(const struct statement *s, const uint8_t r[static SCALA
                          uint8_t w[static SCALAR_BYTES])
 {
 	uint8_t statement[2 * 64 + RECORD_HEADER_BYTES + 3 * POINT_BYTES], *at = statement;
-	at = (uint8_t *)memcpy(at, s->g->th, 64) + 64;
+	at = (uint8_t *)memcpy(at, s->g->seal_th, 64) + 64;
 	at = (uint8_t *)memcpy(at, s->g->s, POINT_BYTES) + POINT_BYTES;
 	at = (uint8_t *)memcpy(at, s->header, RECORD_HEADER_BYTES) + RECORD_HEADER_BYTES;
 	at = (uint8_t *)memcpy(at, s->h_ct, 64) + 64;
@@ -152,7 +152,7 @@ static void record_key(const struct custody_group *g, const uint8_t *header, con
                        const uint8_t z[static POINT_BYTES], struct transcript *t)
 {
 	transcript_begin(t, "quietbell/1/record/key");
-	transcript_field(t, g->th, sizeof g->th);
+	transcript_field(t, g->seal_th, sizeof g->seal_th);
 	transcript_field(t, g->s, sizeof g->s);
 	transcript_field(t, header, RECORD_HEADER_BYTES);
 	transcript_field(t, r, POINT_BYTES);
@@ -168,7 +168,7 @@ static enum qb_status may_seal(const struct custody_group *g, const struct recor
 	if (n > capacity)
 		return qb_fail(e, QB_RANGE, "sealed record", "shorten the content or move it to an attachment",
 		               "a %s holds %zu bytes, this one has %zu", record_type_word(h->type), capacity, n);
-	if (memcmp(h->campaign, g->campaign, sizeof h->campaign) != 0 || h->epoch != g->epoch)
+	if (memcmp(h->campaign, g->campaign, sizeof h->campaign) != 0 || h->epoch != g->seal_epoch)
 		return qb_fail(e, QB_RANGE, "sealed record", NULL,
 		               "its header names another campaign or epoch than the key");
 	return QB_OK;
@@ -274,7 +274,7 @@ enum qb_status record_check(const struct custody_group *g, const uint8_t *p, siz
 	if (n != record_size(rec.header.type))
 		return qb_fail(e, QB_FORMAT, "sealed record", NULL, "a %s has %zu bytes, this one %zu",
 		               record_type_word(rec.header.type), record_size(rec.header.type), n);
-	if (memcmp(rec.header.campaign, g->campaign, sizeof g->campaign) != 0 || rec.header.epoch != g->epoch)
+	if (memcmp(rec.header.campaign, g->campaign, sizeof g->campaign) != 0 || rec.header.epoch != g->seal_epoch)
 		return qb_fail(e, QB_CRYPTO, "sealed record", NULL, "it belongs to another campaign or epoch");
 	split(p, n, &rec);
 	struct statement s = {.g = g, .header = p, .r = rec.r, .w = rec.w};

@@ -19,10 +19,11 @@ static inline void fixed_setup(void)
 	if (fixed.n != 0)
 		return;
 	CHECK(secret_setup(NULL) == QB_OK);
-	fixed.epoch = 1;
+	fixed.epoch = fixed.seal_epoch = 1;
 	fixed.n = 3;
 	fixed.k = 2;
 	memset(fixed.th, 0x55, sizeof fixed.th);
+	memset(fixed.seal_th, 0x55, sizeof fixed.seal_th);
 	group_scalar_from_u64(scalar, 7);
 	CHECK(group_mul_base(fixed.s, scalar) && group_from_hash(fixed.g2, wide));
 	for (uint64_t j = 1; j <= 3; j++) {

@@ -172,7 +172,7 @@ static void of_another_epoch_or_campaign(void **state)
 	(void)state;
 	struct record out;
 	struct custody_group g = s.g;
-	g.epoch++;
+	g.seal_epoch++;
 	assert_int_equal(record_check(&g, slot.data, slot.len, &out, NULL), QB_CRYPTO);
 	g = s.g;
 	g.campaign[0] ^= 1;

@@ -35,10 +35,11 @@ static int enter(void **state)
 	for (int j = 0; j < 4; j++)
 		memset(contribution[j], 0x40 + j, CONTRIBUTION_BYTES);
 	seed = seed_draw(context.ctx, 1, 0, (const uint8_t(*)[CONTRIBUTION_BYTES])contribution, 3);
-	group = (struct custody_group){.epoch = 5, .n = 3, .k = 2};
+	group = (struct custody_group){.epoch = 5, .seal_epoch = 5, .n = 3, .k = 2};
 	memcpy(group.campaign, campaign, sizeof campaign);
 	memcpy(group.ctx, context.ctx, sizeof group.ctx);
 	memset(group.th, 0x5a, sizeof group.th);
+	memset(group.seal_th, 0x5a, sizeof group.seal_th);
 	group_scalar_from_u64(scalar, 424242);
 	unhex(frozen_g2, group.g2, POINT_BYTES);
 	return group_mul_base(group.s, scalar) ? 0 : -1;

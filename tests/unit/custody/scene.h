@@ -73,7 +73,7 @@ static inline void scene_resign(struct scene *s, struct deal *d)
 static inline struct record_header scene_header(const struct scene *s, enum record_type type, uint64_t index)
 {
 	struct record_header h = {.type = type,
-	                          .epoch = (uint32_t)s->g.epoch,
+	                          .epoch = (uint32_t)s->g.seal_epoch,
 	                          .index = index,
 	                          .start_gps_ns = INT64_C(1488789012000000000),
 	                          .duration_ns = UINT64_C(3600000000000)};
