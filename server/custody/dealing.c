@@ -5,8 +5,8 @@
 #include <string.h>
 
 #include "server/base/check.h"
-#include "server/custody/aead.h"
 #include "server/custody/proof.h"
+#include "server/custody/sealed_share.h"
 
 static const struct {
 	char magic[5];
@@ -82,22 +82,11 @@ void deal_hash(const struct deal *d, uint8_t out[static 64])
 	transcript_end(&t, out);
 }
 
-#define SHARE_AD_BYTES 80
-
-/* Share key and associated data between d's sender and recipient `to`, from their common point z. */
-static void share_key(const struct dealing *g, const struct deal *d, uint32_t to, const uint8_t z[static POINT_BYTES],
-                      struct transcript *t, uint8_t ad[static SHARE_AD_BYTES])
+/* The way of the share in d from its sender to recipient `to`. */
+static struct sealed_share_route route(const struct dealing *g, const struct deal *d, uint32_t to)
 {
-	transcript_begin(t, kinds[g->kind].share_key);
-	transcript_field(t, g->ctx, 64);
-	transcript_u64(t, d->from);
-	transcript_u64(t, to);
-	transcript_field(t, d->ephemeral, POINT_BYTES);
-	transcript_field(t, g->to[to - 1].exchange, POINT_BYTES);
-	transcript_field(t, z, POINT_BYTES);
-	memcpy(ad, g->ctx, 64);
-	le64_store(ad + 64, d->from);
-	le64_store(ad + 72, to);
+	return (struct sealed_share_route){kinds[g->kind].share_key, g->ctx, d->from, to, d->ephemeral,
+	                                   g->to[to - 1].exchange};
 }
 
 /* Commitments to the polynomial and its proof of possession. */
@@ -121,15 +110,14 @@ static bool commit(struct deal *d, const uint8_t (*coef)[SCALAR_BYTES])
 static bool encrypt_shares(const struct dealing *g, struct deal *d, const uint8_t (*coef)[SCALAR_BYTES],
                            const uint8_t ephemeral[static SCALAR_BYTES])
 {
-	uint8_t z[POINT_BYTES], f[SCALAR_BYTES], ad[SHARE_AD_BYTES];
+	uint8_t z[POINT_BYTES], f[SCALAR_BYTES];
 	bool ok = true;
 	for (uint32_t to = 1; ok && to <= d->n; to++) {
-		struct transcript t;
+		struct sealed_share_route way = route(g, d, to);
 		ok = group_mul(z, ephemeral, g->to[to - 1].exchange);
 		group_poly_eval(f, coef, d->k, to);
 		ok = ok && group_scalar_ok(f);
-		share_key(g, d, to, z, &t, ad);
-		aead_seal(&t, ad, sizeof ad, f, sizeof f, d->share[to - 1]);
+		sealed_share_put(&way, z, f, d->share[to - 1]);
 	}
 	wipe(z, sizeof z);
 	wipe(f, sizeof f);
@@ -253,14 +241,13 @@ enum qb_status dealing_take_with(const struct dealing *g, const struct deal *d, 
                                  const uint8_t z[static POINT_BYTES], uint8_t share[static SCALAR_BYTES],
                                  struct qb_error *e)
 {
-	uint8_t ad[SHARE_AD_BYTES], expected[POINT_BYTES], got[POINT_BYTES];
-	struct transcript t;
+	uint8_t expected[POINT_BYTES], got[POINT_BYTES];
 	CHECK(to >= 1 && to <= g->n);
-	share_key(g, d, to, z, &t, ad);
-	if (!aead_open(&t, ad, sizeof ad, d->share[to - 1], DEAL_SHARE_BYTES, share))
-		return dealing_blame(d, "its encrypted share can't be decrypted", e);
-	if (!group_scalar_ok(share) || !group_mul_base(got, share) ||
-	    !group_poly_point(expected, d->commitment, d->k, to) || memcmp(got, expected, sizeof got) != 0) {
+	struct sealed_share_route way = route(g, d, to);
+	if (!sealed_share_get(&way, z, d->share[to - 1], share))
+		return dealing_blame(d, "its encrypted share does not decrypt to a scalar", e);
+	if (!group_mul_base(got, share) || !group_poly_point(expected, d->commitment, d->k, to) ||
+	    memcmp(got, expected, sizeof got) != 0) {
 		wipe(share, SCALAR_BYTES);
 		return dealing_blame(d, "its share does not fit its commitments", e);
 	}

@@ -10,8 +10,9 @@
 #include "server/base/err.h"
 #include "server/custody/group.h"
 #include "server/custody/party.h"
+#include "server/custody/sealed_share.h"
 
-#define DEAL_SHARE_BYTES (SCALAR_BYTES + 16)
+#define DEAL_SHARE_BYTES SEALED_SHARE_BYTES
 #define DEAL_BYTES_MAX   (16 + 64 + CUSTODY_MAX * (POINT_BYTES + DEAL_SHARE_BYTES) + 3 * 32 + 64)
 
 enum deal_kind { DEAL_KEYGEN, DEAL_RESHARE };

@@ -103,6 +103,12 @@ void group_scalar_add(uint8_t out[static SCALAR_BYTES], const uint8_t a[static S
 	crypto_core_ristretto255_scalar_add(out, a, b);
 }
 
+void group_scalar_sub(uint8_t out[static SCALAR_BYTES], const uint8_t a[static SCALAR_BYTES],
+                      const uint8_t b[static SCALAR_BYTES])
+{
+	crypto_core_ristretto255_scalar_sub(out, a, b);
+}
+
 void group_scalar_mul(uint8_t out[static SCALAR_BYTES], const uint8_t a[static SCALAR_BYTES],
                       const uint8_t b[static SCALAR_BYTES])
 {
@@ -135,7 +141,13 @@ bool group_poly_point(uint8_t out[static POINT_BYTES], const uint8_t (*commitmen
 
 bool group_lagrange(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which)
 {
-	uint8_t num[SCALAR_BYTES], den[SCALAR_BYTES], a[SCALAR_BYTES], b[SCALAR_BYTES];
+	return group_lagrange_at(out, index, n, which, 0);
+}
+
+bool group_lagrange_at(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which, uint32_t x)
+{
+	uint8_t num[SCALAR_BYTES], den[SCALAR_BYTES], at[SCALAR_BYTES], a[SCALAR_BYTES], b[SCALAR_BYTES];
+	group_scalar_from_u64(at, x);
 	CHECK(which < n);
 	group_scalar_from_u64(num, 1);
 	group_scalar_from_u64(den, 1);
@@ -146,8 +158,9 @@ bool group_lagrange(uint8_t out[static SCALAR_BYTES], const uint32_t *index, siz
 			continue;
 		group_scalar_from_u64(a, index[j]);
 		group_scalar_from_u64(b, index[which]);
+		group_scalar_sub(b, a, b);
+		group_scalar_sub(a, a, at);
 		group_scalar_mul(num, num, a);
-		crypto_core_ristretto255_scalar_sub(b, a, b);
 		group_scalar_mul(den, den, b);
 	}
 	if (crypto_core_ristretto255_scalar_invert(den, den) != 0)

@@ -36,6 +36,8 @@ void group_scalar_random(uint8_t out[static SCALAR_BYTES]); /* never zero */
 void group_scalar_from_u64(uint8_t out[static SCALAR_BYTES], uint64_t v);
 void group_scalar_add(uint8_t out[static SCALAR_BYTES], const uint8_t a[static SCALAR_BYTES],
                       const uint8_t b[static SCALAR_BYTES]);
+void group_scalar_sub(uint8_t out[static SCALAR_BYTES], const uint8_t a[static SCALAR_BYTES],
+                      const uint8_t b[static SCALAR_BYTES]);
 void group_scalar_mul(uint8_t out[static SCALAR_BYTES], const uint8_t a[static SCALAR_BYTES],
                       const uint8_t b[static SCALAR_BYTES]);
 
@@ -48,6 +50,9 @@ bool group_poly_point(uint8_t out[static POINT_BYTES], const uint8_t (*commitmen
  * False when an index is 0, too large or repeated.
  */
 bool group_lagrange(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which);
+
+/* The same at x instead of 0: the share with number x is the sum of these times the shares with the n numbers. */
+bool group_lagrange_at(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which, uint32_t x);
 
 /* A challenge or nonce: the transcript's end, reduced. */
 void group_challenge(struct transcript *t, uint8_t out[static SCALAR_BYTES]);
