@@ -331,6 +331,16 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 	return st;
 }
 
+static enum qb_status check_sealer(struct verified *v, struct qb_error *e)
+{
+	if (!v->k->plan->has_sealer_host)
+		return QB_OK;
+	if (!v->k->host_signed_key || !v->k->host_signed_output)
+		return no(e, v->k->host_signed_key ? "the plan's sealer host did not sign what was sealed"
+		                                   : "the plan's sealer host did not sign the sealer's key");
+	return QB_OK;
+}
+
 static const struct {
 	const char *property, *how;
 	check_fn *fn;
@@ -341,6 +351,7 @@ static const struct {
      check_head},
     {"the group key belongs to all custodians together", "recomputed from the signed deals, certified by all",
      check_certificate},
+    {"the sealer ran where the plan says", "signatures of the plan's sealer host, if it names one", check_sealer},
     {"no record was added, altered, exchanged or left out", "proof of each record, and its id in the ledger",
      check_records},
     {"hidden entries are what was promised at the time", "commitments, promises and authors' signatures", check_hidden},

@@ -5,6 +5,7 @@
 
 #include "client/cli/internal.h"
 #include "client/cli/keygen.h"
+#include "client/cli/seal_host.h"
 #include "client/cli/plan_file.h"
 #include "server/base/alloc.h"
 #include "server/base/clock.h"
@@ -171,15 +172,24 @@ static enum qb_status wait_sealed(struct cli_call *c, const struct campaign *k)
 	return st;
 }
 
+enum qb_status cli_seal_ask(struct cli_call *c, const struct campaign *k, bool remote)
+{
+	json_t *more = json_object();
+	char *path = text_printf("/v1/campaigns/%s/seal", k->name);
+	if (remote)
+		json_object_set_new(more, "remote", json_true());
+	enum qb_status st = cli_post_entry(c, path, "seal-request", k->id, cli_option(c, "reason"), NULL, more, NULL);
+	qb_free(path);
+	return st;
+}
+
 static enum qb_status run_seal(struct cli_call *c)
 {
 	struct campaign *k;
+	const char *host = cli_option(c, "on");
 	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
-	if (st != QB_OK)
-		return st;
-	char *path = text_printf("/v1/campaigns/%s/seal", k->name);
-	st = cli_post_entry(c, path, "seal-request", k->id, cli_option(c, "reason"), NULL, NULL, NULL);
-	qb_free(path);
+	if (st == QB_OK)
+		st = host != NULL ? cli_seal_relay(c, k, host) : cli_seal_ask(c, k, false);
 	if (st == QB_OK)
 		st = wait_sealed(c, k);
 	if (st == QB_OK)
@@ -213,6 +223,10 @@ static const struct cli_option keygen_options[] = {
     {"rehearsal-seed", "N", false, "a fixed contribution, for reproducible rehearsals"},
     {NULL, NULL, false, NULL}};
 
+static const struct cli_option seal_options[] = {
+    {"on", "HOST-FILE", false, "a sealer on another machine (YAML: address: HOST:PORT, or folder: DIR)"},
+    {"reason", "TEXT", false, "why, for the ledger"},
+    {NULL, NULL, false, NULL}};
 static const struct cli_option witness_options[] = {
     {"station", "S", true, "the station; the channels of the plan are taken"},
     {"also", "NAMES", false, "further channels that were found, readable by people on site"},
@@ -231,7 +245,7 @@ const struct cli_verb cli_campaign_verbs[] = {
     {"campaign", "witness", "CAMPAIGN", cli_witness, witness_options,
      "signs what could tell live from null at a station (operator, driver)",
      "quietbell campaign witness fells-spring --station tarn --reason 'walked the racks'"},
-    {"campaign", "seal", "CAMPAIGN", run_seal, reason_options, "draws and seals every slot (administrator)",
+    {"campaign", "seal", "CAMPAIGN", run_seal, seal_options, "draws and seals every slot (administrator)",
      "quietbell campaign seal fells-spring"},
     {"campaign", "close", "CAMPAIGN", run_close, reason_options, "closes the analysis (reviewer)",
      "quietbell campaign close fells-spring"},

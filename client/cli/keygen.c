@@ -274,6 +274,10 @@ static enum qb_status step_contribute(struct part *p)
 {
 	struct secret *s = NULL;
 	struct buf box = {0};
+	/* Whoever runs another sealer than the plan's would learn the draw from the contributions. */
+	if (p->k->plan->has_sealer_host && !p->k->host_signed_key)
+		return qb_fail(&p->c->error, QB_CRYPTO, "sealing", "do not contribute; tell the other custodians",
+		               "the sealer that waits is not signed by the plan's sealer host");
 	enum qb_status st = contribution(p, &s);
 	if (st == QB_OK)
 		st = box_seal(p->k->sealer_key, BOX_SEALER, p->k->context.ctx, 64, secret_view(s), CONTRIBUTION_BYTES,

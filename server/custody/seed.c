@@ -133,3 +133,35 @@ uint64_t seed_audit(const struct secret *seed)
 	transcript_end(&t, h);
 	return le64_load(h) & (UINT64_MAX >> 1);
 }
+
+void seal_key_statement(const uint8_t ctx[static 64], uint64_t sealing_attempt, const uint8_t point[static POINT_BYTES],
+                        uint8_t out[static 64])
+{
+	struct transcript t;
+	transcript_begin(&t, "quietbell/1/seal/key");
+	transcript_field(&t, ctx, 64);
+	transcript_u64(&t, sealing_attempt);
+	transcript_field(&t, point, POINT_BYTES);
+	transcript_end(&t, out);
+}
+
+void seal_output_begin(struct transcript *t, const uint8_t ctx[static 64], uint64_t sealing_attempt,
+                       const uint8_t point[static POINT_BYTES])
+{
+	transcript_begin(t, "quietbell/1/seal/output");
+	transcript_field(t, ctx, 64);
+	transcript_u64(t, sealing_attempt);
+	transcript_field(t, point, POINT_BYTES);
+}
+
+void seal_output_record(struct transcript *t, const uint8_t record_id[static 64], const uint8_t commitment[static 64])
+{
+	transcript_field(t, record_id, 64);
+	transcript_field(t, commitment, 64);
+}
+
+void seal_output_end(struct transcript *t, const uint8_t recipes_hash[static 64], uint8_t out[static 64])
+{
+	transcript_field(t, recipes_hash, 64);
+	transcript_end(t, out);
+}

@@ -37,6 +37,20 @@ void seed_record_scalar(const struct secret *seed, uint8_t r[static SCALAR_BYTES
  */
 double seed_uniform(const uint8_t truth[static TRUTH_SEED_BYTES], uint64_t m);
 
+/*
+ * What a sealer states about a run, for the host it runs on to sign: its key before anything is sent to it, and its
+ * output at the end.
+ *
+ * T("quietbell/1/seal/key", ctx, sealing attempt, sealer point) and T("quietbell/1/seal/output", ctx, sealing attempt,
+ * sealer point, then each record's id and slot-key commitment in their order, hash of all recipes).
+ */
+void seal_key_statement(const uint8_t ctx[static 64], uint64_t sealing_attempt, const uint8_t point[static POINT_BYTES],
+                        uint8_t out[static 64]);
+void seal_output_begin(struct transcript *t, const uint8_t ctx[static 64], uint64_t sealing_attempt,
+                       const uint8_t point[static POINT_BYTES]);
+void seal_output_record(struct transcript *t, const uint8_t record_id[static 64], const uint8_t commitment[static 64]);
+void seal_output_end(struct transcript *t, const uint8_t recipes_hash[static 64], uint8_t out[static 64]);
+
 /* T("quietbell/1/audit/seed", seed): first 8 bytes, little-endian, top bit cleared; public after the full opening. */
 uint64_t seed_audit(const struct secret *seed);
 

@@ -15,6 +15,7 @@
 #include "server/base/alloc.h"
 #include "server/base/check.h"
 #include "server/base/text.h"
+#include "server/daemon/child.h"
 #include "server/ops/ops.h"
 
 #define PEM_MAX_BYTES ((size_t)256 * 1024)
@@ -73,46 +74,6 @@ static void stop_ticking(struct life *l)
 	pthread_mutex_destroy(&l->lock);
 }
 
-/* Only calls that are safe between fork and exec in a program with threads. */
-_Noreturn static void become_sealer(int in, int out)
-{
-	char *const argv[] = {"quietbelld", "--sealer", NULL};
-	char *const no_environment[] = {NULL};
-	sigset_t none;
-	(void)sigemptyset(&none);
-	if (dup2(in, 0) == 0 && dup2(out, 1) == 1 && sigprocmask(SIG_SETMASK, &none, NULL) == 0)
-		(void)execve("/proc/self/exe", argv, no_environment);
-	_exit(70);
-}
-
-/* Whoever asked for it writes to *to_child, reads from *from_child and waits for *pid. */
-static bool spawn_sealer(void *state, int *to_child_fd, int *from_child_fd, pid_t *pid)
-{
-	struct life *l = state;
-	int to[2], from[2];
-	if (pipe2(to, O_CLOEXEC) != 0)
-		return false;
-	if (pipe2(from, O_CLOEXEC) != 0) {
-		(void)close(to[0]);
-		(void)close(to[1]);
-		return false;
-	}
-	*pid = fork();
-	if (*pid == 0)
-		become_sealer(to[0], from[1]);
-	(void)close(to[0]);
-	(void)close(from[1]);
-	if (*pid < 0) {
-		(void)close(to[1]);
-		(void)close(from[0]);
-		return false;
-	}
-	*to_child_fd = to[1];
-	*from_child_fd = from[0];
-	log_event(&l->log, LOG_INFO_, "sealer-started", NULL);
-	return true;
-}
-
 static enum qb_status start_ops(struct life *l, struct qb_error *e)
 {
 	struct ops_settings s = {
@@ -120,7 +81,7 @@ static enum qb_status start_ops(struct life *l, struct qb_error *e)
 	    .rehearsal_clock = l->config->clock == CONFIG_CLOCK_REHEARSAL,
 	    .rehearsal_seed = l->config->rehearsal_seed,
 	    .system = clock_system(),
-	    .spawner = {spawn_sealer, l},
+	    .spawner = {child_spawn, &l->log},
 	    .log = &l->log,
 	};
 	return ops_open(&s, &l->ops, e);

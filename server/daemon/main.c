@@ -9,12 +9,13 @@
 #include "server/daemon/guard.h"
 #include "server/daemon/life.h"
 #include "server/daemon/man.h"
+#include "server/daemon/sealer_host.h"
 #include "server/ops/ops.h"
 
 #define KEY_FILE_BYTES 4096
 
 struct options {
-	const char *config, *data, *admin, *clock;
+	const char *config, *data, *admin, *clock, *listen, *folder;
 };
 
 static enum qb_status run_service(const struct options *o, struct qb_error *e)
@@ -112,6 +113,24 @@ static int run_sealer(struct qb_error *e)
 	return st == QB_OK ? ops_sealer_main(0, 1) : qb_exit_status(st);
 }
 
+static enum qb_status run_host_init(const struct options *o, struct qb_error *e)
+{
+	enum qb_status st = guard_process(e);
+	if (st == QB_OK)
+		st = secret_setup(e);
+	return st == QB_OK ? sealer_host_init(o->data, e) : st;
+}
+
+static enum qb_status run_host(const struct options *o, struct qb_error *e)
+{
+	if ((o->listen != NULL) == (o->folder != NULL))
+		return qb_fail(e, QB_USAGE, NULL, "see quietbelld --help", "give --listen or --folder");
+	enum qb_status st = guard_process(e);
+	if (st == QB_OK)
+		st = secret_setup(e);
+	return st == QB_OK ? sealer_host_run(o->data, o->listen, o->folder, e) : st;
+}
+
 static enum qb_status run_man(const struct options *o, struct qb_error *e)
 {
 	struct buf b = {0};
@@ -149,6 +168,8 @@ static const struct {
     {"", run_service, true, false, false},
     {"init", run_init, false, true, true},
     {"check-config", run_check_config, true, false, false},
+    {"sealer-host-init", run_host_init, false, true, false},
+    {"sealer-host", run_host, false, true, false},
     {"--help", run_help, false, false, false},
     {"--version", run_version, false, false, false},
     {"--man", run_man, false, false, false},
@@ -159,7 +180,8 @@ static enum qb_status parse_options(int argc, char **argv, int first, struct opt
 	const struct {
 		const char *name;
 		const char **value;
-	} known[] = {{"--config", &o->config}, {"--data", &o->data}, {"--admin", &o->admin}, {"--clock", &o->clock}};
+	} known[] = {{"--config", &o->config}, {"--data", &o->data},     {"--admin", &o->admin},
+	             {"--clock", &o->clock},   {"--listen", &o->listen}, {"--folder", &o->folder}};
 	for (int i = first; i < argc; i += 2) {
 		bool found = false;
 		for (size_t k = 0; k < sizeof known / sizeof known[0]; k++) {
@@ -185,7 +207,8 @@ static enum qb_status run(int argc, char **argv, struct qb_error *e)
 		if (strcmp(verbs[i].verb, verb) != 0)
 			continue;
 		if ((o.config != NULL) != verbs[i].config || (o.data != NULL) != verbs[i].data ||
-		    (o.admin != NULL) != verbs[i].admin || (o.clock != NULL && !verbs[i].data))
+		    (o.admin != NULL) != verbs[i].admin || (o.clock != NULL && !verbs[i].admin) ||
+		    ((o.listen != NULL || o.folder != NULL) && verbs[i].run != run_host))
 			return qb_fail(e, QB_USAGE, NULL, "see quietbelld --help", "the options do not fit the verb");
 		return verbs[i].run(&o, e);
 	}

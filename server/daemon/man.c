@@ -11,6 +11,12 @@ static const struct man_verb verbs[] = {
      "the administrator's quietbell key new wrote. The clock is fixed for ever; system unless said."},
     {"check-config", "check-config --config FILE",
      "Checks FILE and the data directory and prints every value in force."},
+    {"sealer-host-init", "sealer-host-init --data DIR",
+     "Makes the signing key of a machine of its own for sealers, and prints the line sealer_host for the plan."},
+    {"sealer-host", "sealer-host --data DIR (--listen ADDRESS:PORT | --folder FOLDER)",
+     "Runs one sealer on this machine and ends: its messages pass over one connection, or as files in FOLDER, from and "
+     "to "
+     "quietbell campaign seal --on. Nothing in them is secret."},
     {"man", "--man", "Prints this manual page as roff."},
     {"help", "--help", "Prints the usage."},
     {"version", "--version", "Prints the version."},

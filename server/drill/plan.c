@@ -6,6 +6,7 @@
 #include <string.h>
 
 #include "server/base/alloc.h"
+#include "server/base/text.h"
 #include "server/base/check.h"
 #include "server/base/clock.h"
 #include "server/drill/plan_read.h"
@@ -193,9 +194,20 @@ static void read_bands(struct plan_reader *r, struct yaml_node *limits, struct d
 	}
 }
 
+static void read_sealer_host(struct plan_reader *r, struct yaml_node *root, struct drill_plan *plan)
+{
+	struct yaml_node *n = read_find(r, root, "sealer_host");
+	if (n == NULL)
+		return;
+	if (n->kind != YAML_SCALAR || strlen(n->text) != 64 || !hex_decode(plan->sealer_host, 32, n->text))
+		read_refuse(r, n, QB_FORMAT, "64 hexadecimal digits, from quietbelld sealer-host");
+	plan->has_sealer_host = true;
+}
+
 static void read_rules(struct plan_reader *r, struct yaml_node *root, struct drill_plan *plan)
 {
 	read_int_needed(r, root, "stations_needed", 1, WAVE_MAX_STATIONS, &plan->stations_needed);
+	read_sealer_host(r, root, plan);
 	plan->batch_ns = 600 * NS_PER_S;
 	read_duration(r, root, "batch", 1, 86400, &plan->batch_ns);
 	plan->acceptance_ns = 30 * 86400 * NS_PER_S;

@@ -116,6 +116,8 @@ struct drill_plan {
 	int n_families;
 	struct plan_family family[PLAN_MAX_FAMILIES];
 	int stations_needed;
+	bool has_sealer_host; /* the sealer runs on a machine of its own, whose signing key this is */
+	uint8_t sealer_host[32];
 	struct plan_alerts alerts;
 	int64_t batch_ns, acceptance_ns;
 	double hubble_km_per_s_per_mpc, matter_density;

@@ -241,6 +241,9 @@ static void check_blindness(struct plan_checker *c)
 
 static void check_alerts(struct plan_checker *c)
 {
+	if (c->plan->phase == PLAN_OBSERVING && !c->plan->has_sealer_host)
+		check_add(c, PLAN_WARNING, "sealer-host", check_node(c, NULL, NULL), "name one with sealer_host",
+		          "the sealer will run on the service's own machine, whose administrator could watch it");
 	const struct plan_alerts *a = &c->plan->alerts;
 	const struct yaml_node *at = check_node(c, NULL, "alerts", NULL);
 	if (c->plan->phase == PLAN_OBSERVING && !a->given)

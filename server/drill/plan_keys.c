@@ -51,6 +51,8 @@ static const struct plan_key keys[] = {
      "Any parameter of the family; a bound may name a parameter that stands above it."},
     {"stations_needed", "", "1 to the number of stations", REQUIRED,
      "A drill is played by all ready stations, or by none when fewer than this are ready."},
+    {"sealer_host", "", "64 hexadecimal digits", "the service's own machine",
+     "Signing key of the machine that the sealer runs on (quietbelld sealer-host); no other sealer is accepted then."},
     {"alerts.held_for_answer", "", "names", "none", "Which alerts wait for the answer to 'is this a drill?'."},
     {"alerts.partners_told", "", "true, false", "false", "Partners know that drills happen."},
     {"alerts.no_answer_after", "duration", "1 s to 7 d", "15 min", "When an unanswered question counts as unanswered."},

@@ -114,11 +114,12 @@ bool hidden_due(const struct ops *o, const struct campaign *c, int64_t now_ns);
 typedef enum qb_status use_case(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                                 struct qb_error *e);
 use_case case_service, case_parties_list, case_parties_post, case_campaigns_list, case_draft, case_campaign,
-    case_keygen, case_seal, case_sealer, case_contribution, case_rehearsal, case_records, case_slots, case_slot,
-    case_hold, case_hold_lift, case_stop, case_stop_lift, case_segments, case_witness, case_prekeys, case_recipe,
-    case_recipe_key, case_note, case_report, case_claim, case_claims_list, case_claim_withdraw, case_milestone,
-    case_close, case_sign, case_opening_request, case_openings_list, case_opening, case_opening_shares, case_bundle,
-    case_head, case_entries, case_inclusion, case_consistency, case_cosign, case_clock;
+    case_keygen, case_seal, case_sealer, case_sealer_collect, case_sealer_deliver, case_contribution, case_rehearsal,
+    case_records, case_slots, case_slot, case_hold, case_hold_lift, case_stop, case_stop_lift, case_segments,
+    case_witness, case_prekeys, case_recipe, case_recipe_key, case_note, case_report, case_claim, case_claims_list,
+    case_claim_withdraw, case_milestone, case_close, case_sign, case_opening_request, case_openings_list, case_opening,
+    case_opening_shares, case_bundle, case_head, case_entries, case_inclusion, case_consistency, case_cosign,
+    case_clock;
 
 /* ---- people.c ---- */
 /* The rules of entries about people that are enrolled: same-person, key-rotation, vouch, retirement. */

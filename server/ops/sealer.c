@@ -1,7 +1,7 @@
 /*
  * The sealer: a process of its own that draws and seals a campaign and exits. It has two pipes and nothing else. The
- * seed exists in its guarded memory only; what leaves it are sealed records, slot keys for the service to guard, and
- * wrapped recipes.
+ * seed exists in its guarded memory only; what leaves it are sealed records, slot keys boxed to the service's storage
+ * key, and wrapped recipes: nothing that whoever carries the messages could read.
  */
 #include <stdio.h>
 #include <string.h>
@@ -11,7 +11,8 @@
 #include "server/drill/draw.h"
 #include "server/drill/recipe.h"
 #include "server/ops/internal.h"
-#include "server/ops/sealer_pipe.h"
+#include "server/ops/seal_output.h"
+#include "server/wire/sealer_frame.h"
 
 struct sealer {
 	int in, out;
@@ -20,7 +21,8 @@ struct sealer {
 	struct custody_group group;
 	struct drill_plan *plan;
 	uint64_t attempt; /* sealing attempt */
-	uint8_t service_id[16];
+	uint8_t service_id[16], storage_point[POINT_BYTES];
+	uint8_t point[POINT_BYTES];   /* of this run's own key */
 	struct secret *exchange;      /* this run's own key */
 	struct secret *contributions; /* (n + 1) x 32, the service's first */
 	struct secret *seed;
@@ -125,6 +127,10 @@ static enum qb_status read_job(struct sealer *s, struct qb_error *e)
 	if (st == QB_OK)
 		st = json_hex(s->job, "service_id", "job", s->service_id, 16, e);
 	if (st == QB_OK)
+		st = json_hex(s->job, "storage_point", "job", s->storage_point, POINT_BYTES, e);
+	if (st == QB_OK && !group_point_ok(s->storage_point))
+		st = qb_fail(e, QB_CRYPTO, "job: storage_point", NULL, "is no valid point");
+	if (st == QB_OK)
 		st = json_str(s->job, "plan", "job", &plan, e);
 	if (st == QB_OK) {
 		s->attempt = (uint64_t)attempt;
@@ -154,7 +160,7 @@ static bool take_box(struct sealer *s, const struct buf *message, uint32_t *who)
 	struct cursor c = cursor_over(message->data, message->len);
 	struct buf content = {0};
 	*who = cursor_u32(&c);
-	bool good = !c.bad && *who >= 1 && *who <= s->context.n &&
+	bool good = !c.bad && *who <= s->context.n &&
 	            box_open(s->exchange, BOX_SEALER, s->context.ctx, 64, c.p, c.left, &content, NULL) == QB_OK &&
 	            content.len == CONTRIBUTION_BYTES;
 	if (good) {
@@ -169,26 +175,19 @@ static enum qb_status collect(struct sealer *s, struct qb_error *e)
 {
 	struct buf b = {0};
 	enum sealer_message type;
-	uint8_t point[POINT_BYTES], who_le[4];
+	uint8_t key[POINT_BYTES + 64], who_le[4];
 	enum qb_status st = QB_OK;
-	uint32_t missing = s->context.n, who;
+	uint32_t missing = s->context.n + 1, who;
 	bool seen[CUSTODY_MAX + 1] = {false};
 	s->exchange = secret_new(SCALAR_BYTES);
 	group_scalar_random(secret_bytes(s->exchange));
 	s->contributions = secret_new((s->context.n + 1) * (size_t)CONTRIBUTION_BYTES);
-	if (!sealer_read(s->in, &type, &b) || type != SEALER_SERVICE || b.len != CONTRIBUTION_BYTES)
-		st = qb_fail(e, QB_FORMAT, "sealer", NULL, "the service's contribution did not come");
-	if (st == QB_OK) {
-		memcpy(contribution_at(s, 0), b.data, CONTRIBUTION_BYTES);
-		if (!committed(s, 0))
-			st = qb_fail(e, QB_CRYPTO, "sealer", NULL,
-			             "the service's contribution is not the committed one");
-	}
-	if (st == QB_OK) {
-		if (!group_mul_base(point, secret_view(s->exchange)) ||
-		    !sealer_write(s->out, SEALER_KEY, point, sizeof point))
-			st = qb_fail(e, QB_IO, "sealer", NULL, "the service is gone");
-	}
+	if (!group_mul_base(s->point, secret_view(s->exchange)))
+		st = qb_fail(e, QB_FAULT, "sealer", NULL, "a key came out as the identity");
+	memcpy(key, s->point, POINT_BYTES);
+	seal_key_statement(s->context.ctx, s->attempt, s->point, key + POINT_BYTES);
+	if (st == QB_OK && !sealer_write(s->out, SEALER_KEY, key, sizeof key))
+		st = qb_fail(e, QB_IO, "sealer", NULL, "the service is gone");
 	while (st == QB_OK && missing > 0) {
 		if (!sealer_read(s->in, &type, &b) || type != SEALER_BOX) {
 			st = qb_fail(e, QB_IO, "sealer", NULL, "the service is gone");
@@ -204,7 +203,7 @@ static enum qb_status collect(struct sealer *s, struct qb_error *e)
 			missing--;
 		}
 	}
-	buf_wipe(&b);
+	buf_free(&b);
 	return st;
 }
 
@@ -251,7 +250,10 @@ static enum qb_status wrap_recipes(struct sealer *s, struct drill_truth *truth, 
 	return st;
 }
 
-/* slot i64 | slot key 32 | commitment 64 | record length u32, record | { station u8, place u8, length u32, recipe } */
+/*
+ * slot i64 | commitment 64 | key length u32, slot key boxed to the service | record length u32, record |
+ * { station u8, place u8, length u32, recipe }
+ */
 static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct buf *message, struct qb_error *e)
 {
 	struct variates v;
@@ -259,7 +261,7 @@ static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct 
 	struct drill_truth *truth = QB_NEW(struct drill_truth);
 	struct record_header h = {.type = RECORD_SLOT, .epoch = 1, .index = (uint64_t)n};
 	uint8_t key[SLOT_KEY_BYTES], commitment[64], r[SCALAR_BYTES];
-	struct buf content = {0}, record = {0}, recipes = {0};
+	struct buf content = {0}, record = {0}, recipes = {0}, boxed = {0};
 	seed_slot_truth(s->seed, (uint64_t)n, v.truth);
 	seed_slot_key(s->seed, (uint64_t)n, key);
 	seed_slot_scalar(s->seed, (uint64_t)n, r);
@@ -276,10 +278,13 @@ static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct 
 		st = truth_encode(truth, &content, e);
 	if (st == QB_OK)
 		st = record_seal_with(&s->group, &h, r, content.data, content.len, &record, e);
+	if (st == QB_OK)
+		st = slot_key_box(s->storage_point, s->context.campaign, n, key, &boxed, e);
 	if (st == QB_OK) {
 		buf_i64(message, n);
-		buf_put(message, key, sizeof key);
 		buf_put(message, commitment, sizeof commitment);
+		buf_u32(message, (uint32_t)boxed.len);
+		buf_put(message, boxed.data, boxed.len);
 		buf_u32(message, (uint32_t)record.len);
 		buf_put(message, record.data, record.len);
 		buf_put(message, recipes.data, recipes.len);
@@ -292,13 +297,14 @@ static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct 
 	buf_wipe(&content);
 	buf_free(&record);
 	buf_free(&recipes);
+	buf_free(&boxed);
 	return st;
 }
 
 static enum qb_status seal_seed(struct sealer *s, struct buf *message, struct qb_error *e)
 {
 	struct record_header h = {.type = RECORD_SEED, .epoch = 1, .start_gps_ns = s->plan->slots.start_gps_ns};
-	uint8_t r[SCALAR_BYTES], zeros[96] = {0};
+	uint8_t r[SCALAR_BYTES], zeros[64] = {0};
 	struct buf content = {0}, record = {0};
 	char hex[65];
 	memcpy(h.campaign, s->context.campaign, 16);
@@ -316,6 +322,7 @@ static enum qb_status seal_seed(struct sealer *s, struct buf *message, struct qb
 	if (st == QB_OK) {
 		buf_i64(message, -1);
 		buf_put(message, zeros, sizeof zeros);
+		buf_u32(message, 0);
 		buf_u32(message, (uint32_t)record.len);
 		buf_put(message, record.data, record.len);
 	}
@@ -326,31 +333,63 @@ static enum qb_status seal_seed(struct sealer *s, struct buf *message, struct qb
 	return st;
 }
 
+/* The run's output so far: what the statement at its end is about. */
+struct output {
+	struct transcript all, recipes;
+	uint8_t hash[64];
+};
+
+static enum qb_status note_output(struct output *o, const struct custody_group *g, const struct buf *message,
+                                  struct qb_error *e)
+{
+	struct sealed_message m;
+	struct record rec;
+	uint8_t station, place;
+	const uint8_t *recipe;
+	uint32_t n;
+	enum qb_status st = sealed_message_read(message, &m, e);
+	if (st == QB_OK)
+		st = record_check(g, m.record, m.record_n, &rec, e);
+	if (st == QB_OK)
+		seal_output_record(&o->all, rec.id, m.commitment);
+	while (st == QB_OK && sealed_message_recipe(&m, &station, &place, &recipe, &n))
+		transcript_field(&o->recipes, recipe, n);
+	return st;
+}
+
 static enum qb_status draw_and_seal(struct sealer *s, struct qb_error *e)
 {
 	struct variates v;
 	struct draw_uniforms u = {variate, &v};
-	struct buf message = {0};
+	struct buf message = {0}, last = {0};
+	struct output output;
+	uint8_t statement[64];
 	int64_t slots = slots_count(&s->plan->slots);
 	s->seed = seed_draw(s->context.ctx, s->attempt, 0,
 	                    (const uint8_t(*)[CONTRIBUTION_BYTES])secret_view(s->contributions), s->context.n);
 	seed_campaign_truth(s->seed, v.truth);
 	bool empty = draw_campaign_empty(s->plan, &u);
 	wipe(&v, sizeof v);
+	seal_output_begin(&output.all, s->context.ctx, s->attempt, s->point);
+	transcript_begin(&output.recipes, "quietbell/1/recipe/all");
 	enum qb_status st = seal_seed(s, &message, e);
 	for (int64_t n = 0; st == QB_OK; n++) {
-		if (!sealer_write(s->out, SEALER_RECORD, message.data, message.len))
+		st = note_output(&output, &s->group, &message, e);
+		if (st == QB_OK && !sealer_write(s->out, SEALER_RECORD, message.data, message.len))
 			st = qb_fail(e, QB_IO, "sealer", NULL, "the service is gone");
 		if (n == slots || st != QB_OK)
 			break;
 		buf_clear(&message);
 		st = seal_slot(s, empty, n, &message, e);
 	}
-	buf_wipe(&message);
-	uint8_t count[8];
-	le64_store(count, (uint64_t)slots);
-	if (st == QB_OK && !sealer_write(s->out, SEALER_DONE, count, sizeof count))
+	buf_free(&message);
+	transcript_end(&output.recipes, output.hash);
+	seal_output_end(&output.all, output.hash, statement);
+	buf_u64(&last, (uint64_t)slots);
+	buf_put(&last, statement, sizeof statement);
+	if (st == QB_OK && !sealer_write(s->out, SEALER_DONE, last.data, last.len))
 		st = qb_fail(e, QB_IO, "sealer", NULL, "the service is gone");
+	buf_free(&last);
 	return st;
 }
 

@@ -8,6 +8,7 @@
 #include "server/base/alloc.h"
 #include "server/base/check.h"
 #include "server/base/text.h"
+#include "server/custody/seed.h"
 #include "server/view/people.h"
 #include "server/view/view.h"
 
@@ -197,14 +198,24 @@ static void apply_keygen(struct campaign *c, const struct wire_entry *en, const 
 	}
 }
 
+static bool host_signed(const struct campaign *c, const struct wire_entry *en, const uint8_t statement[static 64])
+{
+	uint8_t signature[SIGN_BYTES];
+	wire_entry_hex(en, "host_signature", signature, SIGN_BYTES);
+	return c->plan->has_sealer_host && sign_verify(c->plan->sealer_host, statement, 64, signature);
+}
+
 static void apply_sealing(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
 {
 	const char *type = en->type->type;
+	uint8_t statement[64], hash[64];
 	if (strcmp(type, "sealing") == 0) {
 		c->state = C_SEALING;
 		c->sealing_seq = (int64_t)leaf->seq;
 		wire_entry_hex(en, "sealer_key", c->sealer_key, 32);
 		wire_entry_hex(en, "service_commitment", c->service_commitment, 64);
+		seal_key_statement(c->context.ctx, c->sealing_attempt, c->sealer_key, statement);
+		c->host_signed_key = host_signed(c, en, statement);
 	} else if (strcmp(type, "sealing-failed") == 0) {
 		c->state = C_REHEARSED;
 		c->sealing_attempt++;
@@ -221,6 +232,9 @@ static void apply_sealing(struct campaign *c, const struct wire_entry *en, const
 	} else if (strcmp(type, "sealed") == 0) {
 		c->state = C_SEALED;
 		c->sealed_seq = (int64_t)leaf->seq;
+		wire_entry_hex(en, "recipes_hash", hash, 64);
+		campaign_output_statement(c, 0, hash, statement);
+		c->host_signed_output = host_signed(c, en, statement);
 		c->last_batch_ns = leaf->received_gps_ns;
 	} else if (strcmp(type, "prekeys") == 0) {
 		int s = plan_station(c->plan, wire_entry_text(en, "station"));
@@ -355,6 +369,38 @@ static enum qb_status apply_campaign_entry(struct view *v, const struct wire_ent
 	return QB_OK;
 }
 
+/*
+ * The name in the text is the author's, and the author's role may author the type: whoever keeps the ledger could
+ * otherwise sign as himself in other people's names. The leaf's signature was checked before.
+ */
+static enum qb_status check_author(const struct view *v, const struct wire_entry *en, const struct entry *leaf,
+                                   struct qb_error *e)
+{
+	const struct view_party *p = view_party_acting(v, leaf->author);
+	bool service = !v->started || memcmp(leaf->author, v->service_id, 16) == 0, good;
+	char id[33];
+	if (service && strcmp(en->type->type, "enrolment") == 0)
+		/* the administrator, named when the service was created */
+		good = strcmp(en->by, "service") == 0 && leaf->seq == 1 &&
+		       strcmp(wire_entry_text(en, "role"), "administrator") == 0;
+	else if (service)
+		good = strcmp(en->by, "service") == 0 && (en->type->roles & ROLE_BIT(ROLE_SERVICE)) != 0;
+	else if (p == NULL)
+		good = strcmp(en->type->type, "enrolment") == 0 && strcmp(en->by, wire_entry_text(en, "name")) == 0 &&
+		       strcmp(wire_entry_text(en, "role"), "administrator") != 0;
+	else
+		good = strcmp(en->by, p->name) == 0 && (en->type->roles & ROLE_BIT(p->role)) != 0;
+	if (good && p != NULL && en->has_campaign) {
+		hex_encode(id, en->campaign, 16);
+		const struct campaign *c = view_campaign(v, id);
+		good = c == NULL || campaign_role(c, p) != ROLE_NONE;
+	}
+	return good ? QB_OK
+	            : qb_fail(e, QB_CRYPTO, "ledger", "do not trust this ledger",
+	                      "leaf %llu says '%s' by '%.60s', which its signer may not say",
+	                      (unsigned long long)leaf->seq, en->type->type, en->by);
+}
+
 enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_t leaf_hash[static 32],
                           struct qb_error *e)
 {
@@ -364,6 +410,10 @@ enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_
 	enum qb_status st = wire_entry_parse((const char *)leaf->body, leaf->body_len, &en, e);
 	if (st != QB_OK)
 		return st;
+	if ((st = check_author(v, &en, leaf, e)) != QB_OK) {
+		wire_entry_free(&en);
+		return st;
+	}
 	if (strcmp(en.type->type, "service-start") == 0)
 		apply_start(v, &en);
 	else if (view_apply_people(v, &en, leaf))

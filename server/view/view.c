@@ -5,6 +5,7 @@
 
 #include "server/base/alloc.h"
 #include "server/base/text.h"
+#include "server/custody/seed.h"
 
 struct campaign *view_campaign(const struct view *v, const char *name_or_id)
 {
@@ -69,6 +70,18 @@ enum wire_role campaign_role(const struct campaign *c, const struct view_party *
 	if (person == NULL || of_duty[person->duty] != p->role)
 		return ROLE_NONE;
 	return p->role;
+}
+
+void campaign_output_statement(const struct campaign *c, int64_t first_slot, const uint8_t recipes_hash[static 64],
+                               uint8_t out[static 64])
+{
+	static const uint8_t no_key[64];
+	struct transcript t;
+	seal_output_begin(&t, c->context.ctx, c->sealing_attempt, c->sealer_key);
+	seal_output_record(&t, c->seed_record_id, no_key);
+	for (int64_t i = first_slot; i < c->n_slots; i++)
+		seal_output_record(&t, c->slot[i].record_id, c->slot[i].slot_key_commitment);
+	seal_output_end(&t, recipes_hash, out);
 }
 
 int campaign_witness_missing(const struct campaign *c)

@@ -107,7 +107,8 @@ struct campaign {
 	bool prekeys[STATES_MAX_STATIONS][RECIPE_PLACES];
 	int64_t sealing_seq, sealed_seq, closing_seq;
 	uint8_t sealer_key[32], service_commitment[64];
-	int64_t hidden_count; /* of the hidden-summary entry; NO_SEQ before it */
+	bool host_signed_key, host_signed_output; /* by the plan's sealer host; false without one */
+	int64_t hidden_count;                     /* of the hidden-summary entry; NO_SEQ before it */
 	uint8_t hidden_hash[64];
 	int64_t n_slots;
 	struct slot_public *slot; /* owned; n_slots */
@@ -187,6 +188,12 @@ int station_of_driver(const struct campaign *c, const char *name);
 struct opening *opening_find(struct campaign *c, const char *id_hex);
 /* The party's role in the campaign; ROLE_NONE when it has none. */
 enum wire_role campaign_role(const struct campaign *c, const struct view_party *p);
+/*
+ * What a sealer's host signed at the end of a run (custody/seed.h), from what the ledger fixed: the records of the
+ * slots from first_slot on.
+ */
+void campaign_output_statement(const struct campaign *c, int64_t first_slot, const uint8_t recipes_hash[static 64],
+                               uint8_t out[static 64]);
 /* The first station with witness channels in the plan that nobody has signed a statement for; -1 when there is none. */
 int campaign_witness_missing(const struct campaign *c);
 const char *campaign_state_word(enum campaign_state s);

@@ -334,11 +334,13 @@ static void observing_plan(void **state)
 	struct plan_findings f;
 	struct qb_error e = {0};
 	assert_int_equal(
-	    demo_parse(DEMO_PLAN, "phase: rehearsal",
-	               "phase: observing\nalerts:\n  held_for_answer: [public-alerts]\n  partners_told: true\n"
-	               "  no_answer_after: 15 min\n  then: release-with-warning\n  spot_quota: 5\n"
-	               "  recipients: [mbeki]",
-	               &p, &e),
+	    demo_parse(
+	        DEMO_PLAN, "phase: rehearsal",
+	        "phase: observing\nsealer_host: 00112233445566778899aabbccddeeff00112233445566778899aabbccddeeff\n"
+	        "alerts:\n  held_for_answer: [public-alerts]\n  partners_told: true\n"
+	        "  no_answer_after: 15 min\n  then: release-with-warning\n  spot_quota: 5\n"
+	        "  recipients: [mbeki]",
+	        &p, &e),
 	    QB_OK);
 	p->empty_chance = 0.1;
 	assert_int_equal(p->alerts.no_answer_after_ns, 900 * NS_PER_S);

@@ -1,5 +1,5 @@
-/* Framed messages over a pipe. */
-#include "server/ops/sealer_pipe.h"
+/* Framed messages over a pipe or socket. */
+#include "server/wire/sealer_frame.h"
 
 #include <errno.h>
 #include <unistd.h>
