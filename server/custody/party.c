@@ -3,6 +3,7 @@
 
 #include <sodium.h>
 #include <stdio.h>
+#include <string.h>
 
 #include "server/base/check.h"
 
@@ -47,7 +48,7 @@ enum qb_status party_public_check(const struct party_public *p, const char *whos
 	return QB_OK;
 }
 
-void party_fingerprint(const struct party_public *p, char out[static PARTY_FINGERPRINT_TEXT])
+void party_fingerprint_bytes(const struct party_public *p, uint8_t out[static PARTY_FINGERPRINT_BYTES])
 {
 	struct transcript t;
 	uint8_t h[64];
@@ -55,6 +56,13 @@ void party_fingerprint(const struct party_public *p, char out[static PARTY_FINGE
 	transcript_field(&t, p->sign, sizeof p->sign);
 	transcript_field(&t, p->exchange, sizeof p->exchange);
 	transcript_end(&t, h);
+	memcpy(out, h, PARTY_FINGERPRINT_BYTES);
+}
+
+void party_fingerprint(const struct party_public *p, char out[static PARTY_FINGERPRINT_TEXT])
+{
+	uint8_t h[PARTY_FINGERPRINT_BYTES];
+	party_fingerprint_bytes(p, h);
 	for (size_t i = 0; i < 8; i++)
 		snprintf(out + 5 * i, 6, "%02x%02x%s", h[2 * i], h[2 * i + 1], i < 7 ? "-" : "");
 }

@@ -27,8 +27,11 @@ void party_key_public(const struct party_key *key, struct party_public *out);
 /* QB_CRYPTO unless the exchange key is a valid point and the signing key a canonical, prime-order one. */
 enum qb_status party_public_check(const struct party_public *p, const char *whose, struct qb_error *e) QB_MUST_USE;
 
-/* T("quietbell/1/key/fingerprint", sign, exchange), first 16 bytes as 8 groups of 4 hex: people compare this. */
-#define PARTY_FINGERPRINT_TEXT 40
+/* T("quietbell/1/key/fingerprint", sign, exchange), first 16 bytes; people compare them as 8 groups of 4 hex, or as
+ * words (words.h). */
+#define PARTY_FINGERPRINT_BYTES 16
+#define PARTY_FINGERPRINT_TEXT  40
+void party_fingerprint_bytes(const struct party_public *p, uint8_t out[static PARTY_FINGERPRINT_BYTES]);
 void party_fingerprint(const struct party_public *p, char out[static PARTY_FINGERPRINT_TEXT]);
 
 #endif
