@@ -95,13 +95,19 @@ $(BUILD)/tests/outside/%_helper: tests/outside/%_helper.c $(lib)
 	@mkdir -p $(@D)
 	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) $(QB_LDFLAGS) -o $@ $< $(lib) $(LIBS_COMMON)
 
-test-programs: $(unit_bin) $(outside_bin) $(helper_bin)
+# Hostile parties of system tests, which no program of ours would be.
+attack_bin := $(patsubst %.c,$(BUILD)/%,$(wildcard tests/attack/*.c))
+$(BUILD)/tests/attack/%: tests/attack/%.c $(lib_client) $(lib)
+	@mkdir -p $(@D)
+	$(CC) $(QB_CFLAGS) $(CFLAGS) $(EXTRA) $(QB_LDFLAGS) -o $@ $< $(lib_client) $(lib) $(LIBS_CLIENT) $(LIBS_COMMON)
+
+test-programs: $(unit_bin) $(outside_bin) $(helper_bin) $(attack_bin)
 unit: $(unit_bin)
 	@tests/run $(BUILD)/results $(unit_bin)
 outside: $(outside_bin) $(helper_bin)
 	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(outside_bin) $(wildcard tests/outside/*_test.py)
 
-system: all
+system: all $(attack_bin)
 	@rm -rf $(BUILD)/demo-sealed
 	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(sort $(wildcard tests/system/[0-9]*))
 test:

@@ -28,23 +28,24 @@ enum qb_status verify_seed(struct verified *v, struct qb_error *e)
 	uint8_t given[CUSTODY_MAX + 1][CONTRIBUTION_BYTES];
 	json_t *doc = NULL;
 	int64_t attempt = 0;
+	int n;
+	const struct custodian *drawer = campaign_drawers(v->k, &n);
 	enum qb_status st = json_read((const char *)content->data, content->len, "seed record", &doc, e);
 	if (st == QB_OK)
 		st = json_int(doc, "sealing_attempt", "seed record", 1, INT32_MAX, &attempt, e);
 	const json_t *list = json_object_get(doc, "contributions");
-	if (st == QB_OK && ((uint64_t)attempt != v->k->sealing_attempt || json_array_size(list) != (size_t)v->k->n + 1))
+	if (st == QB_OK && ((uint64_t)attempt != v->k->sealing_attempt || json_array_size(list) != (size_t)n + 1))
 		st = no(e, "the seed record is of another sealing", -1);
-	for (int i = 0; st == QB_OK && i <= v->k->n; i++) {
+	for (int i = 0; st == QB_OK && i <= n; i++) {
 		const char *hex = json_string_value(json_array_get(list, (size_t)i));
-		const uint8_t *commitment =
-		    i == 0 ? v->k->service_commitment : v->k->custodian[i - 1].contribution_commitment;
+		const uint8_t *commitment = i == 0 ? v->k->service_commitment : drawer[i - 1].contribution_commitment;
 		if (hex == NULL || strlen(hex) != 64 || !hex_decode(given[i], CONTRIBUTION_BYTES, hex) ||
 		    !seed_commit_matches(v->k->context.ctx, v->k->sealing_attempt, (uint64_t)i, given[i], commitment))
 			st = no(e, "a contribution is not the committed one", -1);
 	}
 	if (st == QB_OK) {
 		v->seed = seed_draw(v->k->context.ctx, v->k->sealing_attempt, 0,
-		                    (const uint8_t(*)[CONTRIBUTION_BYTES])given, (uint32_t)v->k->n);
+		                    (const uint8_t(*)[CONTRIBUTION_BYTES])given, (uint32_t)n);
 		v->audit_seed = seed_audit(v->seed);
 	}
 	json_decref(doc);

@@ -77,11 +77,11 @@ static enum qb_status run_list(struct cli_call *c)
 		json_t *j = json_object();
 		json_object_set_new(j, "name", json_string(k->name));
 		json_object_set_new(j, "id", json_string(id));
-		json_object_set_new(j, "state", json_string(campaign_state_word(k->state)));
+		json_object_set_new(j, "state", json_string(campaign_word(k)));
 		json_object_set_new(j, "phase", json_string(plan_phase_word(k->plan->phase)));
 		json_array_append_new(list, j);
 		if (!cli_wants_json(c))
-			cli_print(c, "%-24s %-10s %-11s %s\n", k->name, campaign_state_word(k->state),
+			cli_print(c, "%-24s %-10s %-11s %s\n", k->name, campaign_word(k),
 			          plan_phase_word(k->plan->phase), id);
 	}
 	if (cli_wants_json(c))
@@ -105,6 +105,36 @@ static void print_conflicts(struct cli_call *c, const struct campaign *k)
 	}
 }
 
+/* What the custodians and whoever watches over them must see: failures, epochs, rehearsals and the margin. */
+static void print_custody(struct cli_call *c, const struct campaign *k)
+{
+	char when[40];
+	cli_print(c, "\n");
+	for (int i = 0; i < k->n_failures; i++) {
+		const struct keygen_failure *f = &k->failure[i];
+		cli_print(c, "           attempt %llu failed: %s%s%s; %s\n", (unsigned long long)f->attempt,
+		          f->excluded, f->excluded[0] != '\0' ? " " : "", f->how, f->why);
+	}
+	if (k->epoch > 1)
+		cli_print(c, "           reshared %llu times\n", (unsigned long long)k->epoch - 1);
+	for (int i = 0; i < k->n_former; i++)
+		cli_print(c, "           %s has not stated yet that the old share is erased\n", k->former[i]->name);
+	if (k->canary_seq != NO_SEQ) {
+		cli_print(c, "margin     %d: %d of %d opened the canary of %s, %d are needed\n", campaign_margin(k),
+		          campaign_margin(k) + k->k, k->n, clock_utc_text(k->canary_ns, when, sizeof when), k->k);
+		for (int i = 0; i < k->n; i++) {
+			if (k->custodian[i].missed >= 2)
+				cli_print(c, "           %s missed %d rehearsals in a row\n",
+				          k->custodian[i].party->name, k->custodian[i].missed);
+		}
+	}
+	if (k->reshare.under_way)
+		cli_print(c, "reshare    attempt %llu is under way\n", (unsigned long long)k->reshare_attempt);
+	if (k->repair.under_way)
+		cli_print(c, "repair     attempt %llu is under way, for %s\n", (unsigned long long)k->repair_attempt,
+		          k->custodian[k->repair.lost].party->name);
+}
+
 static enum qb_status run_show(struct cli_call *c)
 {
 	json_t *doc;
@@ -123,7 +153,7 @@ static enum qb_status run_show(struct cli_call *c)
 		for (int64_t n = 0; n < k->n_slots; n++)
 			reports += __builtin_popcount(k->slot[n].reported);
 		cli_print(c, "campaign   %s (%s%s)\nstate      %s\n", k->name, plan_phase_word(k->plan->phase),
-		          k->rehearsal_clock ? ", rehearsal clock" : "", campaign_state_word(k->state));
+		          k->rehearsal_clock ? ", rehearsal clock" : "", campaign_word(k));
 		cli_print(c, "slots      %lld of %g s, %s to %s\n", (long long)k->n_slots,
 		          (double)k->plan->slots.slot_ns / 1e9,
 		          clock_utc_text(k->plan->slots.start_gps_ns, from, sizeof from),
@@ -131,7 +161,8 @@ static enum qb_status run_show(struct cli_call *c)
 		cli_print(c, "custody    %d of %d:", k->k, k->n);
 		for (int i = 0; i < k->n; i++)
 			cli_print(c, " %s", k->custodian[i].party->name);
-		cli_print(c, "\nattempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
+		print_custody(c, k);
+		cli_print(c, "attempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
 		          (unsigned long long)k->sealing_attempt);
 		for (int i = 0; i < k->plan->network->n_stations; i++)
 			witnessed += k->witness_seq[i] != NO_SEQ;
@@ -223,6 +254,18 @@ static const struct cli_option keygen_options[] = {
     {"rehearsal-seed", "N", false, "a fixed contribution, for reproducible rehearsals"},
     {NULL, NULL, false, NULL}};
 
+static const struct cli_option why_options[] = {{"reason", "TEXT", true, "why, for the ledger"},
+                                                {NULL, NULL, false, NULL}};
+static const struct cli_option reshare_options[] = {
+    {"to", "NAMES", true, "the new set, in its order"},
+    {"needed", "K", false, "how many of them an opening needs (default: as now)"},
+    {"dealers", "NAMES", false, "who of the present set deals (default: the first that are needed)"},
+    {"reason", "TEXT", true, "why, for the ledger"},
+    {NULL, NULL, false, NULL}};
+static const struct cli_option repair_options[] = {
+    {"helpers", "NAMES", false, "who helps (default: the first of the others that are needed)"},
+    {"reason", "TEXT", true, "why, for the ledger"},
+    {NULL, NULL, false, NULL}};
 static const struct cli_option seal_options[] = {
     {"on", "HOST-FILE", false, "a sealer on another machine (YAML: address: HOST:PORT, or folder: DIR)"},
     {"reason", "TEXT", false, "why, for the ledger"},
@@ -242,6 +285,15 @@ const struct cli_verb cli_campaign_verbs[] = {
      "quietbell campaign show fells-spring"},
     {"campaign", "keygen", "CAMPAIGN", cli_keygen, keygen_options,
      "a custodian's part: deal, certify, rehearse, contribute", "quietbell campaign keygen fells-spring --wait"},
+    {"campaign", "exclude", "CAMPAIGN NAME", cli_exclude, why_options,
+     "leaves a custodian out who alone has kept the key generation waiting for three days",
+     "quietbell campaign exclude fells-spring okoro --reason 'cannot be reached'"},
+    {"campaign", "reshare", "CAMPAIGN", cli_reshare, reshare_options,
+     "asks the custodians to deal their shares on to another set, under the same key",
+     "quietbell campaign reshare fells-spring --to ines,marchetti,sato --needed 2 --reason 'okoro leaves'"},
+    {"campaign", "repair", "CAMPAIGN", cli_repair, repair_options,
+     "gets a lost share back from the others, without anybody learning another one",
+     "quietbell campaign repair fells-spring --reason 'disk died'"},
     {"campaign", "witness", "CAMPAIGN", cli_witness, witness_options,
      "signs what could tell live from null at a station (operator, driver)",
      "quietbell campaign witness fells-spring --station tarn --reason 'walked the racks'"},

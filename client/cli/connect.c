@@ -2,8 +2,10 @@
 #include "client/cli/internal.h"
 
 #include <stdlib.h>
+#include <string.h>
 
 #include "server/base/alloc.h"
+#include "server/base/text.h"
 
 enum qb_status cli_home(struct cli_call *c, bool create)
 {
@@ -76,4 +78,22 @@ enum qb_status cli_post_entry(struct cli_call *c, const char *path, const char *
 	json_decref(more);
 	json_decref(body);
 	return st;
+}
+
+enum qb_status cli_option_names(struct cli_call *c, const char *option, json_t *out)
+{
+	const char *list = cli_option(c, option);
+	for (const char *p = list != NULL ? list : ""; *p != '\0';) {
+		size_t n = strcspn(p, ",");
+		char *name = qb_memdup(p, n);
+		bool good = text_is_name(name);
+		if (good)
+			json_array_append_new(out, json_string(name));
+		qb_free(name);
+		if (!good)
+			return qb_fail(&c->error, QB_USAGE, option, "give names with commas between them",
+			               "'%.60s' is no list of names", list);
+		p += n + (p[n] == ',');
+	}
+	return QB_OK;
 }

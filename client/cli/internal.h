@@ -53,7 +53,13 @@ void cli_disconnect(struct cli_call *c);
 enum qb_status cli_post_entry(struct cli_call *c, const char *path, const char *type, const uint8_t *campaign,
                               const char *why, json_t *extra, json_t *more, json_t **out) QB_MUST_USE;
 
-/* The verb `campaign witness`. */
+/* Verbs of the noun `campaign` and `opening` in files of their own. */
 enum qb_status cli_witness(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_reshare(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_repair(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_exclude(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_rehearse(struct cli_call *c) QB_MUST_USE;
+/* Appends the names of a comma-separated option; nothing when it is absent. QB_USAGE */
+enum qb_status cli_option_names(struct cli_call *c, const char *option, json_t *out) QB_MUST_USE;
 
 #endif

@@ -9,24 +9,36 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "client/cli/keygen_part.h"
 #include "server/base/alloc.h"
 #include "server/base/text.h"
 #include "server/custody/box.h"
 #include "server/custody/keyfile.h"
+#include "server/custody/complaint.h"
 #include "server/custody/seed.h"
-
-struct part {
-	struct cli_call *c;
-	const char *name;
-	struct campaign *k;
-	int i; /* own position, from 0 */
-	int64_t seed;
-	bool told[8];
-};
 
 static char *route(const struct part *p, const char *tail)
 {
 	return text_printf("/v1/campaigns/%s/%s", p->k->name, tail);
+}
+
+enum qb_status part_post(struct part *p, const char *type, const char *why, json_t *extra)
+{
+	char *tail = text_printf("keygen/%s", type), *path = route(p, tail);
+	enum qb_status st = cli_post_entry(p->c, path, type, p->k->id, why, extra, NULL, NULL);
+	qb_free(path);
+	qb_free(tail);
+	return st;
+}
+
+json_t *part_message(uint64_t attempt, const char *key, const struct buf *message)
+{
+	char *text = base64_encode(message->data, message->len);
+	json_t *extra = json_object();
+	json_object_set_new(extra, "attempt", json_integer((json_int_t)attempt));
+	json_object_set_new(extra, key, json_string(text));
+	qb_free(text);
+	return extra;
 }
 
 static enum keyfile_level level_of(const struct part *p)
@@ -96,14 +108,9 @@ static enum qb_status step_deal(struct part *p)
 	if (st == QB_OK)
 		st = deal_make(&p->k->context, (uint32_t)p->i + 1, &p->c->home.key, &deal, &p->c->error);
 	if (st == QB_OK) {
-		char *text = base64_encode(deal.data, deal.len), *path = route(p, "keygen/deal");
-		json_t *extra = json_object();
-		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
-		json_object_set_new(extra, "message", json_string(text));
+		json_t *extra = part_message(p->k->attempt, "message", &deal);
 		json_object_set_new(extra, "contribution_commitment", json_hex_new(commit, 64));
-		st = cli_post_entry(p->c, path, "deal", p->k->id, "key generation", extra, NULL, NULL);
-		qb_free(text);
-		qb_free(path);
+		st = part_post(p, "deal", "key generation", extra);
 	}
 	if (st == QB_OK)
 		cli_note(p->c, "%s: dealt shares to all %d custodians\n", p->name, p->k->n);
@@ -120,49 +127,55 @@ static enum qb_status parse_deals(const struct part *p, struct deal *out)
 	return st;
 }
 
-/* A failed check ends the attempt, by name, for everybody. */
-static enum qb_status accuse(struct part *p, int who)
+/* A bad share ends the attempt, and the complaint proves to everybody who is at fault. */
+static enum qb_status complain(struct part *p, int who, const struct deal *d)
 {
-	char why[900], *path = route(p, "keygen/failed");
+	char why[900];
+	struct buf b = {0};
 	struct qb_error first = p->c->error;
-	json_t *extra = json_object();
+	json_t *extra;
 	qb_error_line(&first, why, sizeof why);
 	why[300] = '\0';
-	json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
-	json_object_set_new(extra, "accused", json_string(p->k->custodian[who].party->name));
 	p->c->error = (struct qb_error){0};
-	enum qb_status st = cli_post_entry(p->c, path, "keygen-failed", p->k->id, why, extra, NULL, NULL);
-	qb_free(path);
+	enum qb_status st = complaint_make(&p->k->context, d, (uint32_t)p->i + 1, &p->c->home.key, &b, &p->c->error);
+	if (st == QB_OK) {
+		extra = part_message(p->k->attempt, "complaint", &b);
+		json_object_set_new(extra, "accused", json_string(p->k->custodian[who].party->name));
+		st = part_post(p, "complaint", why, extra);
+	}
+	buf_free(&b);
 	if (st == QB_OK)
-		st = qb_fail(&p->c->error, QB_NO, "key generation",
-		             "leave the person out or let them deal again; the next attempt has the next number",
-		             "attempt %llu is abandoned: %s failed a check: %.200s", (unsigned long long)p->k->attempt,
-		             p->k->custodian[who].party->name, first.what);
+		cli_note(p->c, "%s: complained about the share that %s dealt; the next attempt is without one of us\n",
+		         p->name, p->k->custodian[who].party->name);
 	return st;
 }
 
-static enum qb_status check_each(struct part *p, const struct deal *deals)
+/* *complained: the attempt is over. */
+static enum qb_status check_each(struct part *p, const struct deal *deals, bool *complained)
 {
-	for (int i = 0; i < p->k->n; i++) {
+	enum qb_status st = QB_OK;
+	for (int i = 0; st == QB_OK && i < p->k->n && !*complained; i++) {
 		struct secret *share = NULL;
-		enum qb_status st = deal_check(&p->k->context, &deals[i], &p->c->error);
-		if (st == QB_OK)
-			st = deal_take(&p->k->context, &deals[i], (uint32_t)p->i + 1, &p->c->home.key, &share,
-			               &p->c->error);
+		if ((st = deal_check(&p->k->context, &deals[i], &p->c->error)) != QB_OK)
+			break; /* the service let in what anybody can see to be false */
+		if (deal_take(&p->k->context, &deals[i], (uint32_t)p->i + 1, &p->c->home.key, &share, &p->c->error) !=
+		    QB_OK) {
+			*complained = true;
+			st = complain(p, i, &deals[i]);
+		}
 		secret_free(&share);
-		if (st != QB_OK)
-			return accuse(p, i);
 	}
-	return QB_OK;
+	return st;
 }
 
-static enum qb_status save_share(struct part *p, const struct custody_group *g, struct secret *share)
+enum qb_status part_save_share(struct part *p, const char *file, const struct custody_group *g, uint32_t index,
+                               struct secret *share)
 {
 	char *path;
-	struct keyfile_share s = {.epoch = 1, .index = (uint32_t)p->i + 1, .share = share};
+	struct keyfile_share s = {.epoch = g->epoch, .index = index, .share = share};
 	memcpy(s.campaign, p->k->id, 16);
 	memcpy(s.th, g->th, 64);
-	enum qb_status st = home_campaign_path(&p->c->home, p->k->id, "share.qbk", &path, &p->c->error);
+	enum qb_status st = home_campaign_path(&p->c->home, p->k->id, file, &path, &p->c->error);
 	if (st == QB_OK)
 		st = keyfile_write_share(path, level_of(p), p->c->home.passphrase, &s, &p->c->error);
 	qb_free(path);
@@ -175,23 +188,27 @@ static enum qb_status step_certify(struct part *p)
 	struct custody_group *g = QB_NEW(struct custody_group);
 	struct secret *share = NULL;
 	uint8_t certificate[64], signature[SIGN_BYTES];
+	bool complained = false;
 	enum qb_status st = parse_deals(p, deals);
 	if (st == QB_OK)
-		st = check_each(p, deals);
+		st = check_each(p, deals, &complained);
+	if (complained) {
+		qb_free(deals);
+		qb_free(g);
+		return st;
+	}
 	if (st == QB_OK)
 		st = keygen_share(&p->k->context, deals, (uint32_t)p->i + 1, &p->c->home.key, g, &share, &p->c->error);
 	if (st == QB_OK)
-		st = save_share(p, g, share);
+		st = part_save_share(p, SHARE_FILE, g, (uint32_t)p->i + 1, share);
 	if (st == QB_OK) {
-		char *path = route(p, "keygen/certify");
 		json_t *extra = json_object();
 		keygen_certificate_hash(g, certificate);
 		keygen_certificate_sign(g, p->c->home.key.seed, signature);
 		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
 		json_object_set_new(extra, "certificate", json_hex_new(certificate, 64));
 		json_object_set_new(extra, "certificate_signature", json_hex_new(signature, SIGN_BYTES));
-		st = cli_post_entry(p->c, path, "certify", p->k->id, "every check passed", extra, NULL, NULL);
-		qb_free(path);
+		st = part_post(p, "certify", "every check passed", extra);
 	}
 	if (st == QB_OK)
 		cli_note(p->c, "%s: checked every deal, keeps a share, certified the group key\n", p->name);
@@ -201,17 +218,17 @@ static enum qb_status step_certify(struct part *p)
 	return st;
 }
 
-enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
-                         struct secret **out)
+static enum qb_status read_share(struct cli_call *c, const struct campaign *k, const char *file,
+                                 const struct custody_group *g, struct secret **out)
 {
 	char *path;
 	struct keyfile_share s = {0};
-	enum qb_status st = home_campaign_path(&c->home, k->id, "share.qbk", &path, &c->error);
+	enum qb_status st = home_campaign_path(&c->home, k->id, file, &path, &c->error);
 	if (st == QB_OK)
 		st = keyfile_read_share(path, c->home.passphrase, c->link.rehearsal, &s, &c->error);
 	if (st == QB_OK && (memcmp(s.campaign, k->id, 16) != 0 || memcmp(s.th, g->th, 64) != 0)) {
-		st = qb_fail(&c->error, QB_CRYPTO, path, "restore the share of this campaign",
-		             "is of another key generation");
+		st = qb_fail(&c->error, QB_CRYPTO, path, "restore the share of this campaign, or ask for its repair",
+		             "is of another key generation or resharing");
 		secret_free(&s.share);
 	}
 	qb_free(path);
@@ -219,37 +236,73 @@ enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const str
 	return st;
 }
 
-static enum qb_status step_rehearse(struct part *p)
+/* After a resharing the share of the new set takes the place of the old one, which is gone then. */
+static enum qb_status adopt_next(struct cli_call *c, const struct campaign *k, const struct custody_group *g)
 {
-	struct custody_group *g = QB_NEW(struct custody_group);
+	char *next, *now;
 	struct secret *share = NULL;
+	struct qb_error before = c->error;
+	enum qb_status st = home_campaign_path(&c->home, k->id, SHARE_NEXT, &next, &c->error);
+	if (st != QB_OK)
+		return st;
+	if (access(next, F_OK) == 0 &&
+	    (st = home_campaign_path(&c->home, k->id, SHARE_FILE, &now, &c->error)) == QB_OK) {
+		if (read_share(c, k, SHARE_NEXT, g, &share) == QB_OK && rename(next, now) != 0)
+			st = qb_fail(&c->error, QB_IO, now, NULL, "can't be replaced");
+		secret_free(&share);
+		qb_free(now);
+	}
+	if (st == QB_OK)
+		c->error = before;
+	qb_free(next);
+	return st;
+}
+
+enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
+                         struct secret **out)
+{
+	enum qb_status st = adopt_next(c, k, g);
+	*out = NULL;
+	return st == QB_OK ? read_share(c, k, SHARE_FILE, g, out) : st;
+}
+
+enum qb_status part_rehearse(struct part *p, const char *type, uint64_t attempt, const struct custody_group *g,
+                             const uint8_t leaf[static 32], const uint8_t *canary, size_t canary_n,
+                             uint64_t canary_index, uint32_t index, const struct secret *share)
+{
 	struct record rec;
 	struct buf partial = {0};
 	struct partial_authority auth = {.purpose = PARTIAL_REHEARSAL};
-	memcpy(auth.hash, p->k->canary_leaf, 32);
-	enum qb_status st = campaign_certified_group(p->k, g, &p->c->error);
+	memcpy(auth.hash, leaf, 32);
+	enum qb_status st = record_check(g, canary, canary_n, &rec, &p->c->error);
 	if (st == QB_OK)
-		st = cli_share(p->c, p->k, g, &share);
+		st = record_expect(&rec, RECORD_CANARY, canary_index, &p->c->error);
 	if (st == QB_OK)
-		st = record_check(g, p->k->canary, p->k->canary_n, &rec, &p->c->error);
-	if (st == QB_OK)
-		st = record_expect(&rec, RECORD_CANARY, p->k->attempt, &p->c->error);
-	if (st == QB_OK)
-		st = partial_make(g, &rec, (uint32_t)p->i + 1, share, &auth, &partial, &p->c->error);
+		st = partial_make(g, &rec, index, share, &auth, &partial, &p->c->error);
 	if (st == QB_OK) {
-		char *text = base64_encode(partial.data, partial.len), *path = route(p, "sealer/rehearsals");
-		json_t *extra = json_object();
-		json_object_set_new(extra, "attempt", json_integer((json_int_t)p->k->attempt));
+		char *path = route(p, "sealer/rehearsals");
+		json_t *extra = part_message(attempt, "share", &partial);
 		json_object_set_new(extra, "record_id", json_hex_new(rec.id, 64));
-		json_object_set_new(extra, "share", json_string(text));
-		st = cli_post_entry(p->c, path, "rehearsal", p->k->id, "rehearsal of the opening", extra, NULL, NULL);
-		qb_free(text);
+		st = cli_post_entry(p->c, path, type, p->k->id, "rehearsal of the opening", extra, NULL, NULL);
 		qb_free(path);
 	}
 	if (st == QB_OK)
 		cli_note(p->c, "%s: opened the canary\n", p->name);
-	secret_free(&share);
 	buf_free(&partial);
+	return st;
+}
+
+static enum qb_status step_rehearse(struct part *p)
+{
+	struct custody_group *g = QB_NEW(struct custody_group);
+	struct secret *share = NULL;
+	enum qb_status st = campaign_certified_group(p->k, g, &p->c->error);
+	if (st == QB_OK)
+		st = cli_share(p->c, p->k, g, &share);
+	if (st == QB_OK)
+		st = part_rehearse(p, "rehearsal", p->k->attempt, g, p->k->canary_leaf, p->k->canary, p->k->canary_n,
+		                   p->k->canary_index, (uint32_t)p->i + 1, share);
+	secret_free(&share);
 	qb_free(g);
 	return st;
 }
@@ -314,18 +367,33 @@ static enum qb_status step_finish(struct part *p)
 /* One turn: the step that is due, or *idle. */
 static enum qb_status turn(struct part *p, bool *idle, bool *done)
 {
-	const struct custodian *me = &p->k->custodian[p->i];
-	*idle = false;
-	if (p->k->state >= C_SEALED) {
+	*idle = true;
+	enum qb_status st = part_later(p, idle);
+	if (p->left)
 		*done = true;
-		return step_finish(p);
-	}
-	if (me->deal_seq == NO_SEQ)
-		return step_deal(p);
-	if (p->k->has_group && me->certify_seq == NO_SEQ)
-		return step_certify(p);
-	if (p->k->state == C_CERTIFIED && me->rehearsal_seq == NO_SEQ)
+	if (st != QB_OK || !*idle || p->left)
+		return st;
+	*done = p->k->state >= C_SEALED && !p->k->reshare.under_way && !p->k->repair.under_way;
+	/* Who waits for the repair of a share can do nothing with it yet. */
+	if (p->i < 0 || (p->k->repair.under_way && p->i == p->k->repair.lost))
+		return QB_OK;
+	const struct custodian *me = &p->k->custodian[p->i];
+	bool canary = p->k->canary_seq != NO_SEQ && me->rehearsal_seq == NO_SEQ && p->k->state <= C_CLOSED;
+	*idle = false;
+	if (canary && p->k->state >= C_CERTIFIED) {
+		*done = false;
 		return step_rehearse(p);
+	}
+	if (*done)
+		return step_finish(p);
+	if (p->k->stalled)
+		return qb_fail(&p->c->error, QB_NO, "key generation", "draft a new plan with other custodians",
+		               "too few custodians are left");
+	bool drafted = p->k->state == C_DRAFTED;
+	if (drafted && me->deal_seq == NO_SEQ)
+		return step_deal(p);
+	if (drafted && p->k->has_group && me->certify_seq == NO_SEQ)
+		return step_certify(p);
 	if (p->k->state == C_REHEARSED && me->commitment_seq == NO_SEQ)
 		return step_commit(p);
 	if (p->k->state == C_SEALING && me->contribution_seq == NO_SEQ)
@@ -334,33 +402,54 @@ static enum qb_status turn(struct part *p, bool *idle, bool *done)
 	return QB_OK;
 }
 
-enum qb_status cli_keygen(struct cli_call *c)
+static enum qb_status find_part(struct part *p, const char *campaign)
 {
-	struct part p = {.c = c};
+	struct cli_call *c = p->c;
+	enum qb_status st = cli_campaign(c, campaign, &p->k);
+	if (st != QB_OK)
+		return st;
+	p->name = c->home.name;
+	p->i = custodian_index(p->k, p->name);
+	for (int f = 0; f < p->k->n_failures; f++) {
+		const struct keygen_failure *x = &p->k->failure[f];
+		if (strcmp(x->excluded, p->name) == 0)
+			return qb_fail(&c->error, QB_NO, "key generation", NULL,
+			               "%s was left out after attempt %llu: %s %s", p->name,
+			               (unsigned long long)x->attempt, p->name, x->how);
+	}
+	if (p->i < 0 && reshare_member(p->k, p->name) < 0 && !campaign_former(p->k, p->name))
+		return qb_fail(&c->error, QB_REFUSED, "campaign", NULL, "%s is no custodian of '%s'", p->name,
+		               p->k->name);
+	if (p->seed >= 0 && !c->link.rehearsal)
+		return qb_fail(&c->error, QB_REFUSED, "--rehearsal-seed", NULL,
+		               "is for services with a rehearsal clock");
+	return QB_OK;
+}
+
+enum qb_status cli_keygen_part(struct cli_call *c, const char *campaign, bool wait, int64_t seed)
+{
+	struct part p = {.c = c, .seed = seed};
 	struct timespec pause = {0, 150000000};
-	bool wait = cli_option(c, "wait") != NULL, done = false;
-	enum qb_status st = cli_option_int(c, "rehearsal-seed", 0, INT64_MAX, -1, &p.seed);
+	bool done = false;
+	enum qb_status st = QB_OK;
 	while (st == QB_OK && !done) {
 		bool idle = false;
-		if ((st = cli_campaign(c, cli_arg(c, 0), &p.k)) != QB_OK)
-			break;
-		p.name = c->home.name;
-		p.i = custodian_index(p.k, c->home.name);
-		if (p.i < 0)
-			st = qb_fail(&c->error, QB_REFUSED, "campaign", NULL, "%s is no custodian of '%s'",
-			             c->home.name, p.k->name);
-		else if (p.seed >= 0 && !c->link.rehearsal)
-			st = qb_fail(&c->error, QB_REFUSED, "--rehearsal-seed", NULL,
-			             "is for services with a rehearsal clock");
-		else
+		if ((st = find_part(&p, campaign)) == QB_OK)
 			st = turn(&p, &idle, &done);
 		if (st == QB_OK && idle && !wait)
 			break;
-		if (st == QB_OK && idle)
+		if (st == QB_OK && idle && !done)
 			nanosleep(&pause, NULL);
 	}
 	/* A custodian holds the service to one history: every command ends with a cosignature. */
 	if (st == QB_OK)
 		st = cli_follow(c);
 	return st == QB_OK ? follow_cosign(&c->follow, &c->link, &c->error) : st;
+}
+
+enum qb_status cli_keygen(struct cli_call *c)
+{
+	int64_t seed;
+	enum qb_status st = cli_option_int(c, "rehearsal-seed", 0, INT64_MAX, -1, &seed);
+	return st == QB_OK ? cli_keygen_part(c, cli_arg(c, 0), cli_option(c, "wait") != NULL, seed) : st;
 }

@@ -9,4 +9,10 @@ enum qb_status cli_keygen(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
                          struct secret **out) QB_MUST_USE;
 
+/*
+ * A custodian's part, whatever is due: dealing, complaining, certifying, rehearsing, contributing, dealing on,
+ * repairing, erasing. wait: goes on until the campaign is sealed and nothing is under way.
+ */
+enum qb_status cli_keygen_part(struct cli_call *c, const char *campaign, bool wait, int64_t seed) QB_MUST_USE;
+
 #endif

@@ -176,6 +176,9 @@ static const struct cli_option request_options[] = {
     {NULL, NULL, false, NULL}};
 static const struct cli_option join_options[] = {{"yes", NULL, false, "do not ask"}, {NULL, NULL, false, NULL}};
 
+static const struct cli_option rehearse_options[] = {{"reason", "TEXT", false, "why, for the ledger"},
+                                                     {NULL, NULL, false, NULL}};
+
 const struct cli_verb cli_opening_verbs[] = {
     {"opening", "request", "CAMPAIGN", run_request, request_options, "asks for a spot or the full opening",
      "quietbell opening request fells-spring --from 1487895000 --to 1487895002 --reason 'alert in hand'"},
@@ -183,6 +186,9 @@ const struct cli_verb cli_opening_verbs[] = {
      "quietbell opening list fells-spring"},
     {"opening", "join", "CAMPAIGN OPENING", run_join, join_options, "gives a custodian's part, after every check",
      "quietbell opening join fells-spring 0123456789abcdef0123456789abcdef"},
+    {"opening", "rehearse", "CAMPAIGN", cli_rehearse, rehearse_options,
+     "opens the newest canary, or asks for a fresh one: does this custodian's share still work?",
+     "quietbell opening rehearse fells-spring --reason monthly"},
     {"opening", "result", "CAMPAIGN OPENING", run_result, NULL, "shows the answer (the asker)",
      "quietbell opening result fells-spring 0123456789abcdef0123456789abcdef"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

@@ -5,24 +5,6 @@
 #include "server/base/alloc.h"
 #include "server/base/text.h"
 
-static enum qb_status add_list(struct cli_call *c, const char *option, json_t *out)
-{
-	const char *list = cli_option(c, option);
-	for (const char *p = list != NULL ? list : ""; *p != '\0';) {
-		size_t n = strcspn(p, ",");
-		char *name = qb_memdup(p, n);
-		bool good = text_is_name(name);
-		if (good)
-			json_array_append_new(out, json_string(name));
-		qb_free(name);
-		if (!good)
-			return qb_fail(&c->error, QB_USAGE, option, "give names with commas between them",
-			               "'%.60s' is no list of names", list);
-		p += n + (p[n] == ',');
-	}
-	return QB_OK;
-}
-
 enum qb_status cli_witness(struct cli_call *c)
 {
 	struct campaign *k;
@@ -38,11 +20,11 @@ enum qb_status cli_witness(struct cli_call *c)
 			json_array_append_new(masked, json_string(w->channel));
 	}
 	if (st == QB_OK)
-		st = add_list(c, "also", channels);
+		st = cli_option_names(c, "also", channels);
 	if (st == QB_OK)
-		st = add_list(c, "also-masked", channels);
+		st = cli_option_names(c, "also-masked", channels);
 	if (st == QB_OK)
-		st = add_list(c, "also-masked", masked);
+		st = cli_option_names(c, "also-masked", masked);
 	if (st != QB_OK) {
 		json_decref(channels);
 		json_decref(masked);

@@ -212,6 +212,8 @@ static void read_rules(struct plan_reader *r, struct yaml_node *root, struct dri
 	read_duration(r, root, "batch", 1, 86400, &plan->batch_ns);
 	plan->acceptance_ns = 30 * 86400 * NS_PER_S;
 	read_duration(r, root, "acceptance", 60, 31557600, &plan->acceptance_ns);
+	plan->rehearsals_ns = 30 * 86400 * NS_PER_S;
+	read_duration(r, root, "rehearsals", 3600, 31557600, &plan->rehearsals_ns);
 	plan->hubble_km_per_s_per_mpc = 67.74;
 	plan->matter_density = 0.3075;
 	struct yaml_node *m = read_optional(r, root, "cosmology", YAML_MAP);

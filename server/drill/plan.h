@@ -119,7 +119,7 @@ struct drill_plan {
 	bool has_sealer_host; /* the sealer runs on a machine of its own, whose signing key this is */
 	uint8_t sealer_host[32];
 	struct plan_alerts alerts;
-	int64_t batch_ns, acceptance_ns;
+	int64_t batch_ns, acceptance_ns, rehearsals_ns;
 	double hubble_km_per_s_per_mpc, matter_density;
 	int redraws;
 	double delivery_amplitude, delivery_time_s, delivery_phase_rad;

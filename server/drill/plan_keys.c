@@ -67,6 +67,8 @@ static const struct plan_key keys[] = {
     {"delivery.time_s", "s", "1e-9 to 10", "0.0005", "Time error it may have."},
     {"delivery.phase_rad", "rad", "1e-6 to pi", "0.1", "Phase error it may have."},
     {"acceptance", "duration", "60 s to 1 year", "30 d", "How long a station's acceptance stays current."},
+    {"rehearsals", "duration", "3600 s to 1 year", "30 d",
+     "How often the custodians are asked to open a fresh canary, from the sealing on."},
     {"witness_channels[].station", "", "a station", REQUIRED, "Where the channel is."},
     {"witness_channels[].channel", "", "a name", REQUIRED, "What could tell live from null on site."},
     {"witness_channels[].readers", "", "names", "none", "Who can read it."},

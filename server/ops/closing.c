@@ -20,7 +20,7 @@ enum qb_status case_close(struct ops *o, struct campaign *c, const struct ops_ca
 	if (st != QB_OK)
 		return st;
 	if (c->state != C_SEALED)
-		st = qb_fail(e, QB_CONFLICT, "close", NULL, "the campaign is %s", campaign_state_word(c->state));
+		st = qb_fail(e, QB_CONFLICT, "close", NULL, "the campaign is %s", campaign_word(c));
 	else if (now_locked(o) < c->plan->slots.end_gps_ns)
 		st = qb_fail(e, QB_CONFLICT, "close", "wait for the end of the stretch", "the campaign still runs");
 	if (st == QB_CONFLICT && c->state == C_SEALED)
@@ -66,7 +66,7 @@ enum qb_status case_bundle(struct ops *o, struct campaign *c, const struct ops_c
 	(void)call;
 	if (c->state != C_OPENED)
 		return qb_fail(e, QB_CONFLICT, "bundle", "close and open it first", "the campaign is %s",
-		               campaign_state_word(c->state));
+		               campaign_word(c));
 	for (int i = 0; i < c->n; i++)
 		memcpy(ids[i], c->custodian[i].party->key_id, 16);
 	for (int i = 0; i < c->n_openings; i++) {

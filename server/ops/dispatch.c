@@ -58,6 +58,10 @@ static enum qb_status check_role(struct ops *o, const struct ops_call *call, con
 	(void)o;
 	if (call->who != NULL && c != NULL && (role = campaign_role(c, call->who)) == ROLE_NONE)
 		return qb_fail(e, QB_REFUSED, NULL, NULL, "%s has no part in this campaign", call->who->name);
+	/* Who is to take office, or has left it and must still say that the share is erased, has that part alone. */
+	bool office = r->id != R_KEYGEN && r->id != R_REHEARSALS && r->id != R_CAMPAIGN && r->id != R_SEALER;
+	if (c != NULL && role == ROLE_CUSTODIAN && office && custodian_index(c, call->who->name) < 0)
+		return qb_fail(e, QB_REFUSED, NULL, NULL, "%s is not a custodian in office", call->who->name);
 	if ((r->roles & ROLE_BIT(role)) == 0)
 		return qb_fail(e, QB_REFUSED, NULL, NULL, "the role '%s' may not do this", wire_role_word(role));
 	return QB_OK;

@@ -84,7 +84,7 @@ enum qb_status case_campaigns_list(struct ops *o, struct campaign *none, const s
 		json_t *j = json_object();
 		json_object_set_new(j, "id", json_hex_new(c->id, 16));
 		json_object_set_new(j, "name", json_string(c->name));
-		json_object_set_new(j, "state", json_string(campaign_state_word(c->state)));
+		json_object_set_new(j, "state", json_string(campaign_word(c)));
 		json_object_set_new(j, "phase", json_string(plan_phase_word(c->plan->phase)));
 		json_array_append_new(list, j);
 	}
@@ -113,6 +113,7 @@ static void put_custodians(json_t *doc, const struct campaign *c)
 		json_array_append_new(people, p);
 		json_array_append_new(deals, seq_or_null(cu->deal_seq));
 		json_array_append_new(certs, seq_or_null(cu->certify_seq));
+		json_object_set_new(p, "missed_rehearsals", json_integer(cu->missed));
 		json_array_append_new(rehearsals, seq_or_null(cu->rehearsal_seq));
 		json_array_append_new(commitments, seq_or_null(cu->commitment_seq));
 		json_array_append_new(contributions, seq_or_null(cu->contribution_seq));
@@ -149,6 +150,22 @@ static void put_counts(json_t *doc, const struct campaign *c)
 	json_object_set_new(doc, "openings", openings);
 }
 
+/* Attempts at a key that ended without one, and who was left out. */
+static void put_failures(json_t *doc, const struct campaign *c)
+{
+	json_t *list = json_array();
+	for (int i = 0; i < c->n_failures; i++) {
+		const struct keygen_failure *f = &c->failure[i];
+		json_t *j = json_object();
+		json_object_set_new(j, "attempt", json_integer((json_int_t)f->attempt));
+		json_object_set_new(j, "excluded", f->excluded[0] != '\0' ? json_string(f->excluded) : json_null());
+		json_object_set_new(j, "how", json_string(f->how));
+		json_object_set_new(j, "why", json_string(f->why));
+		json_array_append_new(list, j);
+	}
+	json_object_set_new(doc, "failed_attempts", list);
+}
+
 enum qb_status case_campaign(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                              struct qb_error *e)
 {
@@ -159,7 +176,7 @@ enum qb_status case_campaign(struct ops *o, struct campaign *c, const struct ops
 	json_object_set_new(d, "id", json_hex_new(c->id, 16));
 	json_object_set_new(d, "name", json_string(c->name));
 	json_object_set_new(d, "phase", json_string(plan_phase_word(c->plan->phase)));
-	json_object_set_new(d, "state", json_string(campaign_state_word(c->state)));
+	json_object_set_new(d, "state", json_string(campaign_word(c)));
 	json_object_set_new(d, "rehearsal", json_boolean(c->rehearsal_clock || c->plan->phase == PLAN_REHEARSAL));
 	json_object_set_new(d, "slots", json_integer(c->n_slots));
 	json_object_set_new(d, "starts_gps", json_gps_new(c->plan->slots.start_gps_ns));
@@ -168,6 +185,13 @@ enum qb_status case_campaign(struct ops *o, struct campaign *c, const struct ops
 	json_object_set_new(d, "lead_s", json_real((double)c->plan->slots.lead_ns / 1e9));
 	json_object_set_new(d, "plan", json_integer(c->plan_seq));
 	json_object_set_new(d, "attempt", json_integer((json_int_t)c->attempt));
+	json_object_set_new(d, "epoch", json_integer((json_int_t)c->epoch));
+	json_object_set_new(d, "margin", c->canary_seq == NO_SEQ ? json_null() : json_integer(campaign_margin(c)));
+	json_object_set_new(d, "reshare",
+	                    c->reshare.under_way ? json_integer((json_int_t)c->reshare_attempt) : json_null());
+	json_object_set_new(d, "repair",
+	                    c->repair.under_way ? json_integer((json_int_t)c->repair_attempt) : json_null());
+	put_failures(d, c);
 	json_object_set_new(d, "sealing_attempt", json_integer((json_int_t)c->sealing_attempt));
 	json_object_set_new(d, "needed", json_integer(c->k));
 	put_custodians(d, c);

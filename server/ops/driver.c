@@ -31,8 +31,7 @@ static enum qb_status check_prekeys(const struct campaign *c, const struct accep
 	if (st != QB_OK)
 		return st;
 	if (c->state >= C_SEALING)
-		return qb_fail(e, QB_CONFLICT, "prekeys", NULL, "the campaign is %s already",
-		               campaign_state_word(c->state));
+		return qb_fail(e, QB_CONFLICT, "prekeys", NULL, "the campaign is %s already", campaign_word(c));
 	if (place < 0 || place >= RECIPE_PLACES)
 		return qb_fail(e, QB_RANGE, "prekeys: place", "0 (main) or 1 (spare)", "is out of range");
 	if (c->prekeys[station][place])
@@ -189,7 +188,7 @@ static enum qb_status check_filed(const struct campaign *c, const struct ops_cal
 	if (st == QB_OK && wire_entry_int(&a->entry, "slot") != slot)
 		st = qb_fail(e, QB_REFUSED, "entry: slot", NULL, "is not the slot of the path");
 	if (st == QB_OK && (c->state < C_SEALED || c->state > C_CLOSED))
-		st = qb_fail(e, QB_CONFLICT, NULL, NULL, "the campaign is %s", campaign_state_word(c->state));
+		st = qb_fail(e, QB_CONFLICT, NULL, NULL, "the campaign is %s", campaign_word(c));
 	if (st == QB_OK && report && (c->slot[slot].reported >> station & 1) != 0)
 		st = qb_fail(e, QB_CONFLICT, "report", NULL, "the report of this slot and station is here already");
 	if (st == QB_OK && !report && number >= PLAY_NOTES_MAX)

@@ -147,6 +147,9 @@ enum qb_status opening_add_name(void *state, const char *name, const uint8_t *p,
 #define TO_ALL   "@given"
 /* After a restart: which records each spot opens, and which were answered. */
 enum qb_status opening_reload_positions(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
+/* ---- canary.c ---- */
+bool canary_due(const struct campaign *c, int64_t now_ns);
+enum qb_status canary_issue(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 /* ---- ops.c ---- */
 /* Whatever the clock makes due in a campaign: freezes, erasures, batches. */
 enum qb_status campaign_due(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;

@@ -1,25 +1,53 @@
 /*
  * The service's part of key generation: it relays and keeps order. It checks what an outsider can check, so that junk
- * never enters the ledger, seals the canary when all have certified, and combines the rehearsal.
+ * never enters the ledger, and judges complaints as everybody else can.
  */
 #include <string.h>
 
 #include "server/base/alloc.h"
 #include "server/base/text.h"
-#include "server/ops/internal.h"
+#include "server/ops/keyholders.h"
 
-#define CANARY_BYTES 32
-
-static enum qb_status check_deal(struct campaign *c, const struct accepted *a, int i, struct qb_error *e)
+enum qb_status keyholder_message(const struct accepted *a, const char *key, struct buf *out, struct qb_error *e)
 {
+	if (!base64_decode(wire_entry_text(&a->entry, key), out))
+		return qb_fail(e, QB_FORMAT, key, NULL, "is not base64");
+	return QB_OK;
+}
+
+bool custodians_all_in(const struct custodian *list, int n, int except, size_t offset)
+{
+	for (int i = 0; i < n; i++) {
+		const int64_t *seq = (const int64_t *)(const void *)((const char *)&list[i] + offset);
+		if (i != except && *seq == NO_SEQ)
+			return false;
+	}
+	return true;
+}
+
+static enum qb_status check_attempt(const struct campaign *c, const struct accepted *a, struct qb_error *e)
+{
+	if (c->stalled)
+		return qb_fail(e, QB_CONFLICT, "keygen", "draft a new plan",
+		               "too few custodians are left for a key generation");
+	if ((uint64_t)wire_entry_int(&a->entry, "attempt") != c->attempt)
+		return qb_fail(e, QB_CONFLICT, "keygen: attempt", "follow the ledger", "attempt %llu runs now",
+		               (unsigned long long)c->attempt);
+	return QB_OK;
+}
+
+static enum qb_status check_deal(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
+{
+	int i = custodian_index(c, a->entry.by);
 	struct deal *d = QB_NEW(struct deal);
 	struct buf b = {0};
-	enum qb_status st = QB_OK;
-	if (c->state != C_DRAFTED || c->custodian[i].deal_seq != NO_SEQ)
+	enum qb_status st = check_attempt(c, a, e);
+	(void)o;
+	if (st == QB_OK && (c->state != C_DRAFTED || c->custodian[i].deal_seq != NO_SEQ))
 		st = qb_fail(e, QB_CONFLICT, "keygen", NULL, "the deal of %s for attempt %llu is in already",
 		             a->entry.by, (unsigned long long)c->attempt);
-	if (st == QB_OK && !base64_decode(wire_entry_text(&a->entry, "message"), &b))
-		st = qb_fail(e, QB_FORMAT, "keygen: message", NULL, "is not base64");
+	if (st == QB_OK)
+		st = keyholder_message(a, "message", &b, e);
 	if (st == QB_OK)
 		st = deal_parse(&c->context, b.data, b.len, d, e);
 	if (st == QB_OK && d->from != (uint32_t)i + 1)
@@ -31,9 +59,14 @@ static enum qb_status check_deal(struct campaign *c, const struct accepted *a, i
 	return st;
 }
 
-static enum qb_status check_certify(struct campaign *c, const struct accepted *a, int i, struct qb_error *e)
+static enum qb_status check_certify(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
 {
 	uint8_t given[64], own[64], signature[64];
+	int i = custodian_index(c, a->entry.by);
+	enum qb_status st = check_attempt(c, a, e);
+	(void)o;
+	if (st != QB_OK)
+		return st;
 	if (c->state != C_DRAFTED || !c->has_group || c->custodian[i].certify_seq != NO_SEQ)
 		return qb_fail(e, QB_CONFLICT, "keygen", NULL, "a certificate of %s is not due now", a->entry.by);
 	wire_entry_hex(&a->entry, "certificate", given, 64);
@@ -42,82 +75,90 @@ static enum qb_status check_certify(struct campaign *c, const struct accepted *a
 	if (memcmp(given, own, 64) != 0)
 		return qb_fail(e, QB_CRYPTO, "keygen: certificate", "verify the ledger's deals again",
 		               "is not the certificate that follows from the deals in the ledger");
-	if (!keygen_certificate_signed_by(&c->group, c->custodian[i].party->signing_key, signature))
+	if (!keygen_certificate_signed_by(&c->group, c->context.party[i].sign, signature))
 		return qb_fail(e, QB_CRYPTO, "keygen: certificate_signature", NULL, "does not verify");
 	return QB_OK;
 }
 
-static bool all_in(const struct campaign *c, int except, size_t offset)
+static enum qb_status after_certify(struct txn *t, struct campaign *c, const struct accepted *a, struct qb_error *e)
 {
-	for (int i = 0; i < c->n; i++) {
-		const int64_t *seq = (const int64_t *)(const void *)((const char *)&c->custodian[i] + offset);
-		if (i != except && *seq == NO_SEQ)
-			return false;
-	}
-	return true;
+	int i = custodian_index(c, a->entry.by);
+	if (!custodians_all_in(c->custodian, c->n, i, offsetof(struct custodian, certify_seq)))
+		return QB_OK;
+	return canary_seal(t, c, &c->group, "canary", c->attempt, "all custodians certified", e);
 }
 
-static void canary_key(const struct campaign *c, char out[static 48])
+static enum qb_status check_commitment(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
 {
-	char hex[33];
-	hex_encode(hex, c->id, 16);
-	memcpy(out, "canary-", 7);
-	memcpy(out + 7, hex, 33);
-}
-
-/* The content stays unknown to the store: only its hash is kept, to be compared after the combination. */
-static enum qb_status seal_canary(struct txn *t, struct campaign *c, struct qb_error *e)
-{
-	uint8_t content[CANARY_BYTES], hash[64];
-	char key[48], hex[129];
-	struct buf record = {0};
-	struct record_header h = {.type = RECORD_CANARY, .epoch = 1, .index = c->attempt};
-	memcpy(h.campaign, c->id, 16);
-	memcpy(h.author, t->o->service_id, 16);
-	random_bytes(content, sizeof content);
-	blake2b_512(hash, content, sizeof content);
-	hex_encode(hex, hash, 64);
-	canary_key(c, key);
-	enum qb_status st = record_seal(&c->group, &h, content, sizeof content, &record, e);
-	wipe(content, sizeof content);
-	if (st == QB_OK)
-		st = store_setting_put(t->o->store, key, hex, e);
-	if (st == QB_OK) {
-		json_t *extra = json_object();
-		char *text = base64_encode(record.data, record.len);
-		json_object_set_new(extra, "attempt", json_integer((json_int_t)c->attempt));
-		json_object_set_new(extra, "record", json_string(text));
-		qb_free(text);
-		st = txn_service_entry(t, "canary", c, "all custodians certified", extra, NULL, NULL, e);
-	}
-	buf_free(&record);
-	return st;
-}
-
-static enum qb_status check_attempt(const struct campaign *c, const struct accepted *a, struct qb_error *e)
-{
-	if ((uint64_t)wire_entry_int(&a->entry, "attempt") != c->attempt)
-		return qb_fail(e, QB_CONFLICT, "keygen: attempt", "follow the ledger", "attempt %llu runs now",
-		               (unsigned long long)c->attempt);
-	return QB_OK;
-}
-
-static enum qb_status check_commitment(const struct campaign *c, const struct accepted *a, int i, struct qb_error *e)
-{
+	int i = custodian_index(c, a->entry.by);
+	(void)o;
 	if (c->state != C_REHEARSED || (uint64_t)wire_entry_int(&a->entry, "sealing_attempt") != c->sealing_attempt ||
 	    c->custodian[i].commitment_seq != NO_SEQ)
 		return qb_fail(e, QB_CONFLICT, "keygen", NULL, "a new commitment is not due now");
 	return QB_OK;
 }
 
-static enum qb_status check_failed(const struct campaign *c, const struct accepted *a, struct qb_error *e)
+static enum qb_status check_failed(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
 {
-	if (c->state != C_DRAFTED)
-		return qb_fail(e, QB_CONFLICT, "keygen", NULL, "the key generation is over");
-	if (custodian_index(c, wire_entry_text(&a->entry, "accused")) < 0)
-		return qb_fail(e, QB_REFUSED, "keygen: accused", NULL, "is not a custodian of this campaign");
+	enum qb_status st = check_attempt(c, a, e);
+	(void)o;
+	if (st == QB_OK && c->state != C_DRAFTED)
+		st = qb_fail(e, QB_CONFLICT, "keygen", NULL, "the key generation is over");
+	if (st == QB_OK && custodian_index(c, wire_entry_text(&a->entry, "accused")) < 0)
+		st = qb_fail(e, QB_REFUSED, "keygen: accused", NULL, "is not a custodian of this campaign");
+	/* Everybody can check a deal, and whose share is bad a complaint proves: this is for sets of good deals only.
+	 */
+	for (int i = 0; st == QB_OK && i < c->n; i++) {
+		if (c->custodian[i].deal_seq == NO_SEQ || c->has_group)
+			st = qb_fail(e, QB_REFUSED, "keygen", "file a complaint about a bad share",
+			             "nothing is wrong that everybody could see");
+	}
+	return st;
+}
+
+static enum qb_status check_complaint(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
+{
+	int guilty;
+	(void)o;
+	return campaign_judge(c, &a->entry, &guilty, e);
+}
+
+static enum qb_status check_exclusion(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)
+{
+	const char *name = wire_entry_text(&a->entry, "name");
+	if (campaign_silent(c, name, now_locked(o)) < 0)
+		return qb_fail(e, QB_CONFLICT, "exclusion", "wait, or ask the person by telephone",
+		               "the attempt has not waited for '%s' alone for three days", name);
 	return QB_OK;
 }
+
+/* Who is a custodian in office may do everything; of a set to come or replaced, only what is theirs. */
+enum part { IN_OFFICE, ANYBODY };
+static const struct {
+	const char *type;
+	keyholder_check *check;
+	keyholder_after *after;
+	enum part part;
+} steps[] = {
+    {"deal", check_deal, NULL, IN_OFFICE},
+    {"certify", check_certify, after_certify, IN_OFFICE},
+    {"keygen-failed", check_failed, NULL, IN_OFFICE},
+    {"complaint", check_complaint, NULL, IN_OFFICE},
+    {"exclusion", check_exclusion, NULL, ANYBODY},
+    {"contribution-commitment", check_commitment, NULL, IN_OFFICE},
+    {"rehearsal-request", canary_check_request, canary_after_request, IN_OFFICE},
+    {"reshare-request", reshare_check_request, NULL, ANYBODY},
+    {"reshare-deal", reshare_check_deal, NULL, IN_OFFICE},
+    {"reshare-complaint", reshare_check_complaint, NULL, ANYBODY},
+    {"reshare-failed", reshare_check_failed, NULL, ANYBODY},
+    {"reshare-certify", reshare_check_certify, reshare_after_certify, ANYBODY},
+    {"share-erased", reshare_check_erased, NULL, ANYBODY},
+    {"repair-request", repair_check_request, NULL, IN_OFFICE},
+    {"repair-split", repair_check_split, NULL, IN_OFFICE},
+    {"repair-sum", repair_check_sum, NULL, IN_OFFICE},
+    {"repair-failed", repair_check_failed, NULL, IN_OFFICE},
+    {"repaired", repair_check_done, NULL, IN_OFFICE},
+};
 
 enum qb_status case_keygen(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                            struct qb_error *e)
@@ -126,24 +167,23 @@ enum qb_status case_keygen(struct ops *o, struct campaign *c, const struct ops_c
 	struct txn t;
 	uint8_t leaf[32];
 	int64_t seq;
+	size_t s = 0;
 	enum qb_status st = accept_entry(o, call, c, &a, e);
 	if (st != QB_OK)
 		return st;
-	int i = custodian_index(c, a.entry.by);
-	const char *type = a.entry.type->type;
-	bool certify = strcmp(type, "certify") == 0;
-	if (strcmp(type, "contribution-commitment") == 0)
-		st = check_commitment(c, &a, i, e);
-	else if ((st = check_attempt(c, &a, e)) != QB_OK)
-		;
-	else if (strcmp(type, "deal") == 0)
-		st = check_deal(c, &a, i, e);
+	while (s < sizeof steps / sizeof steps[0] && strcmp(steps[s].type, a.entry.type->type) != 0)
+		s++;
+	if (s == sizeof steps / sizeof steps[0])
+		st = qb_fail(e, QB_REFUSED, "entry", NULL, "an entry of type '%s' is not taken here",
+		             a.entry.type->type);
+	else if (steps[s].part == IN_OFFICE && custodian_index(c, a.entry.by) < 0)
+		st = qb_fail(e, QB_REFUSED, "entry: by", NULL, "%s is not a custodian in office", a.entry.by);
 	else
-		st = certify ? check_certify(c, &a, i, e) : check_failed(c, &a, e);
+		st = steps[s].check(o, c, &a, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, "keygen", e)) == QB_OK) {
 		st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
-		if (st == QB_OK && certify && all_in(c, i, offsetof(struct custodian, certify_seq)))
-			st = seal_canary(&t, c, e);
+		if (st == QB_OK && steps[s].after != NULL)
+			st = steps[s].after(&t, c, &a, e);
 		if (st == QB_OK)
 			st = txn_commit(&t, e);
 		if (st == QB_OK)
@@ -151,128 +191,5 @@ enum qb_status case_keygen(struct ops *o, struct campaign *c, const struct ops_c
 		txn_end(&t);
 	}
 	accepted_free(&a);
-	return st;
-}
-
-static enum qb_status combine_canary(struct ops *o, const struct campaign *c, const struct record *rec,
-                                     const struct partial *latest, int latest_i, struct qb_error *e)
-{
-	struct partial partials[CUSTODY_MAX];
-	struct buf content = {0}, want = {0};
-	uint8_t hash[64], expected[64];
-	char key[48];
-	size_t n = 0;
-	partials[n++] = *latest;
-	for (int i = 0; i < c->n; i++) {
-		if (i != latest_i)
-			partials[n++] = c->custodian[i].rehearsal;
-	}
-	canary_key(c, key);
-	enum qb_status st = partial_open(&c->group, rec, partials, n, &content, e);
-	if (st == QB_OK)
-		st = store_setting_get(o->store, key, &want, e);
-	if (st == QB_OK) {
-		blake2b_512(hash, content.data, content.len);
-		if (!hex_decode(expected, 64, (const char *)want.data) || memcmp(hash, expected, 64) != 0)
-			st = qb_fail(e, QB_CRYPTO, "rehearsal", "start a new key generation",
-			             "the canary opened to another text");
-	}
-	buf_wipe(&content);
-	buf_free(&want);
-	return st;
-}
-
-/* The other custodians' partials are in the ledger; after a restart they are read back from there. */
-static enum qb_status load_rehearsals(struct ops *o, struct campaign *c, const struct record *rec,
-                                      const struct partial_authority *auth, int except, struct qb_error *e);
-
-enum qb_status case_rehearsal(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
-                              struct qb_error *e)
-{
-	struct accepted a;
-	struct buf share = {0};
-	struct record rec;
-	struct partial p;
-	struct partial_authority auth = {.purpose = PARTIAL_REHEARSAL};
-	enum qb_status st = accept_entry(o, call, c, &a, e);
-	if (st != QB_OK)
-		return st;
-	int i = custodian_index(c, a.entry.by);
-	if (c->state != C_CERTIFIED || c->custodian[i].rehearsal_seq != NO_SEQ)
-		st = qb_fail(e, QB_CONFLICT, "rehearsal", NULL, "a rehearsal of %s is not due now", a.entry.by);
-	if (st == QB_OK)
-		st = check_attempt(c, &a, e);
-	memcpy(auth.hash, c->canary_leaf, 32);
-	if (st == QB_OK)
-		st = record_check(&c->group, c->canary, c->canary_n, &rec, e);
-	if (st == QB_OK && !base64_decode(wire_entry_text(&a.entry, "share"), &share))
-		st = qb_fail(e, QB_FORMAT, "rehearsal: share", NULL, "is not base64");
-	if (st == QB_OK)
-		st = partial_check(&c->group, &rec, &auth, share.data, share.len, &p, e);
-	if (st == QB_OK && p.i != (uint32_t)i + 1)
-		st = qb_fail(e, QB_CRYPTO, "rehearsal: share", NULL, "is another custodian's");
-	bool last = st == QB_OK && all_in(c, i, offsetof(struct custodian, rehearsal_seq));
-	if (last)
-		st = load_rehearsals(o, c, &rec, &auth, i, e);
-	if (last && st == QB_OK)
-		st = combine_canary(o, c, &rec, &p, i, e);
-	struct txn t;
-	uint8_t leaf[32];
-	int64_t seq;
-	if (st == QB_OK && (st = txn_begin(&t, o, "rehearsal", e)) == QB_OK) {
-		st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
-		if (st == QB_OK && last) {
-			json_t *extra = json_object();
-			json_object_set_new(extra, "attempt", json_integer((json_int_t)c->attempt));
-			st = txn_service_entry(&t, "rehearsed", c, "all custodians opened the canary", extra, NULL,
-			                       NULL, e);
-		}
-		if (st == QB_OK)
-			st = txn_commit(&t, e);
-		if (st == QB_OK)
-			reply_entry(reply, 201, seq, leaf, t.now_ns);
-		txn_end(&t);
-	}
-	buf_free(&share);
-	accepted_free(&a);
-	return st;
-}
-
-struct loading {
-	struct campaign *c;
-	const struct record *rec;
-	const struct partial_authority *auth;
-};
-
-static enum qb_status load_one(void *state, uint64_t seq, const uint8_t *frame, size_t n,
-                               const uint8_t leaf_hash[static 32], struct qb_error *e)
-{
-	struct loading *l = state;
-	struct entry leaf;
-	struct wire_entry en;
-	struct buf share = {0};
-	(void)seq;
-	(void)leaf_hash;
-	enum qb_status st = entry_decode(frame, n, &leaf, e);
-	if (st != QB_OK || (st = wire_entry_parse((const char *)leaf.body, leaf.body_len, &en, e)) != QB_OK)
-		return st;
-	int i = custodian_index(l->c, en.by);
-	if (i >= 0 && base64_decode(wire_entry_text(&en, "share"), &share))
-		st = partial_check(&l->c->group, l->rec, l->auth, share.data, share.len, &l->c->custodian[i].rehearsal,
-		                   e);
-	buf_free(&share);
-	wire_entry_free(&en);
-	return st;
-}
-
-static enum qb_status load_rehearsals(struct ops *o, struct campaign *c, const struct record *rec,
-                                      const struct partial_authority *auth, int except, struct qb_error *e)
-{
-	struct loading l = {c, rec, auth};
-	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && i < c->n; i++) {
-		if (i != except)
-			st = store_leaves(o->store, (uint64_t)c->custodian[i].rehearsal_seq, 1, load_one, &l, e);
-	}
 	return st;
 }

@@ -166,7 +166,7 @@ static enum qb_status ask_spot(struct ops *o, struct campaign *c, const struct o
 	int quota = c->plan->alerts.given ? c->plan->alerts.spot_quota : 5;
 	enum qb_status st = QB_OK;
 	if (c->state != C_SEALED)
-		st = qb_fail(e, QB_CONFLICT, "spot request", NULL, "the campaign is %s", campaign_state_word(c->state));
+		st = qb_fail(e, QB_CONFLICT, "spot request", NULL, "the campaign is %s", campaign_word(c));
 	else if (strcmp(a->entry.why, "-") == 0)
 		st = qb_fail(e, QB_REFUSED, "spot request: why", "give --reason", "a spot request needs a reason");
 	else if (from > to || from > now_locked(o))
@@ -215,7 +215,7 @@ enum qb_status case_opening_request(struct ops *o, struct campaign *c, const str
 	} else {
 		if (c->state != C_CLOSED)
 			st = qb_fail(e, QB_CONFLICT, "opening", "close the analysis first", "the campaign is %s",
-			             campaign_state_word(c->state));
+			             campaign_word(c));
 		if (st == QB_OK)
 			st = enter_one(o, "opening-request", call, &a, reply, e);
 		if (st == QB_OK)

@@ -311,6 +311,8 @@ static void log_failure(struct ops *o, const char *event, const struct campaign 
 enum qb_status campaign_due(struct ops *o, struct campaign *c, struct qb_error *e)
 {
 	enum qb_status st = slots_anything_due(o, c) ? slots_due(o, c, e) : QB_OK;
+	if (st == QB_OK && canary_due(c, now_locked(o)))
+		st = canary_issue(o, c, e);
 	if (st != QB_OK || !hidden_due(o, c, now_locked(o)))
 		return st;
 	struct txn t;

@@ -9,8 +9,7 @@ static enum qb_status may_seal(const struct campaign *c, struct ops *o, struct q
 {
 	if (c->state != C_REHEARSED || (c->job != NULL && !c->job->ended))
 		return qb_fail(e, QB_CONFLICT, "seal", "all custodians must have run quietbell campaign keygen",
-		               "the campaign is %s",
-		               c->job != NULL && !c->job->ended ? "sealing" : campaign_state_word(c->state));
+		               "the campaign is %s", c->job != NULL && !c->job->ended ? "sealing" : campaign_word(c));
 	for (int i = 0; i < c->n; i++) {
 		if (c->custodian[i].commitment_seq == NO_SEQ)
 			return qb_fail(e, QB_CONFLICT, "seal", NULL, "%s has not committed to a contribution",

@@ -173,8 +173,7 @@ static enum qb_status give_spot(struct ops *o, struct campaign *c, struct openin
 	uint8_t commitment[64];
 	bool answer = strcmp(a->entry.type->type, "spot-answer") == 0;
 	if (c->state != C_SEALED)
-		return qb_fail(e, QB_CONFLICT, "spot opening", NULL, "the campaign is %s",
-		               campaign_state_word(c->state));
+		return qb_fail(e, QB_CONFLICT, "spot opening", NULL, "the campaign is %s", campaign_word(c));
 	enum qb_status st = answer ? body_base64(call->body, "box", 4096, &b, e) : QB_OK;
 	if (st == QB_OK && (st = txn_begin(&t, o, a->entry.type->type, e)) == QB_OK) {
 		if (answer)

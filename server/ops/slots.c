@@ -229,7 +229,7 @@ static enum qb_status control(struct ops *o, struct campaign *c, const struct op
 		return st;
 	if (c->state < C_SEALED || c->state > C_CLOSED)
 		st = qb_fail(e, QB_CONFLICT, NULL, NULL, "the campaign is %s: there is nothing to hold or stop",
-		             campaign_state_word(c->state));
+		             campaign_word(c));
 	if (st == QB_OK)
 		st = check(c, call, &a, e);
 	if (st == QB_OK)

@@ -9,6 +9,7 @@
 #include "server/base/check.h"
 #include "server/base/text.h"
 #include "server/custody/seed.h"
+#include "server/view/keyholders.h"
 #include "server/view/people.h"
 #include "server/view/view.h"
 
@@ -36,25 +37,6 @@ static void apply_start(struct view *v, const struct wire_entry *en)
 	v->rehearsal_clock = strcmp(wire_entry_text(en, "clock"), "rehearsal") == 0;
 }
 
-static void custodian_restart(struct custodian *cu)
-{
-	cu->deal_seq = cu->certify_seq = cu->rehearsal_seq = NO_SEQ;
-	cu->commitment_seq = cu->contribution_seq = NO_SEQ;
-	qb_free(cu->deal);
-	cu->deal = NULL;
-	cu->deal_n = 0;
-}
-
-static enum qb_status campaign_context(struct campaign *c, struct qb_error *e)
-{
-	struct party_public parties[CUSTODY_MAX];
-	for (int i = 0; i < c->n; i++) {
-		memcpy(parties[i].sign, c->custodian[i].party->signing_key, 32);
-		memcpy(parties[i].exchange, c->custodian[i].party->exchange_key, 32);
-	}
-	return keygen_context_init(&c->context, c->id, 1, c->attempt, (uint32_t)c->n, (uint32_t)c->k, parties, e);
-}
-
 static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, const struct entry *leaf,
                                  struct qb_error *e)
 {
@@ -76,19 +58,9 @@ static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, co
 	}
 	(void)snprintf(c->name, sizeof c->name, "%s", c->plan->campaign);
 	c->rehearsal_clock = v->rehearsal_clock;
-	c->n = c->plan->custodians;
-	c->k = c->plan->custodians_needed;
-	c->attempt = c->sealing_attempt = 1;
-	c->canary_seq = c->sealing_seq = c->sealed_seq = c->closing_seq = c->hidden_count = NO_SEQ;
-	for (int i = 0; st == QB_OK && i < c->n; i++) {
-		custodian_restart(&c->custodian[i]);
-		c->custodian[i].party = view_party_named(v, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
-		if (c->custodian[i].party == NULL)
-			st = qb_fail(e, QB_REFUSED, "plan: parties", "enrol first", "custodian %d is not enrolled",
-			             i + 1);
-	}
-	if (st == QB_OK)
-		st = campaign_context(c, e);
+	c->sealing_attempt = c->reshare_attempt = c->repair_attempt = 1;
+	c->sealing_seq = c->sealed_seq = c->closing_seq = c->hidden_count = NO_SEQ;
+	st = view_draft_keyholders(v, c, leaf->received_gps_ns, e);
 	if (st != QB_OK) {
 		campaign_free(&c);
 		return st;
@@ -109,93 +81,18 @@ void campaign_free(struct campaign **cp)
 	struct campaign *c = *cp;
 	if (c == NULL)
 		return;
-	for (int i = 0; i < c->n; i++)
-		qb_free(c->custodian[i].deal);
+	view_free_keyholders(c);
 	for (int i = 0; i < c->n_openings; i++)
 		qb_free(c->opening[i].positions);
 	plan_free(&c->plan);
 	qb_free(c->plan_text);
 	qb_free(c->plan_files);
-	qb_free(c->canary);
 	qb_free(c->slot);
 	qb_free(c->hold);
 	qb_free(c->stop);
 	qb_free(c->opening);
 	qb_free(c);
 	*cp = NULL;
-}
-
-/* All deals are in: the group follows, as any outsider can compute it. */
-static enum qb_status derive_group(struct campaign *c, struct qb_error *e)
-{
-	struct deal *deals = QB_NEW_ARRAY(struct deal, (size_t)c->n);
-	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && i < c->n; i++)
-		st = deal_parse(&c->context, c->custodian[i].deal, c->custodian[i].deal_n, &deals[i], e);
-	if (st == QB_OK)
-		st = keygen_group(&c->context, deals, &c->group, e);
-	c->has_group = st == QB_OK;
-	qb_free(deals);
-	return st;
-}
-
-static enum qb_status apply_deal(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
-                                 struct qb_error *e)
-{
-	struct custodian *cu = &c->custodian[custodian_index(c, en->by)];
-	struct buf b = {0};
-	CHECK(base64_decode(wire_entry_text(en, "message"), &b));
-	qb_free(cu->deal);
-	cu->deal = b.data;
-	cu->deal_n = b.len;
-	cu->deal_seq = (int64_t)leaf->seq;
-	wire_entry_hex(en, "contribution_commitment", cu->contribution_commitment, 64);
-	cu->commitment_seq = (int64_t)leaf->seq;
-	for (int i = 0; i < c->n; i++) {
-		if (c->custodian[i].deal_seq == NO_SEQ)
-			return QB_OK;
-	}
-	(void)derive_group(c, NULL); /* a bad set of deals is for the custodians to report */
-	(void)e;
-	return QB_OK;
-}
-
-static enum qb_status apply_keygen_failed(struct campaign *c, struct qb_error *e)
-{
-	for (int i = 0; i < c->n; i++)
-		custodian_restart(&c->custodian[i]);
-	c->attempt++;
-	c->has_group = false;
-	return campaign_context(c, e);
-}
-
-static void apply_keygen(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
-                         const uint8_t leaf_hash[static 32])
-{
-	const char *type = en->type->type;
-	int i = custodian_index(c, en->by);
-	if (strcmp(type, "certify") == 0) {
-		c->custodian[i].certify_seq = (int64_t)leaf->seq;
-		wire_entry_hex(en, "certificate_signature", c->custodian[i].certificate_signature, 64);
-	} else if (strcmp(type, "canary") == 0) {
-		struct buf b = {0};
-		CHECK(base64_decode(wire_entry_text(en, "record"), &b));
-		qb_free(c->canary);
-		c->canary = b.data;
-		c->canary_n = b.len;
-		c->canary_seq = (int64_t)leaf->seq;
-		memcpy(c->canary_leaf, leaf_hash, 32);
-		c->state = C_CERTIFIED;
-	} else if (strcmp(type, "rehearsal") == 0) {
-		c->custodian[i].rehearsal_seq = (int64_t)leaf->seq;
-	} else if (strcmp(type, "rehearsed") == 0) {
-		c->state = C_REHEARSED;
-	} else if (strcmp(type, "contribution-commitment") == 0) {
-		c->custodian[i].commitment_seq = (int64_t)leaf->seq;
-		wire_entry_hex(en, "contribution_commitment", c->custodian[i].contribution_commitment, 64);
-	} else if (strcmp(type, "contribution") == 0) {
-		c->custodian[i].contribution_seq = (int64_t)leaf->seq;
-	}
 }
 
 static bool host_signed(const struct campaign *c, const struct wire_entry *en, const uint8_t statement[static 64])
@@ -354,15 +251,12 @@ static enum qb_status apply_campaign_entry(struct view *v, const struct wire_ent
 		return qb_fail(e, QB_FAULT, "ledger", "restore a backup", "leaf %llu is about an unknown campaign",
 		               (unsigned long long)leaf->seq);
 	const char *type = en->type->type;
-	if (strcmp(type, "deal") == 0)
-		return apply_deal(c, en, leaf, e);
-	if (strcmp(type, "keygen-failed") == 0)
-		return apply_keygen_failed(c, e);
+	if (view_apply_keyholders(v, c, en, leaf, leaf_hash))
+		return QB_OK;
 	if (strcmp(type, "freeze") == 0 || strcmp(type, "play-report") == 0 || strcmp(type, "play-note") == 0) {
 		apply_slot(c, en, leaf);
 		return QB_OK;
 	}
-	apply_keygen(c, en, leaf, leaf_hash);
 	apply_sealing(c, en, leaf);
 	apply_control(c, en, leaf);
 	apply_opening(c, en, leaf, leaf_hash);

@@ -82,6 +82,10 @@ bool view_keys_in_use(const struct view *v, const struct view_party *p)
 		if (c->state < C_REHEARSED && custodian_index(c, p->name) >= 0 &&
 		    c->custodian[custodian_index(c, p->name)].deal_seq != NO_SEQ)
 			return true;
+		if (reshare_member(c, p->name) >= 0 || reshare_dealer(c, p->name) >= 0 ||
+		    repair_helper(c, p->name) >= 0 ||
+		    (c->repair.under_way && custodian_index(c, p->name) == c->repair.lost))
+			return true;
 	}
 	return false;
 }

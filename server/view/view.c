@@ -66,6 +66,11 @@ enum wire_role campaign_role(const struct campaign *c, const struct view_party *
 	    [DUTY_LIAISON] = ROLE_LIAISON,     [DUTY_DRIVER] = ROLE_DRIVER,     [DUTY_ANALYST] = ROLE_ANALYST};
 	if (p->role == ROLE_ADMINISTRATOR || p->role == ROLE_AUDITOR)
 		return p->role;
+	if (p->role == ROLE_CUSTODIAN) {
+		bool part =
+		    custodian_index(c, p->name) >= 0 || reshare_member(c, p->name) >= 0 || campaign_former(c, p->name);
+		return part ? ROLE_CUSTODIAN : ROLE_NONE;
+	}
 	const struct plan_person *person = plan_person_named(c->plan, p->name);
 	if (person == NULL || of_duty[person->duty] != p->role)
 		return ROLE_NONE;
@@ -132,25 +137,72 @@ enum qb_status view_author_key(const struct view *v, const struct entry *leaf, u
 	return st;
 }
 
+const struct custodian *campaign_drawers(const struct campaign *c, int *n)
+{
+	*n = c->epoch == 1 ? c->n : c->n_founders;
+	return c->epoch == 1 ? c->custodian : c->founder;
+}
+
+uint64_t campaign_next_canary(const struct campaign *c)
+{
+	return c->attempt + (uint64_t)c->n_canaries;
+}
+
+int campaign_margin(const struct campaign *c)
+{
+	int opened = 0;
+	for (int i = 0; i < c->n; i++)
+		opened += c->custodian[i].rehearsal_seq != NO_SEQ;
+	return opened - c->k;
+}
+
+const char *campaign_word(const struct campaign *c)
+{
+	return c->stalled ? "stalled" : campaign_state_word(c->state);
+}
+
+bool campaign_full_opening(const struct campaign *c)
+{
+	for (int i = 0; i < c->n_openings; i++) {
+		if (c->opening[i].scope == SCOPE_FULL)
+			return true;
+	}
+	return false;
+}
+
+static enum qb_status later_group(const struct epoch_proof *p, struct custody_group *g, struct qb_error *e)
+{
+	struct deal *deals = QB_NEW_ARRAY(struct deal, g->k);
+	enum qb_status st = QB_OK;
+	const struct custody_group *old = &p->context.old;
+	if (old->epoch != g->epoch || old->n != g->n || old->k != g->k || memcmp(old->th, g->th, 64) != 0 ||
+	    memcmp(old->s, g->s, POINT_BYTES) != 0 || memcmp(old->y, g->y, g->n * sizeof g->y[0]) != 0)
+		st = qb_fail(e, QB_CRYPTO, "group key", "do not trust this ledger",
+		             "a resharing does not follow from the group before it");
+	for (uint32_t i = 0; st == QB_OK && i < g->k; i++)
+		st = reshare_parse(&p->context, p->proof.deal[i].data, p->proof.deal[i].len, &deals[i], e);
+	if (st == QB_OK)
+		st = reshare_certificate_verify(&p->context, deals, p->proof.certificate.data, p->proof.certificate.len,
+		                                g, e);
+	qb_free(deals);
+	return st;
+}
+
 enum qb_status campaign_certified_group(const struct campaign *c, struct custody_group *out, struct qb_error *e)
 {
-	struct deal *deals = QB_NEW_ARRAY(struct deal, (size_t)c->n);
-	uint8_t signatures[CUSTODY_MAX][SIGN_BYTES];
-	struct buf certificate = {0};
 	enum qb_status st = QB_OK;
-	if (!c->has_group || c->state < C_CERTIFIED)
-		st =
-		    qb_fail(e, QB_CONFLICT, "group key", "wait until every custodian has run quietbell campaign keygen",
-		            "not all custodians have certified it");
-	for (int i = 0; st == QB_OK && i < c->n; i++) {
-		st = deal_parse(&c->context, c->custodian[i].deal, c->custodian[i].deal_n, &deals[i], e);
-		memcpy(signatures[i], c->custodian[i].certificate_signature, SIGN_BYTES);
-	}
-	if (st == QB_OK) {
-		keygen_certificate_encode(&c->group, (const uint8_t(*)[SIGN_BYTES])signatures, &certificate);
-		st = keygen_certificate_verify(&c->context, deals, certificate.data, certificate.len, out, e);
-	}
-	buf_free(&certificate);
+	if (c->founding.certificate.len == 0 || c->state < C_CERTIFIED)
+		return qb_fail(e, QB_CONFLICT, "group key",
+		               "wait until every custodian has run quietbell campaign keygen",
+		               "not all custodians have certified it");
+	struct deal *deals = QB_NEW_ARRAY(struct deal, (size_t)c->n_founders);
+	for (int i = 0; st == QB_OK && i < c->n_founders; i++)
+		st = deal_parse(&c->context, c->founding.deal[i].data, c->founding.deal[i].len, &deals[i], e);
+	if (st == QB_OK)
+		st = keygen_certificate_verify(&c->context, deals, c->founding.certificate.data,
+		                               c->founding.certificate.len, out, e);
+	for (uint64_t i = 0; st == QB_OK && i + 1 < c->epoch; i++)
+		st = later_group(&c->later[i], out, e);
 	qb_free(deals);
 	return st;
 }

@@ -10,6 +10,8 @@
 #include "server/custody/deal.h"
 #include "server/custody/partial.h"
 #include "server/custody/recipe.h"
+#include "server/custody/repair.h"
+#include "server/custody/reshare.h"
 #include "server/drill/plan.h"
 #include "server/drill/states.h"
 #include "server/ledger/entry.h"
@@ -52,6 +54,57 @@ struct custodian {
 	uint8_t certificate_signature[SIGN_BYTES];
 	uint8_t contribution_commitment[64]; /* for the current sealing attempt */
 	struct partial rehearsal;
+	int missed; /* rehearsals in a row before the present canary */
+};
+
+/* How long an attempt at key generation waits before a silent custodian may be left out. */
+#define KEYGEN_SILENCE_NS (INT64_C(72) * 3600 * INT64_C(1000000000))
+
+/* An attempt at key generation that ended without a key. */
+struct keygen_failure {
+	uint64_t attempt;
+	char excluded[64]; /* "" when nobody is left out */
+	char how[40];      /* "dealt a bad share" ... */
+	char why[300];     /* as the entry says */
+};
+
+/* What proves a group to anybody: the signed messages and the certificate. */
+struct group_proof {
+	struct buf deal[CUSTODY_MAX]; /* owned; in the order of the dealers */
+	struct buf certificate;       /* owned */
+};
+
+/* A resharing under way: nothing of the present set changes until all of the new one have opened a canary. */
+struct reshare_view {
+	bool under_way;
+	int64_t request_seq;
+	int n, k;
+	struct custodian member[CUSTODY_MAX]; /* the new set; deals are the dealers', below */
+	int dealer[CUSTODY_MAX];              /* positions of the old set's dealers, from 0; as many as are needed */
+	struct buf deal[CUSTODY_MAX];         /* owned; empty until it came */
+	struct reshare_context context;
+	struct custody_group group; /* once all deals are in */
+	bool has_group;
+	int64_t canary_seq;
+	uint64_t canary_index;
+	uint8_t canary_leaf[32];
+	struct buf canary; /* owned */
+};
+/* A resharing that took effect: how the next group follows from the one before. */
+struct epoch_proof {
+	struct reshare_context context;
+	struct group_proof proof;
+	int64_t seq; /* of the reshared entry */
+};
+/* A repair under way. */
+struct repair_view {
+	bool under_way;
+	uint64_t attempt;
+	int lost;                      /* position, from 0 */
+	int helper[CUSTODY_MAX];       /* positions; as many as are needed */
+	struct buf split[CUSTODY_MAX]; /* owned; by place in helper */
+	struct buf sum[CUSTODY_MAX];   /* owned */
+	struct repair_context context;
 };
 
 struct hold {
@@ -97,7 +150,26 @@ struct campaign {
 	int n, k;
 	struct custodian custodian[CUSTODY_MAX];
 	uint64_t attempt, sealing_attempt;
-	struct keygen_context context; /* of the current attempt */
+	bool stalled;                   /* too few custodians are left for a key generation */
+	int64_t attempt_since_ns;       /* when the attempt began */
+	struct keygen_failure *failure; /* owned */
+	int n_failures;
+	uint64_t epoch; /* 1, and one more for each resharing */
+	struct group_proof founding;
+	struct custodian
+	    founder[CUSTODY_MAX]; /* the set of epoch 1, whose contributions the draw is made of; no deals */
+	int n_founders;
+	struct epoch_proof *later; /* owned; epoch - 1 of them */
+	struct reshare_view reshare;
+	uint64_t reshare_attempt;                     /* of the next or running one, from 1 */
+	const struct view_party *former[CUSTODY_MAX]; /* replaced custodians who have not stated yet that they erased */
+	int n_former;
+	struct repair_view repair;
+	uint64_t repair_attempt;
+	int n_canaries;
+	int64_t canary_ns;
+	uint64_t canary_index;         /* in the newest canary's header */
+	struct keygen_context context; /* of the current attempt; from the certificate on, of epoch 1 */
 	struct custody_group group;    /* from C_CERTIFIED on, and once all deals are in */
 	bool has_group;
 	int64_t canary_seq;
@@ -197,6 +269,39 @@ void campaign_output_statement(const struct campaign *c, int64_t first_slot, con
 /* The first station with witness channels in the plan that nobody has signed a statement for; -1 when there is none. */
 int campaign_witness_missing(const struct campaign *c);
 const char *campaign_state_word(enum campaign_state s);
+/* The index that the next canary's header bears: the attempt's number, and one more for each canary before it. */
+uint64_t campaign_next_canary(const struct campaign *c);
+/* How many opened the newest canary, less how many an opening needs. */
+int campaign_margin(const struct campaign *c);
+/* The custodians of epoch 1, whose contributions the draw is made of. */
+const struct custodian *campaign_drawers(const struct campaign *c, int *n);
+/* Drafted, certified ... or stalled. */
+const char *campaign_word(const struct campaign *c);
+/*
+ * Judges a complaint entry against the ledger alone: *guilty is the position, from 0, of whoever is left out.
+ * Errors: QB_CONFLICT, QB_FORMAT, QB_CRYPTO: no complaint about a deal of the running attempt
+ */
+enum qb_status campaign_judge(const struct campaign *c, const struct wire_entry *en, int *guilty,
+                              struct qb_error *e) QB_MUST_USE;
+/* The position of a custodian who may be left out for silence: the attempt waits for him alone, for long. -1: no. */
+int campaign_silent(const struct campaign *c, const char *name, int64_t now_ns);
+/* A place in the new set of a resharing under way, from 0, or -1; a replaced custodian who has still to erase. */
+int reshare_member(const struct campaign *c, const char *name);
+int reshare_dealer(const struct campaign *c, const char *name); /* the dealer's place in the list */
+bool campaign_former(const struct campaign *c, const char *name);
+int repair_helper(const struct campaign *c, const char *name); /* the helper's place in the list, or -1 */
+/* What a request would start, with every rule checked. Errors: QB_CONFLICT, QB_REFUSED, QB_RANGE, QB_CRYPTO */
+enum qb_status reshare_prepare(const struct view *v, const struct campaign *c, const struct wire_entry *en,
+                               struct reshare_view *out, struct qb_error *e) QB_MUST_USE;
+enum qb_status repair_prepare(const struct campaign *c, const struct wire_entry *en, struct repair_view *out,
+                              struct qb_error *e) QB_MUST_USE;
+/* The deals of the resharing under way, parsed: as many as dealers. */
+enum qb_status reshare_deals(const struct campaign *c, struct deal *out, struct qb_error *e) QB_MUST_USE;
+/* As campaign_judge; *guilty is the name of the dealer or of the accuser. */
+enum qb_status reshare_judge(const struct campaign *c, const struct wire_entry *en, const char **guilty,
+                             struct qb_error *e) QB_MUST_USE;
+/* Whether the full opening has been asked for. */
+bool campaign_full_opening(const struct campaign *c);
 /* The certificate verified from the deals, with all n signatures. Errors: QB_CRYPTO; QB_CONFLICT not certified yet. */
 enum qb_status campaign_certified_group(const struct campaign *c, struct custody_group *out,
                                         struct qb_error *e) QB_MUST_USE;

@@ -20,8 +20,12 @@ static const struct wire_route routes[R_COUNT] = {
     {R_CAMPAIGNS_POST, "POST", "/v1/campaigns", B(ADMINISTRATOR) | B(CUSTODIAN), false, 24 * MIB, "plan",
      "Drafts a campaign from a plan"},
     {R_CAMPAIGN, "GET", "/v1/campaigns/{c}", MEMBERS, true, 0, "", "State, keys and counts that reveal nothing"},
-    {R_KEYGEN, "POST", "/v1/campaigns/{c}/keygen/{round}", B(CUSTODIAN), true, 256 * KIB,
-     "deal certify keygen-failed contribution-commitment", "One message of the key generation"},
+    {R_KEYGEN, "POST", "/v1/campaigns/{c}/keygen/{round}", B(CUSTODIAN) | B(ADMINISTRATOR), true, 256 * KIB,
+     "deal certify keygen-failed complaint exclusion contribution-commitment rehearsal-request reshare-request "
+     "reshare-deal reshare-complaint reshare-failed reshare-certify share-erased repair-request repair-split "
+     "repair-sum "
+     "repair-failed repaired",
+     "One message about the shares of the group key"},
     {R_SEAL, "POST", "/v1/campaigns/{c}/seal", B(ADMINISTRATOR), true, 16 * KIB, "seal-request", "Starts the sealer"},
     {R_SEALER, "GET", "/v1/campaigns/{c}/sealer", MEMBERS, true, 0, "", "Progress of the sealing"},
     {R_SEALER_COLLECT, "GET", "/v1/campaigns/{c}/sealer/messages", B(ADMINISTRATOR), true, 0, "",
@@ -30,8 +34,8 @@ static const struct wire_route routes[R_COUNT] = {
      "Messages from it"},
     {R_CONTRIBUTIONS, "POST", "/v1/campaigns/{c}/sealer/contributions", B(CUSTODIAN), true, 16 * KIB, "contribution",
      "A custodian's contribution to the draw, encrypted to the sealer"},
-    {R_REHEARSALS, "POST", "/v1/campaigns/{c}/sealer/rehearsals", B(CUSTODIAN), true, 16 * KIB, "rehearsal",
-     "A custodian's opening of the canary"},
+    {R_REHEARSALS, "POST", "/v1/campaigns/{c}/sealer/rehearsals", B(CUSTODIAN), true, 16 * KIB,
+     "rehearsal reshare-rehearsal", "A custodian's opening of the canary"},
     {R_RECORDS, "GET", "/v1/campaigns/{c}/records", MEMBERS, true, 0, "",
      "Sealed records: custodians always, others after closing"},
     {R_SLOTS, "GET", "/v1/campaigns/{c}/slots", MEMBERS, true, 0, "", "The schedule, paged"},
