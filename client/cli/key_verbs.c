@@ -5,6 +5,7 @@
 #include "client/cli/internal.h"
 #include "server/base/alloc.h"
 #include "server/base/text.h"
+#include "server/custody/words.h"
 
 /* Reproducible keys for rehearsals that documentation shows; marked so by the quick key file level. */
 static enum qb_status key_from_seed(int64_t seed, const char *name, struct party_key *out, struct qb_error *e)
@@ -29,8 +30,12 @@ static enum qb_status key_from_seed(int64_t seed, const char *name, struct party
 static void show(struct cli_call *c)
 {
 	char words[PARTY_FINGERPRINT_TEXT], id[33];
+	uint8_t bytes[PARTY_FINGERPRINT_BYTES];
+	struct buf spoken = {0};
 	hex_encode(id, c->home.key_id, 16);
 	party_fingerprint(&c->home.pub, words);
+	party_fingerprint_bytes(&c->home.pub, bytes);
+	words_put(bytes, sizeof bytes, &spoken);
 	if (cli_wants_json(c)) {
 		json_t *doc = json_object();
 		json_object_set_new(doc, "name", json_string(c->home.name));
@@ -38,12 +43,16 @@ static void show(struct cli_call *c)
 		json_object_set_new(doc, "signing_key", json_hex_new(c->home.pub.sign, 32));
 		json_object_set_new(doc, "exchange_key", json_hex_new(c->home.pub.exchange, 32));
 		json_object_set_new(doc, "fingerprint", json_string(words));
+		json_object_set_new(doc, "fingerprint_words", json_string((const char *)spoken.data));
 		cli_json(c, doc);
 		json_decref(doc);
+		buf_free(&spoken);
 		return;
 	}
-	cli_print(c, "name         %s\nkey id       %s\nfingerprint  %s\n", c->home.name, id, words);
+	cli_print(c, "name         %s\nkey id       %s\nfingerprint  %s\nin words     %s\n", c->home.name, id, words,
+	          (const char *)spoken.data);
 	cli_print(c, "Compare the fingerprint by telephone before anybody relies on it.\n");
+	buf_free(&spoken);
 }
 
 static enum qb_status run_new(struct cli_call *c)
@@ -157,6 +166,10 @@ static enum qb_status run_rotate(struct cli_call *c)
 	return st;
 }
 
+static const struct cli_option backup_options[] = {{"out", "FILE", true, "the text, to print and lock away"},
+                                                   {NULL, NULL, false, NULL}};
+static const struct cli_option restore_options[] = {
+    {"name", "NAME", false, "with a party's keys: the name they were enrolled under"}, {NULL, NULL, false, NULL}};
 static const struct cli_option rotate_options[] = {{"reason", "TEXT", true, "why, for the ledger"},
                                                    {NULL, NULL, false, NULL}};
 static const struct cli_option new_options[] = {
@@ -174,6 +187,12 @@ const struct cli_verb cli_key_verbs[] = {
     {"key", "show", "", run_show, NULL, "shows name, key id and fingerprint", "quietbell key show"},
     {"key", "change-passphrase", "", run_change, change_options, "encrypts the key file under a new passphrase",
      "quietbell key change-passphrase"},
+    {"key", "backup", "[CAMPAIGN]", cli_key_backup, backup_options,
+     "writes the share of a campaign, or this party's keys, as text for paper, still under the passphrase",
+     "quietbell key backup fells-spring --out share.txt"},
+    {"key", "restore", "FILE", cli_key_restore, restore_options,
+     "reads such a text back into this home; a wrong line is named",
+     "quietbell key restore share.txt --home /media/new/home"},
     {"key", "rotate", "", run_rotate, rotate_options, "replaces this party's keys; the old ones sign it",
      "quietbell key rotate --reason 'yearly'"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

@@ -5,6 +5,7 @@
 #include "client/cli/internal.h"
 #include "server/base/alloc.h"
 #include "server/base/text.h"
+#include "server/custody/words.h"
 
 static void code_hash(const char *code, uint8_t out[static 64])
 {
@@ -106,10 +107,12 @@ static enum qb_status run_retire(struct cli_call *c)
 	return st;
 }
 
-/* The fingerprint is typed as it was heard, and must be that of the keys that wait. */
+/* The fingerprint is typed as it was heard, in digits or words, and must be that of the keys that wait. */
 static enum qb_status run_vouch(struct cli_call *c)
 {
 	char own[PARTY_FINGERPRINT_TEXT];
+	uint8_t bytes[PARTY_FINGERPRINT_BYTES], typed[PARTY_FINGERPRINT_BYTES];
+	struct qb_error ignored = {0};
 	struct party_public pub;
 	const char *name = cli_arg(c, 0), *heard = cli_option(c, "fingerprint");
 	enum qb_status st = cli_follow(c);
@@ -122,7 +125,10 @@ static enum qb_status run_vouch(struct cli_call *c)
 	memcpy(pub.sign, p->pending.signing_key, 32);
 	memcpy(pub.exchange, p->pending.exchange_key, 32);
 	party_fingerprint(&pub, own);
-	if (strcmp(own, heard) != 0)
+	party_fingerprint_bytes(&pub, bytes);
+	bool spoken = words_parse(heard, strlen(heard), typed, sizeof typed, &ignored) == QB_OK &&
+	              memcmp(typed, bytes, sizeof typed) == 0;
+	if (strcmp(own, heard) != 0 && !spoken)
 		return qb_fail(
 		    &c->error, QB_NO, "--fingerprint",
 		    "if the person on the telephone insists on theirs, somebody else enrolled: tell everybody",
@@ -182,7 +188,12 @@ static enum qb_status run_list(struct cli_call *c)
 		json_object_set_new(j, "role", json_string(wire_role_word(v->party[i]->role)));
 		char note[200];
 		remark(v->party[i], note, sizeof note);
+		struct buf spoken = {0};
+		uint8_t bytes[PARTY_FINGERPRINT_BYTES];
+		party_fingerprint_bytes(&pub, bytes);
+		words_put(bytes, sizeof bytes, &spoken);
 		json_object_set_new(j, "fingerprint", json_string(words));
+		json_object_set_new(j, "fingerprint_words", json_string((const char *)spoken.data));
 		json_object_set_new(j, "person", json_string(v->party[i]->person));
 		json_object_set_new(j, "retired", json_boolean(v->party[i]->retired));
 		json_object_set_new(j, "key", json_integer(v->party[i]->n_past + 1));
@@ -192,6 +203,9 @@ static enum qb_status run_list(struct cli_call *c)
 		if (!cli_wants_json(c))
 			cli_print(c, "%-14s %-14s %s%s\n", v->party[i]->name, wire_role_word(v->party[i]->role), words,
 			          note);
+		if (!cli_wants_json(c) && cli_option(c, "words") != NULL)
+			cli_print(c, "    %s\n", (const char *)spoken.data);
+		buf_free(&spoken);
 	}
 	if (cli_wants_json(c))
 		cli_json(c, list);
@@ -203,6 +217,8 @@ static const struct cli_option invite_options[] = {{"reason", "TEXT", false, "wh
                                                    {NULL, NULL, false, NULL}};
 static const struct cli_option why_options[] = {{"reason", "TEXT", true, "why, for the ledger"},
                                                 {NULL, NULL, false, NULL}};
+static const struct cli_option list_options[] = {
+    {"words", NULL, false, "fingerprints in words, too, for the telephone"}, {NULL, NULL, false, NULL}};
 static const struct cli_option vouch_options[] = {
     {"fingerprint", "TEXT", true, "of the new keys, as the person read it out"},
     {"reason", "TEXT", true, "how it was compared, for the ledger"},
@@ -213,7 +229,7 @@ const struct cli_verb cli_party_verbs[] = {
      "quietbell party invite custodian ines"},
     {"party", "enrol", "CODE", run_enrol, NULL, "enrols this home's key with an invitation code",
      "quietbell party enrol custodian.ines.0123... --service http://127.0.0.1:8787"},
-    {"party", "list", "", run_list, NULL, "lists the enrolled parties from the verified ledger",
+    {"party", "list", "", run_list, list_options, "lists the enrolled parties from the verified ledger",
      "quietbell party list"},
     {"party", "person", "NAME PERSON", run_person, why_options,
      "says that a party is a person known under another name",

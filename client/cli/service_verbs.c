@@ -128,7 +128,7 @@ static enum qb_status run_clock(struct cli_call *c)
 	if (st == QB_OK && to < c->link.now_gps_ns)
 		st = qb_fail(&c->error, QB_REFUSED, "clock", NULL, "a clock is never set back");
 	for (int i = 0; st == QB_OK && i < c->follow.view.n_campaigns; i++) {
-		if (c->follow.view.campaign[i]->state == C_SEALED)
+		if (c->follow.view.campaign[i]->state == C_SEALED && cli_option(c, "at-once") == NULL)
 			st = step_campaign(c, c->follow.view.campaign[i], to);
 	}
 	if (st == QB_OK)
@@ -139,7 +139,10 @@ static enum qb_status run_clock(struct cli_call *c)
 	return st;
 }
 
-static const struct cli_option clock_options[] = {{"to", "GPS", true, "GPS seconds or UTC"}, {NULL, NULL, false, NULL}};
+static const struct cli_option clock_options[] = {
+    {"to", "GPS", true, "GPS seconds or UTC"},
+    {"at-once", NULL, false, "not in steps: slots in between go unplayed when their drivers can't keep up"},
+    {NULL, NULL, false, NULL}};
 
 const struct cli_verb cli_service_verbs[] = {
     {"service", "show", "", run_show, NULL, "shows address, key and clock of the service",
