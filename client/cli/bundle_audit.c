@@ -286,12 +286,14 @@ static enum qb_status make_claims(const struct verified *v, json_t *list, struct
 
 enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *out, struct qb_error *e)
 {
-	*out = (struct bundle_audit){json_object(), json_array(), json_array()};
+	*out = (struct bundle_audit){json_object(), json_array(), json_array(), json_array()};
 	enum qb_status st = make_settings(v, out->settings, e);
 	if (st == QB_OK)
 		st = make_slots(v, out->slots, e);
 	if (st == QB_OK)
 		st = make_claims(v, out->claims, e);
+	if (st == QB_OK)
+		st = bundle_guesses_of(v, out->guesses, e);
 	if (st != QB_OK)
 		bundle_audit_free(out);
 	return st;
@@ -302,6 +304,7 @@ void bundle_audit_free(struct bundle_audit *a)
 	json_decref(a->settings);
 	json_decref(a->slots);
 	json_decref(a->claims);
+	json_decref(a->guesses);
 	*a = (struct bundle_audit){0};
 }
 

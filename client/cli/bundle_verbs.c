@@ -107,9 +107,11 @@ static enum qb_status run_unpack(struct cli_call *c)
 		st = write_lines(c, dir, "slots.jsonl", a.slots);
 	if (st == QB_OK)
 		st = write_lines(c, dir, "claims.jsonl", a.claims);
+	if (st == QB_OK && json_array_size(a.guesses) > 0)
+		st = write_lines(c, dir, "guesses.jsonl", a.guesses);
 	if (st == QB_OK)
-		cli_print(c, "%s: settings, %zu slots, %zu claims\n", dir, json_array_size(a.slots),
-		          json_array_size(a.claims));
+		cli_print(c, "%s: settings, %zu slots, %zu claims, %zu guesses\n", dir, json_array_size(a.slots),
+		          json_array_size(a.claims), json_array_size(a.guesses));
 	bundle_audit_free(&a);
 	verified_free(&v);
 	return st;

@@ -358,6 +358,8 @@ static const struct {
     {"recipes and one-time keys are those of the sealing", "hashes entered before anything was played", check_recipes},
     {"enough custodians opened, each correctly", "proof of each partial opening, combination, hash of all contents",
      check_opening},
+    {"every guess came before its slot", "promised times, places in the ledger, the slot in each sealed guess",
+     verify_guesses},
     {"nobody chose the draw", "every contribution fits the commitment made before it; the seed follows", verify_seed},
     {"the opened contents are what was sealed", "sealed again from the seed: byte for byte the same records",
      verify_reseal},
@@ -384,7 +386,8 @@ enum qb_status bundle_verify(const char *path, struct verified **out, struct qb_
 		c->done = true;
 		c->holds = checks[i].fn(v, &one) == QB_OK;
 		(void)snprintf(c->detail, sizeof c->detail, "%.399s",
-		               c->holds ? "" : qb_error_line(&one, line, sizeof line));
+		               c->holds ? v->note : qb_error_line(&one, line, sizeof line));
+		v->note[0] = '\0';
 		if (!c->holds) {
 			v->all = false;
 			st = qb_fail(e, QB_NO, "bundle", "do not rely on it", "not verified: %s: %.250s", c->property,

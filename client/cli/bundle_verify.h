@@ -9,7 +9,7 @@
 #include "server/audit/input.h"
 #include "server/drill/truth.h"
 
-#define VERIFY_CHECKS 12
+#define VERIFY_CHECKS 16
 
 struct verify_check {
 	const char *property, *how;
@@ -28,6 +28,7 @@ struct verified {
 	struct verify_check check[VERIFY_CHECKS];
 	int n_checks;
 	bool all;
+	char note[400]; /* what a check that holds has to add; taken into its detail */
 };
 /*
  * Returned: *out    also when a property fails (out->all is false); NULL only when the file can't be read as a bundle
@@ -41,9 +42,14 @@ enum qb_status verify_seed(struct verified *v, struct qb_error *e) QB_MUST_USE;
 enum qb_status verify_reseal(struct verified *v, struct qb_error *e) QB_MUST_USE;
 enum qb_status verify_redraw(struct verified *v, struct qb_error *e) QB_MUST_USE;
 
-/* Settings, slots and claims of a verified bundle as the audit reads them, owned by the caller. */
+/* Every guess was received before its slot started, and is about it (bundle_guesses.c). */
+enum qb_status verify_guesses(struct verified *v, struct qb_error *e) QB_MUST_USE;
+/* Appends the standing guesses: the newest of each person about each slot. */
+enum qb_status bundle_guesses_of(const struct verified *v, json_t *list, struct qb_error *e) QB_MUST_USE;
+
+/* Settings, slots, claims and guesses of a verified bundle as the audit reads them, owned by the caller. */
 struct bundle_audit {
-	json_t *settings, *slots, *claims; /* object, array, array */
+	json_t *settings, *slots, *claims, *guesses; /* object, arrays */
 };
 enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *out, struct qb_error *e) QB_MUST_USE;
 void bundle_audit_free(struct bundle_audit *a);

@@ -63,5 +63,7 @@ enum qb_status cli_key_backup(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_key_restore(struct cli_call *c) QB_MUST_USE;
 /* Appends the names of a comma-separated option; nothing when it is absent. QB_USAGE */
 enum qb_status cli_option_names(struct cli_call *c, const char *option, json_t *out) QB_MUST_USE;
+/* The verb `slot guess`. */
+enum qb_status cli_guess(struct cli_call *c) QB_MUST_USE;
 
 #endif

@@ -175,6 +175,8 @@ static const struct cli_option stop_options[] = {{"station", "S", false, "this s
                                                  {"all-stations", NULL, false, "every station"},
                                                  {"reason", "TEXT", false, "why"},
                                                  {NULL, NULL, false, NULL}};
+static const struct cli_option guess_options[] = {
+    {"probability", "P", false, "how probable it is that the slot is live, 0 to 1"}, {NULL, NULL, false, NULL}};
 static const struct cli_option reason_options[] = {{"reason", "TEXT", false, "why"}, {NULL, NULL, false, NULL}};
 
 const struct cli_verb cli_slot_verbs[] = {
@@ -186,4 +188,7 @@ const struct cli_verb cli_slot_verbs[] = {
      "quietbell slot lift fells-spring 131"},
     {"slot", "stop", "CAMPAIGN", run_stop, stop_options, "stops the drive at once (operator)",
      "quietbell slot stop fells-spring --all-stations"},
+    {"slot", "guess", "CAMPAIGN N GUESS", cli_guess, guess_options,
+     "seals a guess before a slot starts: live, null or dont-know; a later one replaces it (operator, analyst)",
+     "quietbell slot guess fells-spring 7 live --probability 0.7"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

@@ -65,6 +65,8 @@ enum qb_status truth_compare(const struct drill_truth *sealed, const struct dril
 
 /* The slot's fields as an audit folder's slots.jsonl has them, all but `state`; owned by the caller. */
 json_t *truth_audit_json(const struct drill_truth *t);
+/* How the audit names a slot. */
+void truth_slot_id(int64_t slot, char out[static 32]);
 /* The whole interval of the drill over all stations. */
 void truth_drive_interval(const struct drill_truth *t, int64_t *from_ns, int64_t *to_ns);
 

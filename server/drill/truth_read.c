@@ -288,11 +288,16 @@ enum qb_status truth_compare(const struct drill_truth *sealed, const struct dril
 	return c.status;
 }
 
+void truth_slot_id(int64_t slot, char out[static 32])
+{
+	(void)snprintf(out, 32, "slot-%06" PRId64, slot);
+}
+
 json_t *truth_audit_json(const struct drill_truth *t)
 {
 	char name[32];
 	json_t *j = json_object();
-	(void)snprintf(name, sizeof name, "slot-%06" PRId64, t->slot);
+	truth_slot_id(t->slot, name);
 	json_object_set_new(j, "slot_id", json_string(name));
 	json_object_set_new(j, "planned_gps", json_gps_new(t->slot_start_ns));
 	json_object_set_new(j, "assignment", json_string(t->live ? "live" : "null"));

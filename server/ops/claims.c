@@ -5,16 +5,6 @@
 #include "server/base/text.h"
 #include "server/ops/internal.h"
 
-static enum qb_status taking_claims(const struct campaign *c, struct qb_error *e)
-{
-	if (c->state == C_SEALED)
-		return QB_OK;
-	return qb_fail(e, QB_CONFLICT, "claims", NULL,
-	               c->state > C_SEALED
-	                   ? "the analysis is closed: no claim, milestone or withdrawal is taken any more"
-	                   : "the campaign is not sealed yet");
-}
-
 static enum qb_status check_pipeline(const struct campaign *c, const struct ops_call *call, const char *pipeline,
                                      struct qb_error *e)
 {
@@ -27,95 +17,22 @@ static enum qb_status check_pipeline(const struct campaign *c, const struct ops_
 	               call->who->name, pipeline);
 }
 
-struct highest {
-	const uint8_t *author;
-	int64_t sequence;
-	const char *claim_hex; /* a receipt id to look for, or NULL */
-	bool found, withdrawn;
-};
-
-static enum qb_status look(void *state, const struct store_hidden *h, struct qb_error *e)
-{
-	struct highest *x = state;
-	struct wire_entry en;
-	char id[33];
-	if (memcmp(h->author, x->author, 16) != 0)
-		return QB_OK;
-	enum qb_status st = wire_entry_parse((const char *)h->entry, h->entry_n, &en, e);
-	if (st != QB_OK)
-		return st;
-	const char *type = en.type->type;
-	bool sealed = strcmp(type, "claim") == 0 || strcmp(type, "milestone") == 0;
-	if (sealed && wire_entry_int(&en, "sequence") > x->sequence)
-		x->sequence = wire_entry_int(&en, "sequence");
-	hex_encode(id, h->commitment, 16);
-	if (x->claim_hex != NULL && strcmp(type, "claim") == 0 && strcmp(id, x->claim_hex) == 0)
-		x->found = true;
-	if (x->claim_hex != NULL && strcmp(type, "claim-withdrawal") == 0 &&
-	    strcmp(wire_entry_text(&en, "claim"), x->claim_hex) == 0)
-		x->withdrawn = true;
-	wire_entry_free(&en);
-	return QB_OK;
-}
-
-static enum qb_status check_record(struct ops *o, const struct campaign *c, const struct ops_call *call,
-                                   const struct accepted *a, enum record_type type, const struct buf *b,
-                                   struct record *rec, struct qb_error *e)
-{
-	struct highest x = {.author = call->who->key_id, .sequence = -1};
-	int64_t sequence = wire_entry_int(&a->entry, "sequence");
-	uint8_t id[64];
-	enum qb_status st = record_check(&c->group, b->data, b->len, rec, e);
-	if (st == QB_OK)
-		st = record_expect(rec, type, (uint64_t)sequence, e);
-	if (st == QB_OK && memcmp(rec->header.author, call->who->key_id, 16) != 0)
-		st = qb_fail(e, QB_CRYPTO, "record: author", "seal your own claim",
-		             "the record was sealed by another author");
-	wire_entry_hex(&a->entry, "record_id", id, 64);
-	if (st == QB_OK && memcmp(id, rec->id, 64) != 0)
-		st = qb_fail(e, QB_CRYPTO, "entry: record_id", NULL, "is not the record that was sent");
-	if (st == QB_OK)
-		st = store_hidden_all(o->store, c->id, look, &x, e);
-	if (st == QB_OK && sequence <= x.sequence)
-		st = qb_fail(e, QB_CONFLICT, "claim: sequence", "use the next number", "%lld was used before",
-		             (long long)sequence);
-	return st;
-}
-
-static enum qb_status take(struct ops *o, struct campaign *c, const struct ops_call *call, const struct accepted *a,
-                           const struct record *rec, struct ops_reply *reply, struct qb_error *e)
-{
-	struct txn t;
-	uint8_t commitment[64];
-	enum qb_status st = txn_begin(&t, o, a->entry.type->type, e);
-	if (st != QB_OK)
-		return st;
-	if (rec != NULL)
-		st = put_sealed(o, c, rec, -1, "", e);
-	if (st == QB_OK)
-		st = hidden_take(&t, c, call, a, reply, commitment, e);
-	if (st == QB_OK)
-		st = txn_commit(&t, e);
-	txn_end(&t);
-	return st;
-}
-
 enum qb_status case_claim(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                           struct qb_error *e)
 {
 	struct accepted a;
 	struct buf b = {0};
 	struct record rec;
-	enum qb_status st = taking_claims(c, e);
+	enum qb_status st = submit_open(c, e);
 	if (st != QB_OK || (st = accept_entry(o, call, c, &a, e)) != QB_OK)
 		return st;
 	st = check_pipeline(c, call, wire_entry_text(&a.entry, "pipeline"), e);
 	if (st == QB_OK)
 		st = body_base64(call->body, "record", RECORD_BYTES_MAX, &b, e);
 	if (st == QB_OK)
-		st = check_record(o, c, call, &a, RECORD_CLAIM, &b, &rec, e);
+		st = submit_check(o, c, call, &a, RECORD_CLAIM, &b, &rec, e);
 	if (st == QB_OK)
-		st = take(o, c, call, &a, &rec, reply, e);
+		st = submit_take(o, c, call, &a, &rec, reply, e);
 	if (st == QB_OK)
 		c->n_claims++;
 	buf_free(&b);
@@ -123,11 +40,38 @@ enum qb_status case_claim(struct ops *o, struct campaign *c, const struct ops_ca
 	return st;
 }
 
+/* What a party did with a claim of its own, whichever of its keys it had then. */
+struct own_claim {
+	struct ops *o;
+	const char *name, *claim_hex;
+	bool found, withdrawn;
+};
+
+static enum qb_status look_for_claim(void *state, const struct store_hidden *h, struct qb_error *e)
+{
+	struct own_claim *x = state;
+	struct wire_entry en;
+	char id[33];
+	const struct view_party *author = view_party_by_id(&x->o->view, h->author);
+	if (author == NULL || strcmp(author->name, x->name) != 0)
+		return QB_OK;
+	enum qb_status st = wire_entry_parse((const char *)h->entry, h->entry_n, &en, e);
+	if (st != QB_OK)
+		return st;
+	hex_encode(id, h->commitment, 16);
+	if (strcmp(en.type->type, "claim") == 0 && strcmp(id, x->claim_hex) == 0)
+		x->found = true;
+	if (strcmp(en.type->type, "claim-withdrawal") == 0 && strcmp(wire_entry_text(&en, "claim"), x->claim_hex) == 0)
+		x->withdrawn = true;
+	wire_entry_free(&en);
+	return QB_OK;
+}
+
 static enum qb_status check_own_claim(struct ops *o, const struct campaign *c, const struct ops_call *call,
                                       const struct accepted *a, struct qb_error *e)
 {
-	struct highest x = {.author = call->who->key_id, .sequence = -1, .claim_hex = call->match->parts[1]};
-	enum qb_status st = store_hidden_all(o->store, c->id, look, &x, e);
+	struct own_claim x = {.o = o, .name = call->who->name, .claim_hex = call->match->parts[1]};
+	enum qb_status st = store_hidden_all(o->store, c->id, look_for_claim, &x, e);
 	if (st == QB_OK && (!x.found || strcmp(wire_entry_text(&a->entry, "claim"), x.claim_hex) != 0))
 		st = qb_fail(e, QB_NOT_FOUND, "claim", "see quietbell claim list", "you have no claim '%s'",
 		             x.claim_hex);
@@ -140,12 +84,12 @@ enum qb_status case_claim_withdraw(struct ops *o, struct campaign *c, const stru
                                    struct ops_reply *reply, struct qb_error *e)
 {
 	struct accepted a;
-	enum qb_status st = taking_claims(c, e);
+	enum qb_status st = submit_open(c, e);
 	if (st != QB_OK || (st = accept_entry(o, call, c, &a, e)) != QB_OK)
 		return st;
 	st = check_own_claim(o, c, call, &a, e);
 	if (st == QB_OK)
-		st = take(o, c, call, &a, NULL, reply, e);
+		st = submit_take(o, c, call, &a, NULL, reply, e);
 	accepted_free(&a);
 	return st;
 }
@@ -156,23 +100,24 @@ enum qb_status case_milestone(struct ops *o, struct campaign *c, const struct op
 	struct accepted a;
 	struct buf b = {0};
 	struct record rec;
-	enum qb_status st = taking_claims(c, e);
+	enum qb_status st = submit_open(c, e);
 	if (st != QB_OK || (st = accept_entry(o, call, c, &a, e)) != QB_OK)
 		return st;
 	st = check_own_claim(o, c, call, &a, e);
 	if (st == QB_OK)
 		st = body_base64(call->body, "record", RECORD_BYTES_MAX, &b, e);
 	if (st == QB_OK)
-		st = check_record(o, c, call, &a, RECORD_MILESTONE, &b, &rec, e);
+		st = submit_check(o, c, call, &a, RECORD_MILESTONE, &b, &rec, e);
 	if (st == QB_OK)
-		st = take(o, c, call, &a, &rec, reply, e);
+		st = submit_take(o, c, call, &a, &rec, reply, e);
 	buf_free(&b);
 	accepted_free(&a);
 	return st;
 }
 
 struct own {
-	const uint8_t *author;
+	struct ops *o;
+	const char *name;
 	json_t *list;
 };
 
@@ -180,7 +125,8 @@ static enum qb_status list_own(void *state, const struct store_hidden *h, struct
 {
 	struct own *x = state;
 	struct wire_entry en;
-	if (memcmp(h->author, x->author, 16) != 0)
+	const struct view_party *author = view_party_by_id(&x->o->view, h->author);
+	if (author == NULL || strcmp(author->name, x->name) != 0)
 		return QB_OK;
 	enum qb_status st = wire_entry_parse((const char *)h->entry, h->entry_n, &en, e);
 	if (st != QB_OK)
@@ -209,7 +155,7 @@ static enum qb_status list_own(void *state, const struct store_hidden *h, struct
 enum qb_status case_claims_list(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                                 struct qb_error *e)
 {
-	struct own x = {call->who->key_id, json_array()};
+	struct own x = {o, call->who->name, json_array()};
 	reply->http_status = 200;
 	reply->doc = json_object();
 	json_object_set_new(reply->doc, "claims", x.list);

@@ -110,6 +110,17 @@ enum qb_status hidden_summary(struct txn *t, const struct campaign *c, struct qb
 enum qb_status hidden_batch_time_load(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 bool hidden_due(const struct ops *o, const struct campaign *c, int64_t now_ns);
 
+/* ---- submit.c: what claims, milestones, guesses and incidents have in common ---- */
+/* QB_CONFLICT unless the campaign is sealed and not closed. */
+enum qb_status submit_open(const struct campaign *c, struct qb_error *e) QB_MUST_USE;
+/* The record in b is sound, of this type, the requester's own, the entry's, and has the next sequence number. */
+enum qb_status submit_check(struct ops *o, const struct campaign *c, const struct ops_call *call,
+                            const struct accepted *a, enum record_type type, const struct buf *b, struct record *rec,
+                            struct qb_error *e) QB_MUST_USE;
+/* Stores record (may be NULL) and hidden entry in one transaction and fills the receipt. */
+enum qb_status submit_take(struct ops *o, struct campaign *c, const struct ops_call *call, const struct accepted *a,
+                           const struct record *rec, struct ops_reply *reply, struct qb_error *e) QB_MUST_USE;
+
 /* ---- use cases, one file per group; all run under the lock ---- */
 typedef enum qb_status use_case(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                                 struct qb_error *e);
@@ -119,7 +130,7 @@ use_case case_service, case_parties_list, case_parties_post, case_campaigns_list
     case_witness, case_prekeys, case_recipe, case_recipe_key, case_note, case_report, case_claim, case_claims_list,
     case_claim_withdraw, case_milestone, case_close, case_sign, case_opening_request, case_openings_list, case_opening,
     case_opening_shares, case_bundle, case_head, case_entries, case_inclusion, case_consistency, case_cosign,
-    case_clock;
+    case_clock, case_guess, case_receipts;
 
 /* ---- people.c ---- */
 /* The rules of entries about people that are enrolled: same-person, key-rotation, vouch, retirement. */
