@@ -10,9 +10,12 @@
 _Static_assert(crypto_core_ristretto255_BYTES == POINT_BYTES, "point size");
 _Static_assert(crypto_core_ristretto255_SCALARBYTES == SCALAR_BYTES, "scalar size");
 
+/* The library takes a point with the highest bit set for the one without it: a second encoding, of the identity, too.
+ */
 bool group_point_ok(const uint8_t p[static POINT_BYTES])
 {
-	return !sodium_is_zero(p, POINT_BYTES) && crypto_core_ristretto255_is_valid_point(p) == 1;
+	bool canonical = (p[POINT_BYTES - 1] & 0x80) == 0;
+	return canonical && !sodium_is_zero(p, POINT_BYTES) && crypto_core_ristretto255_is_valid_point(p) == 1;
 }
 
 bool group_scalar_canonical(const uint8_t s[static SCALAR_BYTES])

@@ -69,6 +69,22 @@ static void scalars_must_be_canonical_and_not_zero(void **state)
 	assert_false(group_mul_base(p, s));
 }
 
+/* RFC 9496, 4.3.1: an encoding is below the field's prime, so that its highest bit is never set. */
+static void points_have_one_encoding(void **state)
+{
+	(void)state;
+	uint8_t s[SCALAR_BYTES], p[POINT_BYTES], out[POINT_BYTES], identity[POINT_BYTES] = {0};
+	group_scalar_random(s);
+	assert_true(group_mul_base(p, s));
+	assert_true(group_point_ok(p));
+	p[POINT_BYTES - 1] |= 0x80;
+	identity[POINT_BYTES - 1] = 0x80;
+	assert_false(group_point_ok(p));
+	assert_false(group_point_ok(identity));
+	assert_false(group_mul(out, s, p));
+	assert_false(group_add(out, p, p));
+}
+
 static void sums_that_vanish_are_refused(void **state)
 {
 	(void)state;
@@ -84,8 +100,11 @@ static void sums_that_vanish_are_refused(void **state)
 }
 
 static const struct CMUnitTest tests[] = {
-    cmocka_unit_test(polynomial_agrees_with_its_commitments), cmocka_unit_test(lagrange_recovers_the_constant),
-    cmocka_unit_test(lagrange_refuses_impossible_indices),    cmocka_unit_test(scalars_must_be_canonical_and_not_zero),
+    cmocka_unit_test(polynomial_agrees_with_its_commitments),
+    cmocka_unit_test(lagrange_recovers_the_constant),
+    cmocka_unit_test(lagrange_refuses_impossible_indices),
+    cmocka_unit_test(scalars_must_be_canonical_and_not_zero),
+    cmocka_unit_test(points_have_one_encoding),
     cmocka_unit_test(sums_that_vanish_are_refused),
 };
 SCENE_MAIN(tests)
