@@ -1,6 +1,8 @@
 /* Reads an audit folder's files into the audit's input. */
 #include "client/cli/audit_source.h"
 
+#include <unistd.h>
+
 #include "server/base/alloc.h"
 #include "server/base/buf.h"
 #include "server/base/text.h"
@@ -31,6 +33,11 @@ enum qb_status audit_source_folder(const char *dir, struct audit_input **out, st
 		st = take_file(dir, "slots.jsonl", LINES_MAX, audit_input_slots_text, in, e);
 	if (st == QB_OK)
 		st = take_file(dir, "claims.jsonl", LINES_MAX, audit_input_claims_text, in, e);
+	/* The course of a campaign is there when the folder comes from a bundle. */
+	char *course = text_printf("%s/course.json", dir);
+	if (st == QB_OK && access(course, F_OK) == 0)
+		st = take_file(dir, "course.json", SETTINGS_MAX, audit_input_course_text, in, e);
+	qb_free(course);
 	if (st != QB_OK)
 		audit_input_free(&in);
 	*out = in;

@@ -286,7 +286,7 @@ static enum qb_status make_claims(const struct verified *v, json_t *list, struct
 
 enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *out, struct qb_error *e)
 {
-	*out = (struct bundle_audit){json_object(), json_array(), json_array(), json_array()};
+	*out = (struct bundle_audit){json_object(), json_array(), json_array(), json_array(), json_object()};
 	enum qb_status st = make_settings(v, out->settings, e);
 	if (st == QB_OK)
 		st = make_slots(v, out->slots, e);
@@ -294,6 +294,8 @@ enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *ou
 		st = make_claims(v, out->claims, e);
 	if (st == QB_OK)
 		st = bundle_guesses_of(v, out->guesses, e);
+	if (st == QB_OK)
+		st = bundle_course_of(v, out->course, e);
 	if (st != QB_OK)
 		bundle_audit_free(out);
 	return st;
@@ -305,6 +307,7 @@ void bundle_audit_free(struct bundle_audit *a)
 	json_decref(a->slots);
 	json_decref(a->claims);
 	json_decref(a->guesses);
+	json_decref(a->course);
 	*a = (struct bundle_audit){0};
 }
 
@@ -330,6 +333,8 @@ enum qb_status audit_source_bundle(const char *path, struct audit_input **out, s
 		if (st == QB_OK)
 			st = audit_input_claim(in, j, "opened claim", e);
 	}
+	if (st == QB_OK)
+		st = audit_input_course(in, a.course, "course", e);
 	bundle_audit_free(&a);
 	verified_free(&v);
 	if (st != QB_OK)

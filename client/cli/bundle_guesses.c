@@ -16,10 +16,10 @@ struct guess {
 	size_t record; /* position in the bundle */
 };
 
-static size_t record_with_id(const struct verified *v, const uint8_t id[static 64])
+size_t bundle_record(const struct bundle *b, const uint8_t id[static 64])
 {
 	size_t i = 0;
-	while (i < v->bundle->records.n && memcmp(v->bundle->records.item[i].rec.id, id, 64) != 0)
+	while (i < b->records.n && memcmp(b->records.item[i].rec.id, id, 64) != 0)
 		i++;
 	return i;
 }
@@ -42,7 +42,7 @@ static enum qb_status guesses_of(const struct verified *v, struct guess **out, s
 			*out = qb_realloc(*out, *n + 1, sizeof **out);
 			(*out)[(*n)++] =
 			    (struct guess){h, view_party_by_id(&v->follow.view, h->author), wire_entry_int(&en, "slot"),
-			                   wire_entry_int(&en, "sequence"), record_with_id(v, id)};
+			                   wire_entry_int(&en, "sequence"), bundle_record(v->bundle, id)};
 		}
 		wire_entry_free(&en);
 	}

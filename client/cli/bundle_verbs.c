@@ -110,6 +110,8 @@ static enum qb_status run_unpack(struct cli_call *c)
 	if (st == QB_OK && json_array_size(a.guesses) > 0)
 		st = write_lines(c, dir, "guesses.jsonl", a.guesses);
 	if (st == QB_OK)
+		st = write_lines(c, dir, "course.json", a.course);
+	if (st == QB_OK)
 		cli_print(c, "%s: settings, %zu slots, %zu claims, %zu guesses\n", dir, json_array_size(a.slots),
 		          json_array_size(a.claims), json_array_size(a.guesses));
 	bundle_audit_free(&a);

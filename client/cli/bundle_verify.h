@@ -47,9 +47,16 @@ enum qb_status verify_guesses(struct verified *v, struct qb_error *e) QB_MUST_US
 /* Appends the standing guesses: the newest of each person about each slot. */
 enum qb_status bundle_guesses_of(const struct verified *v, json_t *list, struct qb_error *e) QB_MUST_USE;
 
+/* Position of the checked record with this id; the number of records when there is none (bundle_guesses.c). */
+size_t bundle_record(const struct bundle *b, const uint8_t id[static 64]);
+
+/* What happened beside the claims, for the report: see docs/audit.md, "The course" (bundle_course.c). */
+enum qb_status bundle_course_of(const struct verified *v, json_t *course, struct qb_error *e) QB_MUST_USE;
+
 /* Settings, slots, claims and guesses of a verified bundle as the audit reads them, owned by the caller. */
 struct bundle_audit {
 	json_t *settings, *slots, *claims, *guesses; /* object, arrays */
+	json_t *course;                              /* object */
 };
 enum qb_status bundle_audit_of(const struct verified *v, struct bundle_audit *out, struct qb_error *e) QB_MUST_USE;
 void bundle_audit_free(struct bundle_audit *a);

@@ -34,7 +34,7 @@ struct cli_verb {
 extern const struct cli_verb cli_wave_verbs[], cli_reach_verbs[], cli_audit_verbs[], cli_report_verbs[],
     cli_rig_verbs[], cli_scan_verbs[], cli_plan_verbs[], cli_key_verbs[], cli_party_verbs[], cli_campaign_verbs[],
     cli_slot_verbs[], cli_segments_verbs[], cli_drive_verbs[], cli_claim_verbs[], cli_opening_verbs[],
-    cli_ledger_verbs[], cli_service_verbs[], cli_bundle_verbs[];
+    cli_ledger_verbs[], cli_service_verbs[], cli_bundle_verbs[], cli_incident_verbs[];
 
 /* Positional argument i, or NULL when it was not given. */
 const char *cli_arg(const struct cli_call *c, int i);

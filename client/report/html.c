@@ -11,6 +11,7 @@
 #include "client/report/facts.h"
 #include "client/report/figure.h"
 #include "client/report/figures.h"
+#include "client/report/lines.h"
 #include "client/report/page.h"
 #include "client/report/style.h"
 
@@ -117,6 +118,7 @@ static void campaign(struct buf *out, const json_t *doc)
 		drill_table(out, doc);
 		buf_text(out, "</figure>\n");
 	}
+	course_html(out, doc);
 	buf_text(out, "</section>\n");
 }
 

@@ -5,12 +5,13 @@
 #include <string.h>
 
 #include "client/report/facts.h"
+#include "client/report/lines.h"
 
 #define WIDTH 96
 #define MANY  12 /* rows of a list; the tables hold the rest */
 
 /* Wraps at blanks; continuation lines start under the text. Counts bytes, which is close enough for plain English. */
-static void wrap(struct buf *out, const char *lead, const char *text)
+void lines_wrap(struct buf *out, const char *lead, const char *text)
 {
 	const size_t indent = strlen(lead);
 	size_t column = indent;
@@ -33,7 +34,7 @@ static void wrap(struct buf *out, const char *lead, const char *text)
 	buf_text(out, "\n");
 }
 
-static void heading(struct buf *out, const char *text)
+void lines_heading(struct buf *out, const char *text)
 {
 	buf_printf(out, "\n%s\n", text);
 	for (const char *p = text; *p != '\0'; p++)
@@ -49,7 +50,7 @@ static void summary(struct buf *out, const json_t *doc)
 	{
 		char lead[FACT];
 		(void)snprintf(lead, sizeof lead, "%-18s ", json_string_value(json_array_get(pair, 0)));
-		wrap(out, lead, json_string_value(json_array_get(pair, 1)));
+		lines_wrap(out, lead, json_string_value(json_array_get(pair, 1)));
 	}
 	json_decref(list);
 }
@@ -59,7 +60,7 @@ static void states(struct buf *out, const json_t *doc)
 	const char *word;
 	json_t *n;
 	char a[FACT], b[FACT];
-	heading(out, "Campaign");
+	lines_heading(out, "Campaign");
 	buf_text(out, "slots: ");
 	bool first = true;
 	json_object_foreach((json_t *)(uintptr_t)json_object_get(doc, "slot_states"), word, n)
@@ -78,7 +79,7 @@ static void groups(struct buf *out, const json_t *doc)
 	char utc[FACT];
 	size_t i;
 	json_t *g;
-	heading(out, "Claims that match no drill");
+	lines_heading(out, "Claims that match no drill");
 	json_array_foreach((json_t *)(uintptr_t)list, i, g)
 	{
 		if (i == MANY) {
@@ -110,7 +111,7 @@ static void efficiency_line(struct buf *out, const char *name, const json_t *eff
 static void efficiencies(struct buf *out, const json_t *doc)
 {
 	const char *name;
-	heading(out, "Efficiency");
+	lines_heading(out, "Efficiency");
 	buf_printf(out, "%-14s %5s %5s  %8s  %-17s  %-17s  %9s  %9s\n", "", "found", "live", "fraction", "guaranteed",
 	           "Wilson", "corrected", "of played");
 	efficiency_line(out, "at least one", facts_at(doc, "comparison.union"),
@@ -129,7 +130,7 @@ static void curve(struct buf *out, const json_t *doc)
 	const json_t *bins = facts_at(doc, "comparison.union_curves.network_snr.bins");
 	if (json_array_size(bins) == 0)
 		return;
-	heading(out, "Efficiency along network signal-to-noise ratio, at least one pipeline");
+	lines_heading(out, "Efficiency along network signal-to-noise ratio, at least one pipeline");
 	json_array_foreach((json_t *)(uintptr_t)bins, i, bin)
 	{
 		const double x = facts_number(bin, "efficiency");
@@ -150,7 +151,7 @@ static void missed(struct buf *out, const json_t *doc)
 	char utc[FACT], snr[FACT], mass[FACT], d[FACT];
 	size_t i;
 	json_t *m;
-	heading(out, "Live drills found by nobody, loudest first");
+	lines_heading(out, "Live drills found by nobody, loudest first");
 	json_array_foreach((json_t *)(uintptr_t)list, i, m)
 	{
 		if (i == MANY) {
@@ -172,7 +173,7 @@ static void found_by(struct buf *out, const json_t *doc)
 {
 	const char *bits, *name;
 	json_t *n;
-	heading(out, "Found by");
+	lines_heading(out, "Found by");
 	json_object_foreach((json_t *)(uintptr_t)facts_at(doc, "comparison.found_by"), bits, n)
 	{
 		buf_printf(out, "%5" JSON_INTEGER_FORMAT "  ", json_integer_value(n));
@@ -191,7 +192,7 @@ static void residuals(struct buf *out, const json_t *doc)
 {
 	const char *name;
 	char a[FACT], b[FACT], p[FACT];
-	heading(out, "Stated against true values of found drills");
+	lines_heading(out, "Stated against true values of found drills");
 	for (size_t i = 0; (name = facts_pipeline(doc, i)) != NULL; i++) {
 		const json_t *r = json_object_get(json_object_get(doc, "residuals"), name);
 		const json_t *t = json_object_get(r, "arrival_gps"), *m = json_object_get(r, "chirp_mass_msun");
@@ -222,16 +223,17 @@ enum qb_status report_text(const json_t *doc, struct buf *out, struct qb_error *
 	buf_printf(out, "Audit of %s\n\n", *facts_text(doc, "set") != '\0' ? facts_text(doc, "set") : "an unnamed set");
 	summary(out, doc);
 	states(out, doc);
+	course_text(out, doc);
 	groups(out, doc);
 	efficiencies(out, doc);
 	curve(out, doc);
 	found_by(out, doc);
 	missed(out, doc);
 	residuals(out, doc);
-	heading(out, "How to read this");
+	lines_heading(out, "How to read this");
 	json_t *list = facts_limits(doc), *line;
 	size_t i;
-	json_array_foreach(list, i, line) wrap(out, "- ", json_string_value(line));
+	json_array_foreach(list, i, line) lines_wrap(out, "- ", json_string_value(line));
 	json_decref(list);
 	return QB_OK;
 }

@@ -87,6 +87,8 @@ static json_t *assemble(const struct audit_results *r)
 	document_set(doc, "set", s->name != NULL ? json_string(s->name) : json_null());
 	document_set(doc, "settings_used", settings_used(s));
 	document_set(doc, "slot_states", slot_states(r->in));
+	if (r->in->course != NULL)
+		document_set(doc, "course", json_deep_copy(r->in->course));
 	document_set(doc, "observing_livetime_s", document_real(r->background.observing_s));
 	document_set(doc, "background_livetime_s", document_real(r->background.livetime_s));
 	document_set(doc, "largest_window_s", document_real(r->match.largest_window_s));

@@ -58,6 +58,7 @@ void audit_input_free(struct audit_input **in_out)
 	segments_free(&s->observing);
 	segments_free(&s->vetoes);
 	json_decref(s->unknown_keys);
+	json_decref(in->course);
 	names_free(in->columns, in->n_columns);
 	for (size_t i = 0; i < in->n_slots; i++) {
 		qb_free(in->slots[i].slot_id);

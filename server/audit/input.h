@@ -114,6 +114,7 @@ struct audit_input {
 	size_t n_slots, cap_slots;
 	struct audit_claim *claims;
 	size_t n_claims, cap_claims;
+	json_t *course; /* object or NULL: what happened beside the claims; printed, never computed from */
 };
 
 /* An empty input with the default settings; audit_input_free() releases everything and nulls the pointer. */
@@ -137,12 +138,18 @@ enum qb_status audit_input_slot(struct audit_input *in, const json_t *doc, const
 enum qb_status audit_input_claim(struct audit_input *in, const json_t *doc, const char *what,
                                  struct qb_error *e) QB_MUST_USE;
 
+/* At most once. QB_FORMAT when it is no object. */
+enum qb_status audit_input_course(struct audit_input *in, const json_t *doc, const char *what,
+                                  struct qb_error *e) QB_MUST_USE;
+
 /* The same from the text of settings.json, slots.jsonl and claims.jsonl; blank lines are skipped. */
 enum qb_status audit_input_settings_text(struct audit_input *in, const char *text, size_t n, const char *what,
                                          struct qb_error *e) QB_MUST_USE;
 enum qb_status audit_input_slots_text(struct audit_input *in, const char *text, size_t n, const char *what,
                                       struct qb_error *e) QB_MUST_USE;
 enum qb_status audit_input_claims_text(struct audit_input *in, const char *text, size_t n, const char *what,
+                                       struct qb_error *e) QB_MUST_USE;
+enum qb_status audit_input_course_text(struct audit_input *in, const char *text, size_t n, const char *what,
                                        struct qb_error *e) QB_MUST_USE;
 
 /* A number given as a number or as a decimal string; NaN when it is neither. */

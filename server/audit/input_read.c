@@ -234,3 +234,22 @@ enum qb_status audit_input_claims_text(struct audit_input *in, const char *text,
 {
 	return take_lines(in, text, n, what, audit_input_claim, e);
 }
+
+enum qb_status audit_input_course(struct audit_input *in, const json_t *doc, const char *what, struct qb_error *e)
+{
+	if (!json_is_object(doc) || in->course != NULL)
+		return qb_fail(e, QB_FORMAT, what, NULL, "is not one object");
+	in->course = json_deep_copy(doc);
+	return QB_OK;
+}
+
+enum qb_status audit_input_course_text(struct audit_input *in, const char *text, size_t n, const char *what,
+                                       struct qb_error *e)
+{
+	json_t *doc = NULL;
+	enum qb_status st = json_read(text, n, what, &doc, e);
+	if (st == QB_OK)
+		st = audit_input_course(in, doc, what, e);
+	json_decref(doc);
+	return st;
+}

@@ -36,6 +36,7 @@ static use_case *const cases[R_COUNT] = {
     [R_CLAIM_WITHDRAW] = case_claim_withdraw,
     [R_CLAIM_MILESTONES] = case_milestone,
     [R_GUESSES] = case_guess,
+    [R_INCIDENTS] = case_incident,
     [R_RECEIPTS] = case_receipts,
     [R_CLOSE] = case_close,
     [R_SIGNATURES] = case_sign,

@@ -130,7 +130,7 @@ use_case case_service, case_parties_list, case_parties_post, case_campaigns_list
     case_witness, case_prekeys, case_recipe, case_recipe_key, case_note, case_report, case_claim, case_claims_list,
     case_claim_withdraw, case_milestone, case_close, case_sign, case_opening_request, case_openings_list, case_opening,
     case_opening_shares, case_bundle, case_head, case_entries, case_inclusion, case_consistency, case_cosign,
-    case_clock, case_guess, case_receipts;
+    case_clock, case_guess, case_incident, case_receipts;
 
 /* ---- people.c ---- */
 /* The rules of entries about people that are enrolled: same-person, key-rotation, vouch, retirement. */

@@ -65,6 +65,8 @@ static const struct wire_route routes[R_COUNT] = {
      "Files a step of the response"},
     {R_GUESSES, "POST", "/v1/campaigns/{c}/guesses", B(OPERATOR) | B(ANALYST), true, 64 * KIB, "guess",
      "Submits a sealed guess about a slot to come"},
+    {R_INCIDENTS, "POST", "/v1/campaigns/{c}/incidents", MEMBERS, true, 64 * KIB, "incident",
+     "Reports a break of the blind, sealed until the opening"},
     {R_RECEIPTS, "GET", "/v1/campaigns/{c}/receipts", MEMBERS, true, 0, "",
      "One's own receipts of sealed entries, and the next sequence number"},
     {R_CLOSE, "POST", "/v1/campaigns/{c}/close", B(REVIEWER), true, 16 * KIB, "closing", "Closes the analysis"},

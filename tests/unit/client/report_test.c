@@ -226,6 +226,32 @@ static void numbers_are_written_for_people(void **state)
 	assert_string_equal(facts_utc(out, -5), "\xe2\x80\x93");
 }
 
+static void the_course_is_told(void **state)
+{
+	json_t *doc = json_deep_copy(*state), *course;
+	char *text = render(doc, report_text);
+	lacks(text, "breaks of the blind");
+	free(text);
+	course = json_loads("{\"incidents\":[{\"kind\":\"rumour\",\"slots\":[[3,3],[7,9]],\"by\":\"lund\",\"role\":"
+	                    "\"operator\",\"filed_gps\":1487894418.5,\"text\":\"<b>heard</b>\"},"
+	                    "{\"by\":\"noor\",\"filed_gps\":1487894420,\"unreadable\":true}]}",
+	                    0, NULL);
+	json_object_set_new(doc, "course", course);
+	text = render(doc, report_text);
+	holds(text, "by lund: rumour, slots 3, 7 to 9: <b>heard</b>");
+	holds(text, "by noor: unreadable, slots none in particular: what was");
+	free(text);
+	text = render(doc, report_html);
+	holds(text, "&lt;b&gt;heard&lt;/b&gt;");
+	lacks(text, "<b>heard");
+	free(text);
+	json_object_set_new(course, "incidents", json_array());
+	text = render(doc, report_html);
+	holds(text, "Nobody reported a break of the blind.");
+	free(text);
+	json_decref(doc);
+}
+
 int main(void)
 {
 	const struct CMUnitTest tests[] = {
@@ -234,7 +260,7 @@ int main(void)
 	    cmocka_unit_test(every_played_drill_is_drawn),    cmocka_unit_test(hostile_names_stay_text),
 	    cmocka_unit_test(tables_hold_every_row),          cmocka_unit_test(tables_carry_no_formulas),
 	    cmocka_unit_test(other_documents_are_refused),    cmocka_unit_test(an_empty_audit_is_reported_as_such),
-	    cmocka_unit_test(numbers_are_written_for_people),
+	    cmocka_unit_test(numbers_are_written_for_people), cmocka_unit_test(the_course_is_told),
 	};
 	return cmocka_run_group_tests(tests, set_up, tear_down);
 }
