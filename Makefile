@@ -41,7 +41,7 @@ programs   := $(BUILD)/quietbell $(BUILD)/quietbelld $(BUILD)/quietbell-driver
 
 # A failed recipe must not leave a half-written file behind.
 .DELETE_ON_ERROR:
-.PHONY: all lib unit test-programs outside system test check lint arrows format deps demo bench fuzz sanitize valgrind install clean
+.PHONY: all lib unit test-programs outside system test check lint arrows format deps demo bench blind fuzz sanitize valgrind install clean
 all: $(programs)
 lib: $(lib)
 
@@ -143,6 +143,12 @@ $(BUILD)/tests/bench/%: tests/bench/%.c $(lib)
 	$(CC) $(QB_CFLAGS) $(CFLAGS) $(QB_LDFLAGS) -o $@ $< $(lib) $(LIBS_COMMON)
 bench: $(bench_bin)
 	@for b in $(bench_bin); do $$b || exit 1; done
+
+# The blind game at full size (docs/blind-game.md): half an hour for 200 campaigns on a quiet machine.
+CAMPAIGNS ?= 200
+blind: all
+	@mkdir -p $(BUILD)/blind
+	@tests/blind/run --build $(BUILD) --campaigns $(CAMPAIGNS) --bound 0.02 --out $(BUILD)/blind/figures.json --keep $(BUILD)/blind/tables
 
 deps:
 	deploy/deps all
