@@ -220,7 +220,15 @@ enum qb_status put_sealed(struct ops *o, const struct campaign *c, const struct 
 	memcpy(r.author, rec->header.author, 16);
 	memcpy(r.record_id, rec->id, 64);
 	memcpy(r.r_point, rec->r, 32);
-	return store_record_put(o->store, c->id, &r, e);
+	struct qb_error inner = {0};
+	enum qb_status st = store_record_put(o->store, c->id, &r, &inner);
+	/* Two contents under one R would be two under one key. */
+	if (st == QB_CONFLICT)
+		return qb_fail(e, QB_CONFLICT, "record: R", "seal it anew, which draws a fresh R",
+		               "was used before in this campaign");
+	if (st != QB_OK && e != NULL)
+		*e = inner;
+	return st;
 }
 
 static enum qb_status case_filed(struct ops *o, struct campaign *c, const struct ops_call *call,
