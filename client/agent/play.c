@@ -106,16 +106,18 @@ size_t play_emit(struct play *p, int64_t now_ns, double *out)
 	int64_t n = (int64_t)play_block_samples(p);
 	if (n > p->n_samples - p->next)
 		n = p->n_samples - p->next;
+	double peak = p->peak_counts;
 	if (n <= 0 || now_ns < time_of(p, p->next + n))
 		return 0;
 	for (int64_t k = 0; k < n; k++) {
 		int64_t i = p->next + k, j = i - p->drive_at;
 		bool inside = p->drive != NULL && j >= 0 && j < p->drive_n;
 		p->last = (inside ? p->drive[j] : 0) * weight(p, i) + 0.0;
-		if (fabs(p->last) > p->peak_counts)
-			p->peak_counts = fabs(p->last);
+		/* One instruction and no jump: how often a jump is taken would not be the same for silence. */
+		peak = fabs(p->last) > peak ? fabs(p->last) : peak;
 		out[k] = p->last;
 	}
+	p->peak_counts = peak;
 	p->next += n;
 	follow_window(p);
 	return (size_t)n;
