@@ -187,13 +187,18 @@ static int64_t pragma(struct reader *r, const char *sql)
 	return v;
 }
 
-/* SQLite forgives a last page that is cut; a bundle has every byte of every page, and none behind them. */
+/*
+ * SQLite forgives a last page that is cut; a bundle has every byte of every page, and none behind them. The mark of the
+ * format stands in the header.
+ */
 static enum qb_status check_size(struct reader *r, const char *path)
 {
 	struct stat f;
 	int64_t pages = pragma(r, "PRAGMA page_count"), size = pragma(r, "PRAGMA page_size");
 	if (stat(path, &f) != 0 || pages <= 0 || size <= 0 || f.st_size != pages * size)
 		return bad(r, "is truncated, or something was put behind it");
+	if (pragma(r, "PRAGMA application_id") != BUNDLE_APPLICATION_ID)
+		return bad(r, "is no bundle: it does not carry the mark of one");
 	return QB_OK;
 }
 
