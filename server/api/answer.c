@@ -117,7 +117,7 @@ static void authenticate(struct exchange *x)
 		problem_from_error(&x->problem, &e, 0);
 		log_fault(x, &e);
 	} else if ((r.route->roles & ROLE_BIT(x->who.role)) == 0) {
-		problem_set(&x->problem, 403, "refused", "a %s may not do this", wire_role_word(x->who.role));
+		problem_set(&x->problem, 403, "refused", "the role '%s' may not do this", wire_role_word(x->who.role));
 	}
 }
 

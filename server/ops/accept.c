@@ -29,8 +29,8 @@ static enum qb_status check_author(struct ops *o, const struct ops_call *call, c
 		return qb_fail(e, QB_REFUSED, "entry: by", "sign entries in your own name",
 		               "the author is not the requester");
 	if ((en->type->roles & ROLE_BIT(call->who->role)) == 0)
-		return qb_fail(e, QB_REFUSED, "entry", NULL, "a %s can't author '%s'", wire_role_word(call->who->role),
-		               en->type->type);
+		return qb_fail(e, QB_REFUSED, "entry", NULL, "the role '%s' can't author '%s'",
+		               wire_role_word(call->who->role), en->type->type);
 	if (en->has_campaign && (c == NULL || memcmp(en->campaign, c->id, 16) != 0))
 		return qb_fail(e, QB_REFUSED, "entry: campaign", NULL, "the entry is about another campaign");
 	if (off > CLOCK_SLACK_NS)

@@ -30,6 +30,20 @@ static enum qb_status check_one(void *state, const struct store_record *r, struc
 	return st;
 }
 
+/* Once each: what a custodian gave stands, and the same again would count for nothing. */
+static enum qb_status given_before(const json_t *names, const char *name, struct qb_error *e)
+{
+	size_t i;
+	json_t *v;
+	json_array_foreach(names, i, v)
+	{
+		if (strcmp(json_string_value(v), name) == 0)
+			return qb_fail(e, QB_CONFLICT, "opening", "wait for the other custodians", "%s gave before",
+			               name);
+	}
+	return QB_OK;
+}
+
 struct share_set {
 	uint8_t *shares;
 	size_t n;
@@ -115,6 +129,8 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 		st = qb_fail(e, QB_CONFLICT, "opening", NULL, "it is open already");
 	if (st == QB_OK)
 		st = store_shares(o->store, c->id, op->id, opening_add_name, names, e);
+	if (st == QB_OK)
+		st = given_before(names, call->who->name, e);
 	if (st == QB_OK) {
 		blake2b_512(hash, b.data, b.len);
 		wire_entry_hex(&a->entry, "shares_hash", given, 64);
@@ -126,7 +142,8 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 		st = store_records(o->store, c->id, 0, INT64_MAX, check_one, &x, e);
 	if (st == QB_OK &&
 	    (b.len % PARTIAL_BYTES != 0 || x.at != x.n || wire_entry_int(&a->entry, "count") != (int64_t)x.n))
-		st = qb_fail(e, QB_FORMAT, "shares", NULL, "there are more partial openings than records");
+		st =
+		    qb_fail(e, QB_FORMAT, "shares", NULL, "%zu partial openings are needed, one for each record", x.at);
 	if (st == QB_OK && (st = txn_begin(&t, o, "opening-shares", e)) == QB_OK) {
 		st = store_shares_put(o->store, c->id, op->id, call->who->name, b.data, b.len, e);
 		if (st == QB_OK)
@@ -165,6 +182,17 @@ static enum qb_status put_boxes(struct ops *o, const struct campaign *c, const s
 	return st;
 }
 
+static enum qb_status spot_given_before(struct ops *o, const struct campaign *c, const struct opening *op,
+                                        const char *name, const char *to, struct qb_error *e)
+{
+	json_t *names = json_array();
+	enum qb_status st = store_boxes(o->store, c->id, op->id, to, opening_add_name, names, e);
+	if (st == QB_OK)
+		st = given_before(names, name, e);
+	json_decref(names);
+	return st;
+}
+
 static enum qb_status give_spot(struct ops *o, struct campaign *c, struct opening *op, const struct ops_call *call,
                                 const struct accepted *a, struct ops_reply *reply, struct qb_error *e)
 {
@@ -174,7 +202,9 @@ static enum qb_status give_spot(struct ops *o, struct campaign *c, struct openin
 	bool answer = strcmp(a->entry.type->type, "spot-answer") == 0;
 	if (c->state != C_SEALED)
 		return qb_fail(e, QB_CONFLICT, "spot opening", NULL, "the campaign is %s", campaign_word(c));
-	enum qb_status st = answer ? body_base64(call->body, "box", 4096, &b, e) : QB_OK;
+	enum qb_status st = spot_given_before(o, c, op, call->who->name, answer ? TO_ASKER : TO_ALL, e);
+	if (st == QB_OK && answer)
+		st = body_base64(call->body, "box", 4096, &b, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, a->entry.type->type, e)) == QB_OK) {
 		if (answer)
 			st = store_box_put(o->store, c->id, op->id, call->who->name, TO_ASKER, b.data, b.len, e);

@@ -15,7 +15,10 @@
 
 static enum qb_status db_fail(sqlite3 *db, struct qb_error *e)
 {
-	int code = sqlite3_errcode(db);
+	int code = sqlite3_extended_errcode(db);
+	/* This goes to whoever sent it twice: no names of tables. */
+	if (code == SQLITE_CONSTRAINT_UNIQUE || code == SQLITE_CONSTRAINT_PRIMARYKEY)
+		return qb_fail(e, QB_CONFLICT, NULL, NULL, "the same was taken before");
 	if ((code & 0xff) == SQLITE_CONSTRAINT)
 		return qb_fail(e, QB_CONFLICT, "store", NULL, "%s", sqlite3_errmsg(db));
 	return qb_fail(e, QB_IO, "store", "check the disk; the transaction was rolled back", "%s", sqlite3_errmsg(db));
