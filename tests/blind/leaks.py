@@ -1,5 +1,6 @@
-"""Three leaks that the service does not have, planted into what was observed, so that the game shows it would have caught them: one
-byte too many, a small delay, and an order that depends on the secret. Each goes in before anything is made a table of."""
+"""Three leaks that the service does not have, planted into what was observed, so that the game shows it would have
+caught them: one byte too many, a small delay, and an order that depends on the secret. Each goes in before anything is
+made a table of."""
 import copy
 
 import numpy as np
@@ -29,8 +30,8 @@ def size(seen, rng, share, bytes):
 
 
 def timing(seen, rng, spreads):
-    """One station's driver takes longer over a live slot's recipe, by so much of the usual spread (between the quartiles) of what
-    it takes; all that it does later is later."""
+    """One station's driver takes longer over a live slot's recipe, by so much of the usual spread (between the
+    quartiles) of what it takes; all that it does later is later."""
     own = sorted((e for e in seen['http'] if e['who'] == 'tarn'), key=lambda e: e['at'])
     takes = [b['at'] - a['end'] for a, b in zip(own, own[1:]) if kind_of(a)[0] == 'key' and a['status'] == 200]
     delay_ns = int(spreads * np.subtract(*np.percentile(takes, [75, 25])))

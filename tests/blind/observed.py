@@ -1,10 +1,12 @@
-"""From what one campaign showed to a table: one row a slot, one column an observable. Nothing here knows the truth but the last
-line of rows(); columns are chosen without a look at what they might mean, since a leak is where nobody expected it."""
+"""From what one campaign showed to a table: one row a slot, one column an observable. Nothing here knows the truth but
+the last lines of rows(); columns are chosen without a look at what they might mean, since a leak is where nobody
+expected it."""
 import base64, re
 
 import numpy as np
 
 STATIONS = ('tarn', 'heron')
+RECORDS = (1, 4, 5)  # types of records that belong to a slot: its own, play reports, play notes
 RECORD = 7  # a frame of the sealer with one slot's output
 AHEAD = 8   # slots whose recipes a driver fetches in advance
 
@@ -98,8 +100,8 @@ def place_of(path):
 
 
 def between(t, looks):
-    """Files and processes between two looks. The look before a slot's end lies between its note and its report, so that each slot
-    is part of two stretches."""
+    """Files and processes between two looks. The look before a slot's end lies between its note and its report, so that
+    each slot is part of two stretches."""
     for i in range(len(looks) - 1):
         a, b = looks[i], looks[i + 1]
         for where, slot in (('ending', i), ('starting', i + 1)):
@@ -109,9 +111,10 @@ def between(t, looks):
                 t.add('%s.files.%s.bytes' % (where, place_of(path)), slot, size - was[0])
                 t.add('%s.files.%s.blocks' % (where, place_of(path)), slot, blocks - was[1])
             t.put(where + '.files', slot, len(b['files']))
-            for name in b['processes']:
-                for what, k in (('cpu', 0), ('faults', 1), ('switches', 2), ('pages', 3)):
-                    t.put('%s.%s.%s' % (where, name, what), slot, b['processes'][name][k] - a['processes'].get(name, (0,) * 4)[k])
+            for name, now in b['processes'].items():
+                was = a['processes'].get(name, (0, 0, 0, 0))
+                for k, what in enumerate(('cpu', 'faults', 'switches', 'pages')):
+                    t.put('%s.%s.%s' % (where, name, what), slot, now[k] - was[k])
             t.put(where + '.metrics.bytes', slot, b['metrics'][0] - a['metrics'][0])
             t.put(where + '.metrics.sum', slot, b['metrics'][1] - a['metrics'][1])
 
@@ -157,8 +160,9 @@ def stored(t, seen):
     for (n, station), data in seen['recipes'].items():
         look_of_bytes(t, 'recipe.' + station, n, data)
     for r in seen['records']:
-        if r['type'] in ('slot', 'play-note', 'play-report', 1, 4, 5):
-            look_of_bytes(t, 'record.%s.%s' % (r['type'], r.get('station', '-')), r['slot'], base64.b64decode(r['record']))
+        if r['type'] in RECORDS:
+            name = 'record.%s.%s' % (r['type'], r.get('station', '-'))
+            look_of_bytes(t, name, r['slot'], base64.b64decode(r['record']))
 
 
 def ledger(t, leaves):

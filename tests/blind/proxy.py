@@ -1,6 +1,7 @@
-"""The recording proxy of the blind game: stands between the service and whoever talks to it (and between the sealer's host and
-the client that carries its messages), passes every byte on unchanged, and writes down sizes and times, with what the kernel shows
-every user of the machine about the processes at that moment: their processor time and page faults."""
+"""The recording proxy of the blind game: stands between the service and whoever talks to it (and between the sealer's
+host and the client that carries its messages), passes every byte on unchanged, and writes down sizes and times, with
+what the kernel shows every user of the machine about the processes at that moment: their processor time and page
+faults."""
 import multiprocessing, os, selectors, socket, struct, time
 
 CHUNK = 1 << 18
@@ -56,9 +57,10 @@ class HttpPair:
             self.flush()
             line = data.split(b'\r\n', 1)[0].decode('latin-1').split(' ')
             cpu, faults = self.watched.look(self.label)
-            self.now = {'who': self.label, 'method': line[0], 'path': line[1] if len(line) > 1 else '', 'at': t,
-                        'cpu': cpu, 'faults': faults, 'service_cpu': self.watched.look('service')[0], 'request_bytes': 0,
-                        'answer_bytes': 0, 'status': 0, 'first': t, 'end': t, 'service_cpu_end': 0}
+            self.now = {'who': self.label, 'method': line[0], 'path': line[1] if len(line) > 1 else '',
+                        'at': t, 'first': t, 'end': t, 'cpu': cpu, 'faults': faults,
+                        'service_cpu': self.watched.look('service')[0], 'service_cpu_end': 0,
+                        'request_bytes': 0, 'answer_bytes': 0, 'status': 0}
         self.now['request_bytes'] += len(data)
 
     def down(self, data, t):

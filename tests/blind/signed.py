@@ -1,5 +1,6 @@
-"""A party's signed requests, made without a line of the project's own code: the blind game moves the clock and looks at slots
-through it many hundred times, which one command each would make slow. From docs/protocol.md and docs/reference-custody.md."""
+"""A party's signed requests, made without a line of the project's own code: the blind game moves the clock and looks at
+slots through it many hundred times, which one command each would make slow. From docs/protocol.md and
+docs/reference-custody.md."""
 import base64, hashlib, http.client, json, os, struct, time
 
 import nacl.bindings as sodium
@@ -7,6 +8,7 @@ import nacl.pwhash.argon2id as argon2
 import nacl.signing
 
 HEADER = 84
+IDLE_S = 10  # after which the service may have closed a connection
 PASSES, MEMORY = 2, 64 << 20  # of the interactive level, the only one that rehearsals use
 
 
@@ -37,6 +39,7 @@ class Party:
         self.key_id = transcript('quietbell/1/key/id', self.key.verify_key.encode())[:16].hex()
         self.authority = '127.0.0.1:%d' % port
         self.link = http.client.HTTPConnection('127.0.0.1', port, timeout=60)
+        self.used = time.monotonic()
 
     def _headers(self, method, target, body):
         path, _, query = target.partition('?')
@@ -56,6 +59,9 @@ class Party:
 
     def ask(self, method, target, document=None):
         body = None if document is None else json.dumps(document).encode()
+        if time.monotonic() - self.used > IDLE_S:
+            self.link.close()
+        self.used = time.monotonic()
         self.link.request(method, target, body, self._headers(method, target, body))
         answer = self.link.getresponse()
         text = answer.read()

@@ -1,13 +1,14 @@
-"""The stage of the blind game: a service, its people and one campaign after the other, run by the real programs on loopback, with
-everything written down that somebody short of the custodians can observe. Whether a slot was live is learned last, from the opened
-bundle, as any reviewer would."""
-import json, os, re, shutil, sqlite3, struct, subprocess, time
+"""The stage of the blind game: a service, its people and one campaign after the other, run by the real programs on
+loopback, with everything written down that somebody short of the custodians can observe. Whether a slot was live is
+learned last, from the opened bundle, as any reviewer would."""
+import base64, json, os, re, shutil, sqlite3, struct, subprocess, time
 
 from proxy import Proxy, hurry, processor_ns
 from signed import Party
 
-PEOPLE = [('custodian', 'ines'), ('custodian', 'okoro'), ('custodian', 'marchetti'), ('reviewer', 'asha'), ('operator', 'lund'),
-          ('analyst', 'noor'), ('driver', 'hosta'), ('driver', 'hostb')]
+CUSTODIANS = ('ines', 'okoro', 'marchetti')
+PEOPLE = [('custodian', p) for p in CUSTODIANS] + [('reviewer', 'asha'), ('operator', 'lund'), ('analyst', 'noor'),
+                                                   ('driver', 'hosta'), ('driver', 'hostb')]
 STATIONS = {'tarn': 'hosta', 'heron': 'hostb'}
 SLOT_S = 5
 FIRST_GPS = 1487894418  # 2027-03-01T00:00:00Z
@@ -48,7 +49,7 @@ audit:
 class Stage:
     def __init__(self, build, top, work):
         self.build, self.top, self.work = build, top, work
-        self.children, self.campaigns = [], 0
+        self.children, self.campaigns, self.next_leaf = [], 0, 0
         os.makedirs(work + '/home', exist_ok=True)
         fd = os.open(work + '/passphrase', os.O_CREAT | os.O_WRONLY, 0o600)
         os.write(fd, b'rehearsal only\n')
@@ -96,13 +97,15 @@ class Stage:
         self.proxy = Proxy()
         self.ports = {label: self.proxy.bind(label) for label in ('people', 'stage', 'tarn', 'heron', 'sealer')}
         self.as_('admin', 'key', 'new', '--name', 'admin', '--rehearsal', port=None)
-        subprocess.run([self.build + '/quietbelld', 'init', '--data', w + '/service', '--admin', w + '/home/admin/key.pub', '--clock',
-                        'rehearsal'], check=True, stdout=subprocess.DEVNULL)
+        subprocess.run([self.build + '/quietbelld', 'init', '--data', w + '/service', '--admin',
+                        w + '/home/admin/key.pub', '--clock', 'rehearsal'], check=True, stdout=subprocess.DEVNULL)
         names = ', '.join("'127.0.0.1:%d'" % p for p in self.ports.values())
-        open(w + '/q.yaml', 'w').write('data: %s/service\nlisten: 127.0.0.1:0\nclock: rehearsal\nauthority: [%s]\n' % (w, names))
+        with open(w + '/q.yaml', 'w') as f:
+            f.write('data: %s/service\nlisten: 127.0.0.1:0\nclock: rehearsal\nauthority: [%s]\n' % (w, names))
         self.proxy.start()
         self.service = self.start('service.log', self.build + '/quietbelld', '--config', w + '/q.yaml')
-        port = self.until('the service', lambda: os.path.exists(w + '/service/port') and open(w + '/service/port').read().strip())
+        at = w + '/service/port'
+        port = self.until('the service', lambda: os.path.exists(at) and open(at).read().strip())
         for label in ('people', 'stage', 'tarn', 'heron'):
             self.proxy.serve(label, int(port))
         self.proxy.watch('service', self.service.pid)
@@ -110,7 +113,8 @@ class Stage:
             self.as_(name, 'key', 'new', '--name', name, '--rehearsal', port=None)
             code = json.loads(self.as_('admin', 'party', 'invite', role, name, '--json'))['code']
             self.as_(name, 'party', 'enrol', code)
-        out = subprocess.run([self.build + '/quietbelld', 'sealer-host-init', '--data', w + '/host'], check=True, capture_output=True)
+        out = subprocess.run([self.build + '/quietbelld', 'sealer-host-init', '--data', w + '/host'], check=True,
+                             capture_output=True)
         self.host_key = re.search(r'[0-9a-f]{64}', out.stdout.decode()).group(0)
         self.admin = Party(w + '/home/admin', 'rehearsal only', self.ports['stage'])
 
@@ -171,10 +175,12 @@ class Stage:
         return self.admin.get('/v1/campaigns/%s/slots/%d' % (name, n))['stations'].values()
 
     def seal(self, name):
-        host = self.start('host.log', self.build + '/quietbelld', 'sealer-host', '--data', self.work + '/host', '--listen', '127.0.0.1:0')
+        host = self.start('host.log', self.build + '/quietbelld', 'sealer-host', '--data', self.work + '/host',
+                          '--listen', '127.0.0.1:0')
         log = os.path.join(self.work, 'host.log')
         hurry(host.pid)
-        port = self.until('the sealer host', lambda: re.search(r'.*^waiting on 127.0.0.1:(\d+)$', open(log).read(), re.M | re.S))
+        waiting = re.compile(r'.*^waiting on 127.0.0.1:(\d+)$', re.M | re.S)
+        port = self.until('the sealer host', lambda: waiting.match(open(log).read()))
         self.proxy.serve('sealer', int(port.group(1)), frames=True)
         open(self.work + '/host.yaml', 'w').write('address: 127.0.0.1:%d\n' % self.ports['sealer'])
         sealing = self.as_('admin', 'campaign', 'seal', name, '--on', self.work + '/host.yaml', background=True)
@@ -185,39 +191,51 @@ class Stage:
             raise RuntimeError('the sealing of %s failed' % name)
         open(log, 'w').close()
 
-    def campaign(self, slots, live):
-        """Runs one campaign and returns everything observed, then the truth."""
-        i, w = self.campaigns, self.work
-        self.campaigns += 1
-        name = 'game-%d' % i
-        start = FIRST_GPS + i * (slots * SLOT_S + 100)
-        self.clock(start - 80)
-        open(w + '/plan.yaml', 'w').write(PLAN.format(name=name, starts=start, ends=start + slots * SLOT_S, host=self.host_key, live=live))
+    def gather(self, name, start, slots, live):
+        """Drafts a campaign, and everybody sets to work on it; the custodians' commands are returned."""
+        w = self.work
+        with open(w + '/plan.yaml', 'w') as f:
+            f.write(PLAN.format(name=name, starts=start, ends=start + slots * SLOT_S, host=self.host_key, live=live))
         self.as_('admin', 'campaign', 'draft', w + '/plan.yaml')
-        parts = [self.as_(p, 'campaign', 'keygen', name, '--wait', background=True) for p in ('ines', 'okoro', 'marchetti')]
+        parts = [self.as_(p, 'campaign', 'keygen', name, '--wait', background=True) for p in CUSTODIANS]
         shutil.rmtree(w + '/drive', ignore_errors=True)
         self.drivers = {}
         for station, who in STATIONS.items():
             open(w + '/driver-%s.log' % station, 'w').close()
             os.makedirs(w + '/drive/' + station)
-            self.drivers[station] = self.start('driver-%s.log' % station, self.build + '/quietbell-driver', name, '--station', station, '--sink',
-                                               'file:%s/drive/%s' % (w, station), '--home', '%s/home/%s' % (w, who), '--service', self.url(station))
-            self.proxy.watch(station, self.drivers[station].pid)
+            p = self.start('driver-%s.log' % station, self.build + '/quietbell-driver', name, '--station', station,
+                           '--sink', 'file:%s/drive/%s' % (w, station), '--home', '%s/home/%s' % (w, who), '--service',
+                           self.url(station))
+            self.drivers[station] = p
+            self.proxy.watch(station, p.pid)
+        return parts
+
+    def play(self, seen, name, start):
+        """Every slot: freeze and start, the notes, a look, the end, the reports."""
+        def all_of(n, test):
+            self.until('slot %d' % n, lambda: all(test(s) for s in self.slot(name, n)))
+        self.clock(start - 1)
+        self.clock(start)
+        for n in range(seen['slots']):
+            all_of(n, lambda s: s['notes'] > 0 or s['reported'])
+            seen['looks'].append(self.look())
+            self.clock(start + (n + 1) * SLOT_S)
+            all_of(n, lambda s: s['reported'])
+        seen['looks'].append(self.look())
+
+    def campaign(self, slots, live):
+        """Runs one campaign and returns everything observed, and the truth."""
+        name, start = 'game-%d' % self.campaigns, FIRST_GPS + self.campaigns * (slots * SLOT_S + 100)
+        self.campaigns += 1
+        self.clock(start - 80)
+        parts = self.gather(name, start, slots, live)
         self.until('the rehearsal', lambda: self.admin.get('/v1/campaigns/' + name)['state'] == 'rehearsed')
         self.seal(name)
         if any(p.wait(60) != 0 for p in parts):
             raise RuntimeError('a custodian of %s failed' % name)
         self.until('the drivers', lambda: all(s['ready'] for s in self.slot(name, 0)))
-        seen = {'slots': slots, 'sealer': [e for e in self.proxy.take() if e['who'] == 'sealer'], 'looks': [], 'steps': []}
-        self.clock(start - 1)
-        self.clock(start)
-        for n in range(slots):
-            self.until('the notes of slot %d' % n, lambda: all(s['notes'] > 0 or s['reported'] for s in self.slot(name, n)))
-            seen['looks'].append(self.look())
-            seen['steps'].append(time.monotonic_ns())
-            self.clock(start + (n + 1) * SLOT_S)
-            self.until('the reports of slot %d' % n, lambda: all(s['reported'] for s in self.slot(name, n)))
-        seen['looks'].append(self.look())
+        seen = {'slots': slots, 'sealer': [e for e in self.proxy.take() if e['who'] == 'sealer'], 'looks': []}
+        self.play(seen, name, start)
         seen['http'] = [e for e in self.proxy.take() if e['who'] in STATIONS]
         for station, p in self.drivers.items():
             if p.wait(30) != 0:
@@ -230,13 +248,11 @@ class Stage:
     def stored(self, seen, name):
         """What lies in the service's store and in the logs, as its administrator finds it before the opening."""
         db = sqlite3.connect('file:%s/service/store.sqlite?mode=ro' % self.work, uri=True)
-        recipes = db.execute('select slot, station, recipe from recipes where campaign = ?', (bytes.fromhex(self.id_of(name)),)).fetchall()
+        own = bytes.fromhex(self.admin.get('/v1/campaigns/' + name)['id'])
+        recipes = db.execute('select slot, station, recipe from recipes where campaign = ?', (own,)).fetchall()
         db.close()
         seen['recipes'] = {(n, s): bytes(r) for n, s, r in recipes}
         seen['log'] = {s: open('%s/driver-%s.log' % (self.work, s)).read() for s in STATIONS}
-
-    def id_of(self, name):
-        return self.admin.get('/v1/campaigns/' + name)['id']
 
     def listed(self, seen, name):
         """Ledger and records as everybody may list them after the closing."""
@@ -246,32 +262,28 @@ class Stage:
             records += page['records']
             at = page['next']
         seen['records'] = records
-        leaves, at = [], self.first_leaf if hasattr(self, 'first_leaf') else 0
-        import base64
+        seen['leaves'], at = [], self.next_leaf
         while at is not None:
             page = self.admin.get('/v1/ledger/entries?from=%d&limit=500' % at)
             for text in page['entries']:
                 frame = base64.b64decode(text)
-                body = struct.unpack('<Q', frame[40:48])[0]
-                leaves.append({'size': len(frame), 'hidden': frame[4], 'seq': struct.unpack('<Q', frame[8:16])[0],
-                               'received': struct.unpack('<q', frame[16:24])[0],
-                               'entry': None if frame[4] else json.loads(frame[48:48 + body])})
+                seq, received = struct.unpack('<Qq', frame[8:24])
+                body = frame[48:48 + struct.unpack('<Q', frame[40:48])[0]]
+                seen['leaves'].append({'size': len(frame), 'hidden': frame[4], 'received': received,
+                                       'entry': None if frame[4] else json.loads(body)})
+                self.next_leaf = seq + 1
             at = page['next']
-        self.first_leaf = leaves[-1]['seq'] + 1
-        seen['leaves'] = leaves
 
     def truth(self, name):
         w = self.work
         self.as_('asha', 'campaign', 'close', name, '--reason', 'the game is over')
         opening = self.as_('asha', 'opening', 'request', name, '--all', '--reason', 'the truth').split('\n')[0]
-        for p in ('ines', 'okoro'):
-            self.as_(p, 'opening', 'join', name, opening, '--yes')
-        for p in ('ines', 'okoro'):
-            self.as_(p, 'ledger', 'head')
-        for path in ('/bundle', '/set'):
-            shutil.rmtree(w + path, ignore_errors=True)
-            if os.path.exists(w + path):
-                os.remove(w + path)
+        for verb in (('opening', 'join', name, opening, '--yes'), ('ledger', 'head')):
+            for p in CUSTODIANS[:2]:
+                self.as_(p, *verb)
+        shutil.rmtree(w + '/set', ignore_errors=True)
+        if os.path.exists(w + '/bundle'):
+            os.remove(w + '/bundle')
         self.as_('asha', 'bundle', 'export', name, w + '/bundle')
         self.as_('asha', 'bundle', 'unpack', w + '/bundle', w + '/set', port=None)
         return [json.loads(line) for line in open(w + '/set/slots.jsonl')]

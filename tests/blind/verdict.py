@@ -1,7 +1,10 @@
-"""Can anybody tell? A classifier that has never seen a campaign guesses which of its slots are live, and the area under its curve
-(AUC: the chance that it puts a random live slot above a random null one of the same campaign; 0.5 is blindness) gets an interval.
-Beside it every single observable is tried alone, with the level corrected for their number by permutation (Westfall & Young 1993).
-The AUC is that of Mann & Whitney (1947), its standard error that of DeLong, DeLong & Clarke-Pearson (1988)."""
+"""Can anybody tell? A classifier that has never seen a campaign guesses which of its slots are live, and the area under
+its curve (AUC: the chance that it puts a random live slot above a random null one of the same campaign; 0.5 is
+blindness) gets an interval. Beside it every single observable is tried alone, with the level corrected for their number
+by permutation (Westfall & Young 1993). The AUC is that of Mann & Whitney (1947), its standard error that of DeLong,
+DeLong & Clarke-Pearson (1988)."""
+import warnings
+
 import numpy as np
 from scipy import special, stats
 
@@ -17,21 +20,21 @@ def ranks(x):
 
 
 class Game:
-    """All slots of all campaigns: tables of one campaign each, stacked; every number seen from its own campaign and place."""
+    """All slots of all campaigns: tables of one campaign each, stacked; numbers seen from their own campaign and place."""
 
     def __init__(self, played):
         names = sorted(set().union(*(p[0] for p in played)))
         blocks, self.live, self.group, place = [], [], [], []
         for i, (own, table, live) in enumerate(played):
             at = {n: k for k, n in enumerate(own)}
-            blocks.append(np.column_stack([table[:, at[n]] if n in at else np.full(len(live), np.nan) for n in names]))
+            missing = np.full(len(live), np.nan)
+            blocks.append(np.column_stack([table[:, at[n]] if n in at else missing for n in names]))
             self.live.append(live)
             self.group.append(np.full(len(live), i))
             place.append(np.arange(len(live)))
         raw = np.vstack(blocks)
         self.live, self.group, place = np.concatenate(self.live), np.concatenate(self.group), np.concatenate(place)
-        with np.errstate(all='ignore'):
-            import warnings
+        with warnings.catch_warnings():
             warnings.simplefilter('ignore', RuntimeWarning)
             varies = np.nanmax(raw, 0) > np.nanmin(raw, 0)
             self.constant = [n for n, v in zip(names, varies) if not v]
@@ -96,7 +99,7 @@ class Game:
         return won.sum() / pairs.sum(), np.sqrt((pairs ** 2 * variance).sum()) / pairs.sum(), won, pairs
 
     def alone(self, rng, times):
-        """The observable that tells most by itself: name, AUC, and the chance of one as strong anywhere among blind ones."""
+        """The observable that tells most by itself: name, AUC, and the chance of one as strong among blind ones."""
         r = np.zeros((len(self.live), self.features.shape[1]))
         pairs = 0
         for g in np.unique(self.group):
@@ -126,8 +129,8 @@ class Game:
 
 
 def logistic(x, y):
-    """Weights of a logistic regression under an absolute penalty (Tibshirani 1996), by accelerated proximal steps (Beck & Teboulle
-    2009): of hundreds of observables a leak touches a few."""
+    """Weights of a logistic regression under an absolute penalty (Tibshirani 1996), by accelerated proximal steps (Beck
+    & Teboulle 2009): of hundreds of observables a leak touches a few."""
     n, p = x.shape
     target = y - y.mean()
     penalty = SPARSE * np.sqrt(n * y.var() * 2 * np.log(max(p, 2)))
@@ -156,6 +159,7 @@ def judge(played, level, rng, times=999):
         low = min(low, again[int((0.5 - level / 2) * 1999)])
         high = max(high, again[int((0.5 + level / 2) * 1999)])
     name, single, p = g.alone(rng, times)
-    return {'slots': len(g.live), 'live': int(g.live.sum()), 'campaigns': len(won), 'observables': len(g.names), 'constant': g.constant,
-            'auc': auc, 'low': low, 'high': high, 'half': (high - low) / 2, 'level': level, 'strongest': name, 'strongest_auc': single,
-            'strongest_p': p, 'blind': bool(low <= 0.5 <= high and p > 1 - level), 'caught': bool(low > 0.5 or p <= 1 - level)}
+    return {'slots': len(g.live), 'live': int(g.live.sum()), 'campaigns': len(won), 'observables': len(g.names),
+            'constant': g.constant, 'auc': auc, 'low': low, 'high': high, 'half': (high - low) / 2, 'level': level,
+            'strongest': name, 'strongest_auc': single, 'strongest_p': p,
+            'blind': bool(low <= 0.5 <= high and p > 1 - level)}
