@@ -136,17 +136,19 @@ int64_t play_sent(const struct play *p, int64_t *from_ns, int64_t *to_ns)
 
 static int64_t note_interval(int64_t slot_ns)
 {
-	int64_t least = (slot_ns + PLAY_NOTES_MAX * NS_PER_S - 1) / (PLAY_NOTES_MAX * NS_PER_S) * NS_PER_S;
+	int64_t most = (PLAY_NOTES_MAX - 1) * NS_PER_S;
+	int64_t least = (slot_ns + most - 1) / most * NS_PER_S;
 	return least > 60 * NS_PER_S ? least : 60 * NS_PER_S;
 }
 
 int play_notes(int64_t slot_ns)
 {
 	int64_t step = note_interval(slot_ns);
-	return (int)((slot_ns + step - 1) / step);
+	return (int)((slot_ns + step - 1) / step) + 1;
 }
 
 int64_t play_note_due(int64_t slot_start_ns, int64_t slot_ns, int number)
 {
-	return slot_start_ns + number * note_interval(slot_ns);
+	int64_t after = number * note_interval(slot_ns);
+	return slot_start_ns + (after < slot_ns ? after : slot_ns);
 }

@@ -76,8 +76,8 @@ bool play_done(const struct play *p);
 int64_t play_sent(const struct play *p, int64_t *from_ns, int64_t *to_ns);
 
 /*
- * Notes of a slot: number k is due at start + k * interval, as long as that is before the slot's end; the interval is
- * one minute, or longer where a slot would need more than PLAY_NOTES_MAX.
+ * Notes of a slot: number k is due at start + k * interval, as long as that is before the slot's end, and the last one
+ * at the end itself; the interval is one minute, or longer where a slot would need more than PLAY_NOTES_MAX.
  */
 int play_notes(int64_t slot_ns);
 int64_t play_note_due(int64_t slot_start_ns, int64_t slot_ns, int number);

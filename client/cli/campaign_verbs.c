@@ -3,6 +3,7 @@
 #include <string.h>
 #include <time.h>
 
+#include "client/cli/answer_file.h"
 #include "client/cli/internal.h"
 #include "client/cli/keygen.h"
 #include "client/cli/seal_host.h"
@@ -10,6 +11,7 @@
 #include "server/base/alloc.h"
 #include "server/base/clock.h"
 #include "server/base/text.h"
+#include "server/custody/words.h"
 
 static void draft_nonce(struct cli_call *c, int64_t seed, const char *plan, uint8_t out[static 16])
 {
@@ -135,6 +137,27 @@ static void print_custody(struct cli_call *c, const struct campaign *k)
 		          k->custodian[k->repair.lost].party->name);
 }
 
+/* What outside partners check answers against. */
+static void print_fingerprint(struct cli_call *c, const struct campaign *k)
+{
+	struct answer_file *a = QB_NEW(struct answer_file);
+	struct custody_group *g = QB_NEW(struct custody_group);
+	struct qb_error ignored = {0};
+	struct buf words = {0};
+	uint8_t print[16];
+	char hex[33];
+	if (campaign_certified_group(k, g, &ignored) == QB_OK) {
+		answer_frame(a, k, g);
+		answer_fingerprint(a, print);
+		hex_encode(hex, print, 16);
+		words_put(print, 16, &words);
+		cli_print(c, "fingerprint of the custodians  %s\n           %s\n", hex, (const char *)words.data);
+	}
+	buf_free(&words);
+	qb_free(a);
+	qb_free(g);
+}
+
 static enum qb_status run_show(struct cli_call *c)
 {
 	json_t *doc;
@@ -162,6 +185,7 @@ static enum qb_status run_show(struct cli_call *c)
 		for (int i = 0; i < k->n; i++)
 			cli_print(c, " %s", k->custodian[i].party->name);
 		print_custody(c, k);
+		print_fingerprint(c, k);
 		cli_print(c, "attempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
 		          (unsigned long long)k->sealing_attempt);
 		for (int i = 0; i < k->plan->network->n_stations; i++)

@@ -4,10 +4,12 @@
 #include <pthread.h>
 #include <stdio.h>
 #include <string.h>
+#include <time.h>
 #include <unistd.h>
 
 #include "client/cli/keygen.h"
 #include "server/base/alloc.h"
+#include "server/base/clock.h"
 #include "server/base/text.h"
 
 #define RECORDS_MAX 4000000
@@ -195,7 +197,82 @@ static enum qb_status send_shares(struct cli_call *c, const struct campaign *k, 
 	return st;
 }
 
-enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op)
+/* ---- prepared parts wait, encrypted, for the time to reveal ---- */
+
+static enum qb_status prepared_path(struct cli_call *c, const struct campaign *k, const struct opening *op, char **out)
+{
+	char id[33], *name;
+	hex_encode(id, op->id, 16);
+	name = text_printf("prepared-%s.qbk", id);
+	enum qb_status st = home_campaign_path(&c->home, k->id, name, out, &c->error);
+	qb_free(name);
+	return st;
+}
+
+static enum qb_status keep_prepared(struct cli_call *c, const char *path, const uint8_t *shares, size_t n)
+{
+	struct secret *payload = secret_from(shares, n);
+	enum qb_status st =
+	    keyfile_write(path, KEYFILE_OTHER, c->link.rehearsal ? KEYFILE_INTERACTIVE : KEYFILE_MODERATE,
+	                  c->home.passphrase, payload, &c->error);
+	secret_free(&payload);
+	return st;
+}
+
+static enum qb_status hand_over(struct cli_call *c, const struct campaign *k, const struct opening *op,
+                                const char *path)
+{
+	struct secret *payload = NULL;
+	struct keyfile_info info;
+	enum qb_status st =
+	    keyfile_read(path, KEYFILE_OTHER, c->home.passphrase, c->link.rehearsal, &payload, &info, &c->error);
+	if (st == QB_OK && info.payload_bytes % PARTIAL_BYTES != 0)
+		st = qb_fail(&c->error, QB_FORMAT, path, "remove it and join again", "holds no partial openings");
+	if (st == QB_OK)
+		st = send_shares(c, k, op, secret_view(payload), info.payload_bytes / PARTIAL_BYTES);
+	if (st == QB_OK) {
+		(void)unlink(path);
+		cli_print(c, "%s gave partial openings of %zu records\n", c->home.name,
+		          info.payload_bytes / PARTIAL_BYTES);
+	}
+	secret_free(&payload);
+	return st;
+}
+
+/* Waits on the service's clock, which alone decides when the time has come. */
+static enum qb_status wait_for_reveal(struct cli_call *c, int64_t reveal_ns)
+{
+	struct timespec pause = {0, 200000000};
+	enum qb_status st = QB_OK;
+	while (st == QB_OK && c->link.now_gps_ns < reveal_ns) {
+		json_t *doc = NULL;
+		nanosleep(&pause, NULL);
+		st = link_get(&c->link, "/v1/service", &doc, &c->error);
+		if (st == QB_OK)
+			st = json_gps(doc, "now_gps", "service", &c->link.now_gps_ns, &c->error);
+		json_decref(doc);
+	}
+	return st;
+}
+
+/* Before the time to reveal everything is checked and computed, but nothing leaves this machine. */
+static enum qb_status reveal_or_wait(struct cli_call *c, const struct campaign *k, const struct opening *op, char *path)
+{
+	char when[CLOCK_PEOPLE_TEXT];
+	if (c->link.now_gps_ns >= op->reveal_ns)
+		return hand_over(c, k, op, path);
+	cli_print(c, "%s is prepared; the parts are handed over at %s\n", c->home.name,
+	          clock_people_text(op->reveal_ns, when, sizeof when));
+	(void)fflush(stdout);
+	if (cli_option(c, "wait") == NULL) {
+		cli_note(c, "Join again at that time, or use --wait.\n");
+		return QB_OK;
+	}
+	enum qb_status st = wait_for_reveal(c, op->reveal_ns);
+	return st == QB_OK ? hand_over(c, k, op, path) : st;
+}
+
+static enum qb_status compute(struct cli_call *c, struct campaign *k, const struct opening *op, const char *path)
 {
 	struct custody_group *g = QB_NEW(struct custody_group);
 	struct sealed_items items = {0};
@@ -224,13 +301,34 @@ enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct op
 		st = make_shares(c, g, &items, share, (uint32_t)custodian_index(k, c->home.name) + 1, op->authority,
 		                 shares);
 	}
-	if (st == QB_OK)
+	if (st == QB_OK && c->link.now_gps_ns >= op->reveal_ns) {
 		st = send_shares(c, k, op, shares, items.n);
-	if (st == QB_OK)
-		cli_print(c, "%s gave partial openings of %zu records\n", c->home.name, items.n);
+		if (st == QB_OK)
+			cli_print(c, "%s gave partial openings of %zu records\n", c->home.name, items.n);
+	} else if (st == QB_OK) {
+		st = keep_prepared(c, path, shares, items.n * PARTIAL_BYTES);
+	}
+	if (shares != NULL)
+		wipe(shares, items.n * PARTIAL_BYTES);
 	secret_free(&share);
 	items_free(&items);
 	qb_free(shares);
 	qb_free(g);
+	return st;
+}
+
+enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op)
+{
+	char *path = NULL;
+	bool at_once = c->link.now_gps_ns >= op->reveal_ns;
+	enum qb_status st = prepared_path(c, k, op, &path);
+	if (st != QB_OK)
+		return st;
+	bool prepared = access(path, F_OK) == 0;
+	if (!prepared)
+		st = compute(c, k, op, path);
+	if (st == QB_OK && (prepared || !at_once))
+		st = reveal_or_wait(c, k, op, path);
+	qb_free(path);
 	return st;
 }

@@ -2,6 +2,7 @@
 #ifndef QB_CLIENT_CLI_OPENING_JOIN_H
 #define QB_CLIENT_CLI_OPENING_JOIN_H
 
+#include "client/cli/answer_file.h"
 #include "client/cli/internal.h"
 #include "server/custody/partial.h"
 
@@ -25,13 +26,11 @@ enum qb_status item_check(const struct campaign *k, const struct view *v, const 
                           struct sealed_item *item, struct qb_error *e) QB_MUST_USE;
 
 enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op) QB_MUST_USE;
-enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *doc) QB_MUST_USE;
-/* The asker's side: k agreeing, signed answers; *state says "waiting" or the answer. */
-enum qb_status spot_result(struct cli_call *c, struct campaign *k, const json_t *doc, char answer[64]) QB_MUST_USE;
+/* Gives this custodian's part, waits for the others, and answers; or signs the retraction of that answer. */
+enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *doc, enum saying kind) QB_MUST_USE;
+/* The asker's side: k agreeing, signed answers (or retractions). QB_NO: not enough yet. */
+enum qb_status spot_result(struct cli_call *c, struct campaign *k, const json_t *doc, enum saying kind,
+                           struct answer_file *out) QB_MUST_USE;
 /* Asks the person at the terminal unless --yes was given. QB_REFUSED: the person said no. */
 enum qb_status join_confirm(struct cli_call *c, const char *what) QB_MUST_USE;
-/* T("quietbell/1/opening/answer", th, authorising hash, answer). */
-void answer_transcript(const struct custody_group *g, const uint8_t commitment[static 64], const char *answer,
-                       uint8_t out[static 64]);
-
 #endif

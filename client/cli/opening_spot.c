@@ -6,6 +6,7 @@
 #include <string.h>
 #include <time.h>
 
+#include "client/cli/answer_file.h"
 #include "client/cli/keygen.h"
 #include "client/cli/opening_join.h"
 #include "server/base/alloc.h"
@@ -25,7 +26,7 @@ struct spot {
 	int me; /* from 0 */
 	const char *id;
 	uint8_t commitment[64], ad[128]; /* ctx, commitment */
-	int64_t from_ns, to_ns;
+	int64_t from_ns, to_ns, asked_ns;
 	uint8_t asker_exchange[32];
 	struct sealed_items items; /* the records that the request fixes */
 	struct secret *share;
@@ -33,21 +34,10 @@ struct spot {
 	struct buf partials[CUSTODY_MAX]; /* from each custodian, once opened */
 };
 
-void answer_transcript(const struct custody_group *g, const uint8_t commitment[static 64], const char *answer,
-                       uint8_t out[static 64])
-{
-	struct transcript t;
-	transcript_begin(&t, "quietbell/1/opening/answer");
-	transcript_field(&t, g->th, 64);
-	transcript_field(&t, commitment, 64);
-	transcript_text(&t, answer);
-	transcript_end(&t, out);
-}
-
 /* The request as its asker signed it, hidden under the commitment that the service promised to enter. */
 static enum qb_status check_request(struct cli_call *c, const struct campaign *k, const json_t *doc,
                                     uint8_t commitment[static 64], struct wire_entry *en,
-                                    const struct view_party **asker)
+                                    const struct view_party **asker, int64_t *asked_ns)
 {
 	const char *text;
 	uint8_t nonce[32], signature[64];
@@ -73,6 +63,7 @@ static enum qb_status check_request(struct cli_call *c, const struct campaign *k
 	entry_hide(nonce, text, strlen(text), commitment);
 	if (memcmp(commitment, p.commitment, 64) != 0)
 		return qb_fail(e, QB_CRYPTO, "spot request", "do not open", "is not what the commitment hides");
+	*asked_ns = p.received_gps_ns;
 	if ((st = entry_promise_verify(&p, c->home.service_key, e)) != QB_OK ||
 	    (st = wire_entry_parse(text, strlen(text), en, e)) != QB_OK)
 		return st;
@@ -86,7 +77,50 @@ static enum qb_status check_request(struct cli_call *c, const struct campaign *k
 		return qb_fail(e, QB_CRYPTO, "spot request", "do not open",
 		               "its author may not ask, or did not sign it");
 	}
-	return QB_OK;
+	if ((st = campaign_spot_allowed(k, en, e)) != QB_OK)
+		wire_entry_free(en);
+	return st;
+}
+
+/*
+ * The newest note of each station in each slot, by the ledger and the time of the request: with an older one a service
+ * could turn "drill" into "cannot say".
+ */
+static enum qb_status check_newest(struct spot *s, int64_t first, int64_t last)
+{
+	enum qb_status st = QB_OK;
+	int stations = s->k->plan->network->n_stations;
+	size_t cells = (size_t)(last - first + 1) * (size_t)stations;
+	uint8_t(*newest)[64] = qb_alloc(cells, sizeof *newest);
+	bool *any = QB_NEW_ARRAY(bool, cells);
+	for (uint64_t n = 0; st == QB_OK && n < s->c->follow.n; n++) {
+		struct entry leaf;
+		struct wire_entry en;
+		if (follow_entry(&s->c->follow, n, &leaf, &en, NULL) != QB_OK)
+			continue;
+		if (leaf.received_gps_ns <= s->asked_ns && en.has_campaign && memcmp(en.campaign, s->k->id, 16) == 0 &&
+		    strcmp(en.type->type, "play-note") == 0) {
+			int64_t slot = wire_entry_int(&en, "slot");
+			int station = plan_station(s->k->plan, wire_entry_text(&en, "station"));
+			if (slot >= first && slot <= last && station >= 0) {
+				size_t at = (size_t)(slot - first) * (size_t)stations + (size_t)station;
+				wire_entry_hex(&en, "record_id", newest[at], 64);
+				any[at] = true;
+			}
+		}
+		wire_entry_free(&en);
+	}
+	for (size_t i = 0; st == QB_OK && i < cells; i++) {
+		bool there = !any[i];
+		for (size_t j = 0; j < s->items.n && !there; j++)
+			there = memcmp(s->items.item[j].rec.id, newest[i], 64) == 0;
+		if (!there)
+			st = qb_fail(&s->c->error, QB_CRYPTO, "spot request", "do not open; tell the other custodians",
+			             "leaves out the newest note of a station");
+	}
+	qb_free(newest);
+	qb_free(any);
+	return st;
 }
 
 /* Exactly the truths of the slots that the interval touches, and play notes of those slots: nothing else is opened. */
@@ -126,6 +160,8 @@ static enum qb_status choose_items(struct spot *s, const json_t *doc)
 	if (st == QB_OK && truths != last - first + 1)
 		st = qb_fail(&s->c->error, QB_CRYPTO, "spot request", "do not open",
 		             "does not open each touched slot once");
+	if (st == QB_OK)
+		st = check_newest(s, first, last);
 	items_free(&all);
 	return st;
 }
@@ -287,12 +323,20 @@ static enum qb_status find_answer(struct spot *s, const char **answer)
 	return st;
 }
 
-static enum qb_status send_answer(struct spot *s, const char *answer)
+/* Signs what was found, boxes it to the asker and posts it, as an answer or as a retraction. */
+static enum qb_status say(struct spot *s, enum saying kind, const char *answer, const char *why)
 {
+	struct answer_file *a = QB_NEW(struct answer_file);
 	uint8_t hash[64], signature[64], nonce[32], box_hash[64];
 	char hex[129];
 	struct buf box = {0};
-	answer_transcript(&s->g, s->commitment, answer, hash);
+	answer_frame(a, s->k, &s->g);
+	a->kind = kind;
+	a->from_ns = s->from_ns;
+	a->to_ns = s->to_ns;
+	memcpy(a->authority, s->commitment, 64);
+	(void)snprintf(a->answer, sizeof a->answer, "%s", answer);
+	answer_statement(a, hash);
 	sign_bytes(s->c->home.key.seed, hash, sizeof hash, signature);
 	hex_encode(hex, signature, 64);
 	char *content = text_printf("{\"answer\":\"%s\",\"signature\":\"%s\"}", answer, hex);
@@ -308,13 +352,16 @@ static enum qb_status send_answer(struct spot *s, const char *answer)
 		json_object_set_new(extra, "box_hash", json_hex_new(box_hash, 64));
 		json_object_set_new(more, "nonce", json_hex_new(nonce, 32));
 		json_object_set_new(more, "box", json_string(text));
-		st = cli_post_entry(s->c, path, "spot-answer", s->k->id, "the records were opened", extra, more, NULL);
+		st = cli_post_entry(s->c, path, kind == SAY_ANSWER ? "spot-answer" : "spot-retraction", s->k->id, why,
+		                    extra, more, NULL);
 		qb_free(text);
 		qb_free(path);
 	}
 	wipe(content, strlen(content));
 	qb_free(content);
 	buf_free(&box);
+	wipe(a, sizeof *a);
+	qb_free(a);
 	return st;
 }
 
@@ -324,7 +371,7 @@ static enum qb_status prepare(struct spot *s, const json_t *doc)
 	const struct view_party *asker;
 	char what[700], from[40], to[40];
 	enum qb_status st = campaign_certified_group(s->k, &s->g, &s->c->error);
-	if (st != QB_OK || (st = check_request(s->c, s->k, doc, s->commitment, &en, &asker)) != QB_OK)
+	if (st != QB_OK || (st = check_request(s->c, s->k, doc, s->commitment, &en, &asker, &s->asked_ns)) != QB_OK)
 		return st;
 	s->id = json_string_value(json_object_get(doc, "opening"));
 	s->from_ns = wire_entry_gps(&en, "from_gps");
@@ -341,7 +388,7 @@ static enum qb_status prepare(struct spot *s, const json_t *doc)
 	return st;
 }
 
-enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *doc)
+enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *doc, enum saying kind)
 {
 	struct spot *s = QB_NEW(struct spot);
 	struct timespec pause = {0, 200000000};
@@ -352,6 +399,9 @@ enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *d
 	s->me = custodian_index(k, c->home.name);
 	enum qb_status st = prepare(s, doc);
 	bool gave = json_object_get(json_object_get(doc, "boxes"), c->home.name) != NULL;
+	if (st == QB_OK && kind == SAY_RETRACTION && !gave)
+		st = qb_fail(&c->error, QB_CONFLICT, "retraction", "let those who answered sign it",
+		             "%s did not open this request", c->home.name);
 	if (st == QB_OK && !gave && (st = make_own(s)) == QB_OK)
 		st = give(s);
 	for (int i = 0; st == QB_OK && given < k->k && i < WAIT_S * 5; i++) {
@@ -364,9 +414,9 @@ enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *d
 	if (st == QB_OK)
 		st = find_answer(s, &answer);
 	if (st == QB_OK)
-		st = send_answer(s, answer);
+		st = say(s, kind, answer, kind == SAY_ANSWER ? "the records were opened" : cli_option(c, "reason"));
 	if (st == QB_OK)
-		cli_print(c, "answered: %s\n", answer);
+		cli_print(c, kind == SAY_ANSWER ? "answered: %s\n" : "signed the retraction of: %s\n", answer);
 	for (int i = 0; i < CUSTODY_MAX; i++)
 		buf_wipe(&s->partials[i]);
 	secret_free(&s->share);
@@ -376,62 +426,78 @@ enum qb_status join_spot(struct cli_call *c, struct campaign *k, const json_t *d
 	return st;
 }
 
-enum qb_status spot_result(struct cli_call *c, struct campaign *k, const json_t *doc, char answer[64])
+/* One custodian's boxed words: opened, checked, and put in their place. */
+static enum qb_status take_saying(struct cli_call *c, const char *box, const uint8_t ad[static 128], int i,
+                                  struct answer_file *a)
+{
+	struct buf b = {0}, content = {0};
+	json_t *said = NULL;
+	const char *word;
+	uint8_t hash[64];
+	enum qb_status st = box != NULL && base64_decode(box, &b)
+	                        ? QB_OK
+	                        : qb_fail(&c->error, QB_FORMAT, "answer", NULL, "is not base64");
+	if (st == QB_OK)
+		st = box_open(c->home.key.exchange, BOX_ANSWER, ad, 128, b.data, b.len, &content, &c->error);
+	if (st == QB_OK)
+		st = json_read((const char *)content.data, content.len, "answer", &said, &c->error);
+	if (st == QB_OK)
+		st = json_str(said, "answer", "answer", &word, &c->error);
+	if (st == QB_OK)
+		st = json_hex(said, "signature", "answer", a->signature[i], SIGN_BYTES, &c->error);
+	if (st == QB_OK && a->answer[0] != '\0' && strcmp(a->answer, word) != 0)
+		st = qb_fail(&c->error, QB_CRYPTO, "answers", "ask the custodians by telephone",
+		             "the custodians contradict each other");
+	if (st == QB_OK) {
+		(void)snprintf(a->answer, sizeof a->answer, "%.60s", word);
+		a->signed_by[i] = true;
+		answer_statement(a, hash);
+		if (!sign_verify(a->key[i], hash, sizeof hash, a->signature[i]))
+			st = qb_fail(&c->error, QB_CRYPTO, a->name[i], "ask the custodians by telephone",
+			             "the answer's signature is false");
+	}
+	json_decref(said);
+	buf_free(&b);
+	buf_wipe(&content);
+	return st;
+}
+
+enum qb_status spot_result(struct cli_call *c, struct campaign *k, const json_t *doc, enum saying kind,
+                           struct answer_file *a)
 {
 	struct custody_group *g = QB_NEW(struct custody_group);
 	struct wire_entry en = {0};
 	const struct view_party *asker;
-	uint8_t commitment[64], ad[128], hash[64], signature[64];
+	uint8_t commitment[64], ad[128];
 	const char *name;
 	json_t *v;
+	int64_t asked_ns;
 	int good = 0;
 	enum qb_status st = campaign_certified_group(k, g, &c->error);
-	answer[0] = '\0';
 	if (st == QB_OK)
-		st = check_request(c, k, doc, commitment, &en, &asker);
+		st = check_request(c, k, doc, commitment, &en, &asker, &asked_ns);
 	if (st == QB_OK) {
+		answer_frame(a, k, g);
+		a->kind = kind;
+		a->from_ns = wire_entry_gps(&en, "from_gps");
+		a->to_ns = wire_entry_gps(&en, "to_gps");
 		wire_entry_free(&en);
+		memcpy(a->authority, commitment, 64);
 		memcpy(ad, k->context.ctx, 64);
 		memcpy(ad + 64, commitment, 64);
 	}
-	json_object_foreach(json_object_get(doc, "answers"), name, v)
+	json_object_foreach(json_object_get(doc, kind == SAY_ANSWER ? "answers" : "retractions"), name, v)
 	{
-		struct buf b = {0}, content = {0};
-		json_t *said = NULL;
-		const char *word;
 		int i = custodian_index(k, name);
 		if (st != QB_OK || i < 0)
 			break;
-		if (!json_is_string(v) || !base64_decode(json_string_value(v), &b))
-			st = qb_fail(&c->error, QB_FORMAT, "answer", NULL, "is not base64");
-		if (st == QB_OK)
-			st = box_open(c->home.key.exchange, BOX_ANSWER, ad, sizeof ad, b.data, b.len, &content,
-			              &c->error);
-		if (st == QB_OK)
-			st = json_read((const char *)content.data, content.len, "answer", &said, &c->error);
-		if (st == QB_OK)
-			st = json_str(said, "answer", "answer", &word, &c->error);
-		if (st == QB_OK)
-			st = json_hex(said, "signature", "answer", signature, 64, &c->error);
-		if (st == QB_OK) {
-			answer_transcript(g, commitment, word, hash);
-			if (!sign_verify(k->custodian[i].party->signing_key, hash, sizeof hash, signature))
-				st = qb_fail(&c->error, QB_CRYPTO, name, "ask the custodians by telephone",
-				             "the answer's signature is false");
-			else if (answer[0] != '\0' && strcmp(answer, word) != 0)
-				st = qb_fail(&c->error, QB_CRYPTO, "answers", "ask the custodians by telephone",
-				             "the custodians contradict each other");
-			else
-				(void)snprintf(answer, 64, "%s", word);
-			good++;
-		}
-		json_decref(said);
-		buf_free(&b);
-		buf_wipe(&content);
+		st = take_saying(c, json_string_value(v), ad, i, a);
+		good += st == QB_OK;
 	}
 	if (st == QB_OK && good < k->k)
 		st = qb_fail(&c->error, QB_NO, "spot opening", "ask again in a moment",
-		             "waiting: %d of %d custodians have answered", good, k->k);
+		             "waiting: %d of %d custodians have %s", good, k->k,
+		             kind == SAY_ANSWER ? "answered" : "signed the retraction");
 	qb_free(g);
 	return st;
 }

@@ -3,6 +3,7 @@
 
 #include <inttypes.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 #include <time.h>
 
@@ -198,4 +199,25 @@ bool clock_utc_parse(const char *s, int64_t *gps_ns)
 		return false;
 	*gps_ns = gps;
 	return true;
+}
+
+const char *clock_people_text(int64_t gps_ns, char *out, size_t size)
+{
+	int64_t unix_s, ns;
+	bool in_leap;
+	struct tm local;
+	char when[32], zone[16];
+	clock_unix_from_gps(gps_ns, &unix_s, &ns, &in_leap);
+	(void)clock_utc_text(gps_ns - ns, out, size);
+	time_t t = (time_t)unix_s;
+	tzset();
+	if (localtime_r(&t, &local) == NULL || local.tm_gmtoff == 0)
+		return out;
+	long minutes = local.tm_gmtoff / 60;
+	size_t n = strlen(out);
+	(void)strftime(when, sizeof when, "%a %H:%M:%S", &local);
+	(void)strftime(zone, sizeof zone, "%Z", &local);
+	(void)snprintf(out + n, size - n, " (%s %s, %c%02ld:%02ld)", when, zone, minutes < 0 ? '-' : '+',
+	               labs(minutes) / 60, labs(minutes) % 60);
+	return out;
 }

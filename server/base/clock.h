@@ -31,6 +31,12 @@ const char *clock_gps_text(int64_t gps_ns, char *out, size_t size);
 bool clock_gps_parse(const char *s, int64_t *gps_ns);
 /* "2027-03-01T00:00:00Z", with up to nine decimals; a leap second is written :60. At least 40 bytes. */
 const char *clock_utc_text(int64_t gps_ns, char *out, size_t size);
+/*
+ * For people: UTC to the second, and the local time with its name and offset beside it where TZ says another zone,
+ * "2027-03-01T04:00:00Z (Mon 05:00:00 CET, +01:00)". At least 80 bytes.
+ */
+#define CLOCK_PEOPLE_TEXT 80
+const char *clock_people_text(int64_t gps_ns, char *out, size_t size);
 bool clock_utc_parse(const char *s, int64_t *gps_ns);
 
 #endif

@@ -72,7 +72,7 @@ struct plan_alerts {
 	bool given;
 	struct plan_names held_for_answer, recipients;
 	bool partners_told;
-	int64_t no_answer_after_ns;
+	int64_t no_answer_after_ns, call_next_after_ns;
 	enum plan_then then;
 	int spot_quota;
 };

@@ -116,12 +116,16 @@ static void read_alerts(struct plan_reader *r, struct yaml_node *root, struct pl
 {
 	static const char *const thens[] = {"release-with-warning", "keep-held", NULL};
 	struct yaml_node *m = read_optional(r, root, "alerts", YAML_MAP);
-	*a = (struct plan_alerts){.given = m != NULL, .no_answer_after_ns = 900 * NS_PER_S, .spot_quota = 5};
+	*a = (struct plan_alerts){.given = m != NULL,
+	                          .no_answer_after_ns = 900 * NS_PER_S,
+	                          .call_next_after_ns = 300 * NS_PER_S,
+	                          .spot_quota = 5};
 	if (m == NULL)
 		return;
 	read_names(r, m, "held_for_answer", &a->held_for_answer);
 	read_bool(r, m, "partners_told", &a->partners_told);
 	read_duration(r, m, "no_answer_after", 1, 604800, &a->no_answer_after_ns);
+	read_duration(r, m, "call_next_after", 1, 604800, &a->call_next_after_ns);
 	a->then = (enum plan_then)read_word(r, m, "then", thens, PLAN_RELEASE_WITH_WARNING);
 	read_int(r, m, "spot_quota", 0, 10000, &a->spot_quota);
 	read_names(r, m, "recipients", &a->recipients);

@@ -56,6 +56,8 @@ static const struct plan_key keys[] = {
     {"alerts.held_for_answer", "", "names", "none", "Which alerts wait for the answer to 'is this a drill?'."},
     {"alerts.partners_told", "", "true, false", "false", "Partners know that drills happen."},
     {"alerts.no_answer_after", "duration", "1 s to 7 d", "15 min", "When an unanswered question counts as unanswered."},
+    {"alerts.call_next_after", "duration", "1 s to 7 d", "5 min",
+     "When the next custodian on the rota is called, while an answer is missing."},
     {"alerts.then", "", "release-with-warning, keep-held", "release-with-warning", "What happens then."},
     {"alerts.spot_quota", "", "0 to 10000", "5", "Spot openings that may be asked for."},
     {"alerts.recipients", "", "names of parties", "none", "Who may learn the answer of a spot opening."},

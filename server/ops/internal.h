@@ -151,11 +151,15 @@ void seal_job_stop(struct campaign *c); /* ends the sealer of a campaign, joins 
 /* The head of this size with every cosignature that is there. */
 enum qb_status head_with_cosignatures(struct ops *o, uint64_t size, struct buf *out, struct qb_error *e) QB_MUST_USE;
 /* ---- openings.c ---- */
-void opening_add_spot(struct campaign *c, const uint8_t commitment[static 64], const uint8_t asker[static 16]);
+/* Adds a spot to the projection: what was asked (parsed), under which commitment, by whom, when. */
+struct opening *opening_add_spot(struct campaign *c, const struct wire_entry *en, const uint8_t commitment[static 64],
+                                 const uint8_t asker[static 16], int64_t asked_ns);
 enum qb_status opening_add_name(void *state, const char *name, const uint8_t *p, size_t n, struct qb_error *e);
 /* Receivers of boxes that are no custodians; a party's name begins with a letter. */
-#define TO_ASKER "@asker"
-#define TO_ALL   "@given"
+#define TO_ASKER   "@asker"
+#define TO_RETRACT "@retraction"
+#define REFUSED    "@refused"
+#define TO_ALL     "@given"
 /* After a restart: which records each spot opens, and which were answered. */
 enum qb_status opening_reload_positions(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 /* ---- canary.c ---- */

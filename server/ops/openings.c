@@ -67,14 +67,19 @@ enum qb_status case_records(struct ops *o, struct campaign *c, const struct ops_
 
 /* ---- asking ---- */
 
-void opening_add_spot(struct campaign *c, const uint8_t commitment[static 64], const uint8_t asker[static 16])
+struct opening *opening_add_spot(struct campaign *c, const struct wire_entry *en, const uint8_t commitment[static 64],
+                                 const uint8_t asker[static 16], int64_t asked_ns)
 {
-	struct opening op = {.scope = SCOPE_SPOT, .seq = NO_SEQ};
+	struct opening op = {.scope = SCOPE_SPOT,
+	                     .seq = NO_SEQ,
+	                     .asked_ns = asked_ns,
+	                     .deadline_ns = wire_entry_gps(en, "deadline_gps")};
 	memcpy(op.id, commitment, 16);
 	memcpy(op.authority, commitment, 64);
 	memcpy(op.asker, asker, 16);
 	c->opening = qb_realloc(c->opening, (size_t)c->n_openings + 1, sizeof *c->opening);
 	c->opening[c->n_openings++] = op;
+	return &c->opening[c->n_openings - 1];
 }
 
 static void spot_key(const struct opening *op, char out[static 48])
@@ -165,10 +170,9 @@ static enum qb_status ask_spot(struct ops *o, struct campaign *c, const struct o
 	int64_t from = wire_entry_gps(&a->entry, "from_gps"), to = wire_entry_gps(&a->entry, "to_gps");
 	int quota = c->plan->alerts.given ? c->plan->alerts.spot_quota : 5;
 	enum qb_status st = QB_OK;
+	int64_t asked_ns = now_locked(o);
 	if (c->state != C_SEALED)
 		st = qb_fail(e, QB_CONFLICT, "spot request", NULL, "the campaign is %s", campaign_word(c));
-	else if (strcmp(a->entry.why, "-") == 0)
-		st = qb_fail(e, QB_REFUSED, "spot request: why", "give --reason", "a spot request needs a reason");
 	else if (from > to || from > now_locked(o))
 		st = qb_fail(e, QB_RANGE, "spot request", "ask about time that has passed",
 		             "the interval is empty or in the future");
@@ -176,8 +180,13 @@ static enum qb_status ask_spot(struct ops *o, struct campaign *c, const struct o
 		st = qb_fail(e, QB_REFUSED, "spot request", NULL, "the plan allows %d spot openings, all are used",
 		             quota);
 	if (st == QB_OK)
+		st = campaign_spot_allowed(c, &a->entry, e);
+	if (st == QB_OK && wire_entry_gps(&a->entry, "deadline_gps") <= now_locked(o))
+		st = qb_fail(e, QB_RANGE, "spot request: deadline_gps", "give a later deadline", "has passed");
+	if (st == QB_OK)
 		st = spot_positions(o, c, from, to, positions, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, "spot-request", e)) == QB_OK) {
+		asked_ns = t.now_ns;
 		st = hidden_take(&t, c, call, a, reply, commitment, e);
 		struct opening op;
 		memcpy(op.id, commitment, 16);
@@ -191,8 +200,7 @@ static enum qb_status ask_spot(struct ops *o, struct campaign *c, const struct o
 		txn_end(&t);
 	}
 	if (st == QB_OK) {
-		opening_add_spot(c, commitment, call->who->key_id);
-		struct opening *added = &c->opening[c->n_openings - 1];
+		struct opening *added = opening_add_spot(c, &a->entry, commitment, call->who->key_id, asked_ns);
 		added->n_positions = (int)json_array_size(positions);
 		added->positions = QB_NEW_ARRAY(int64_t, (size_t)added->n_positions);
 		for (int j = 0; j < added->n_positions; j++)
@@ -216,6 +224,9 @@ enum qb_status case_opening_request(struct ops *o, struct campaign *c, const str
 		if (c->state != C_CLOSED)
 			st = qb_fail(e, QB_CONFLICT, "opening", "close the analysis first", "the campaign is %s",
 			             campaign_word(c));
+		else if (wire_entry_gps(&a.entry, "reveal_gps") > wire_entry_gps(&a.entry, "deadline_gps"))
+			st = qb_fail(e, QB_RANGE, "opening: reveal_gps", "reveal before the deadline",
+			             "is after the deadline");
 		if (st == QB_OK)
 			st = enter_one(o, "opening-request", call, &a, reply, e);
 		if (st == QB_OK)
@@ -259,22 +270,69 @@ static enum qb_status add_box(void *state, const char *sender, const uint8_t *p,
 	return QB_OK;
 }
 
+/* When the answers of a spot came, and which of them was the last that was needed. */
+struct answer_times {
+	char id[33];
+	int needed, n;
+	int64_t answered_ns; /* of the k-th */
+};
+
+static enum qb_status find_answers(void *state, const struct store_hidden *h, struct qb_error *e)
+{
+	struct answer_times *t = state;
+	struct wire_entry en;
+	enum qb_status st = wire_entry_parse((const char *)h->entry, h->entry_n, &en, e);
+	if (st != QB_OK)
+		return st;
+	if (strcmp(en.type->type, "spot-answer") == 0 && strcmp(wire_entry_text(&en, "opening"), t->id) == 0 &&
+	    ++t->n == t->needed)
+		t->answered_ns = h->received_gps_ns;
+	wire_entry_free(&en);
+	return QB_OK;
+}
+
+/* Who is called by the rota, who gave, who refused. */
+static void put_rota(struct ops *o, const struct campaign *c, const struct opening *op, json_t *j)
+{
+	int order[CUSTODY_MAX];
+	int called = opening_rota(c, op->id, op->scope, op->asked_ns, op->deadline_ns, now_locked(o), order);
+	json_t *list = json_array(), *next = json_array();
+	for (int i = 0; i < c->n; i++)
+		json_array_append_new(i < called ? list : next, json_string(c->custodian[order[i]].party->name));
+	json_object_set_new(j, "called", list);
+	json_object_set_new(j, "next", next);
+}
+
 static enum qb_status opening_state(struct ops *o, const struct campaign *c, const struct opening *op, json_t *j,
                                     struct qb_error *e)
 {
-	json_t *shares = json_array(), *answers = json_array();
-	enum qb_status st;
-	if (op->scope == SCOPE_FULL)
-		st = store_shares(o->store, c->id, op->id, opening_add_name, shares, e);
-	else
-		st = store_boxes(o->store, c->id, op->id, TO_ALL, opening_add_name, shares, e);
-	if (st == QB_OK && op->scope == SCOPE_SPOT)
+	json_t *shares = json_array(), *answers = json_array(), *refused = json_array();
+	struct answer_times t = {.needed = c->k};
+	bool spot = op->scope == SCOPE_SPOT;
+	enum qb_status st = spot ? store_boxes(o->store, c->id, op->id, TO_ALL, opening_add_name, shares, e)
+	                         : store_shares(o->store, c->id, op->id, opening_add_name, shares, e);
+	if (st == QB_OK && spot)
 		st = store_boxes(o->store, c->id, op->id, TO_ASKER, opening_add_name, answers, e);
-	bool answered = (int)json_array_size(answers) >= c->k;
+	if (st == QB_OK)
+		st = store_boxes(o->store, c->id, op->id, REFUSED, opening_add_name, refused, e);
+	hex_encode(t.id, op->id, 16);
+	if (st == QB_OK && (int)json_array_size(answers) >= c->k)
+		st = store_hidden_all(o->store, c->id, find_answers, &t, e);
+	bool answered = (int)json_array_size(answers) >= c->k, late = now_locked(o) > op->deadline_ns;
 	json_object_set_new(j, "opening", json_hex_new(op->id, 16));
-	json_object_set_new(j, "scope", json_string(op->scope == SCOPE_FULL ? "full" : "spot"));
-	json_object_set_new(j, "state", json_string(op->opened ? "opened" : answered ? "answered" : "waiting"));
+	json_object_set_new(j, "scope", json_string(spot ? "spot" : "full"));
+	json_object_set_new(j, "state",
+	                    json_string(op->opened ? "opened"
+	                                : answered ? "answered"
+	                                : late     ? "late"
+	                                           : "waiting"));
+	json_object_set_new(j, "asked_gps", json_gps_new(op->asked_ns));
+	json_object_set_new(j, "deadline_gps", json_gps_new(op->deadline_ns));
+	json_object_set_new(j, "reveal_gps", spot ? json_null() : json_gps_new(op->reveal_ns));
+	json_object_set_new(j, "answered_gps", answered && t.n >= c->k ? json_gps_new(t.answered_ns) : json_null());
 	json_object_set_new(j, "shares", shares);
+	json_object_set_new(j, "refused", refused);
+	put_rota(o, c, op, j);
 	json_decref(answers);
 	return st;
 }
@@ -340,7 +398,7 @@ enum qb_status case_opening(struct ops *o, struct campaign *c, const struct ops_
 	struct opening *op = opening_find(c, call->match->parts[1]);
 	if (op == NULL || !may_see(c, op, call->who))
 		return qb_fail(e, QB_NOT_FOUND, "opening", "see quietbell opening list", "there is no such opening");
-	json_t *j = json_object(), *boxes = json_object(), *answers = json_object();
+	json_t *j = json_object(), *boxes = json_object(), *answers = json_object(), *retractions = json_object();
 	struct listing l = {.c = c, .o = o, .list = json_array()};
 	struct finding f = {op, j};
 	enum qb_status st = opening_state(o, c, op, j, e);
@@ -354,6 +412,9 @@ enum qb_status case_opening(struct ops *o, struct campaign *c, const struct ops_
 		st = store_boxes(o->store, c->id, op->id, call->who->name, add_box, boxes, e);
 	if (st == QB_OK && asked_by(op, call->who))
 		st = store_boxes(o->store, c->id, op->id, TO_ASKER, add_box, answers, e);
+	if (st == QB_OK && asked_by(op, call->who))
+		st = store_boxes(o->store, c->id, op->id, TO_RETRACT, add_box, retractions, e);
+	json_object_set_new(j, "retractions", retractions);
 	json_object_set_new(j, "records", l.list);
 	json_object_set_new(j, "boxes", boxes);
 	json_object_set_new(j, "answers", answers);

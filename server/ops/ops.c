@@ -215,7 +215,7 @@ static enum qb_status reload_hidden(void *state, const struct store_hidden *h, s
 	if (strcmp(en.type->type, "claim") == 0)
 		c->n_claims++;
 	if (strcmp(en.type->type, "spot-request") == 0)
-		opening_add_spot(c, h->commitment, h->author);
+		(void)opening_add_spot(c, &en, h->commitment, h->author, h->received_gps_ns);
 	wire_entry_free(&en);
 	return QB_OK;
 }

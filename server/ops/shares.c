@@ -127,6 +127,11 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 	    c, op, b.data, 0, b.len / PARTIAL_BYTES, (uint32_t)custodian_index(c, call->who->name) + 1};
 	if (st == QB_OK && op->opened)
 		st = qb_fail(e, QB_CONFLICT, "opening", NULL, "it is open already");
+	if (st == QB_OK && now_locked(o) < op->reveal_ns) {
+		reply->until_gps_ns = op->reveal_ns;
+		st = qb_fail(e, QB_CONFLICT, "opening", "hand them over at the time to reveal",
+		             "shares are taken from the time to reveal on");
+	}
 	if (st == QB_OK)
 		st = store_shares(o->store, c->id, op->id, opening_add_name, names, e);
 	if (st == QB_OK)
@@ -193,21 +198,41 @@ static enum qb_status spot_given_before(struct ops *o, const struct campaign *c,
 	return st;
 }
 
+/* What each hidden entry of a spot carries, and until when it is taken. */
+static const struct {
+	const char *type, *receiver; /* NULL: boxes to every custodian */
+	bool box, until_deadline;
+} spot_steps[] = {
+    {"spot-shares", NULL, false, true},
+    {"spot-answer", TO_ASKER, true, true},
+    {"spot-refusal", REFUSED, false, true},
+    {"spot-retraction", TO_RETRACT, true, false},
+};
+
 static enum qb_status give_spot(struct ops *o, struct campaign *c, struct opening *op, const struct ops_call *call,
                                 const struct accepted *a, struct ops_reply *reply, struct qb_error *e)
 {
 	struct txn t;
 	struct buf b = {0};
 	uint8_t commitment[64];
-	bool answer = strcmp(a->entry.type->type, "spot-answer") == 0;
+	size_t s = 0;
+	while (strcmp(spot_steps[s].type, a->entry.type->type) != 0) {
+		if (++s == sizeof spot_steps / sizeof spot_steps[0])
+			return qb_fail(e, QB_REFUSED, "entry", NULL, "does not belong to a spot opening");
+	}
 	if (c->state != C_SEALED)
 		return qb_fail(e, QB_CONFLICT, "spot opening", NULL, "the campaign is %s", campaign_word(c));
-	enum qb_status st = spot_given_before(o, c, op, call->who->name, answer ? TO_ASKER : TO_ALL, e);
-	if (st == QB_OK && answer)
+	if (spot_steps[s].until_deadline && now_locked(o) > op->deadline_ns)
+		return qb_fail(e, QB_CONFLICT, "spot opening", "tell the asker by telephone",
+		               "its deadline has passed; what comes now is of no use");
+	const char *to = spot_steps[s].receiver != NULL ? spot_steps[s].receiver : TO_ALL;
+	enum qb_status st = spot_given_before(o, c, op, call->who->name, to, e);
+	if (st == QB_OK && spot_steps[s].box)
 		st = body_base64(call->body, "box", 4096, &b, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, a->entry.type->type, e)) == QB_OK) {
-		if (answer)
-			st = store_box_put(o->store, c->id, op->id, call->who->name, TO_ASKER, b.data, b.len, e);
+		if (spot_steps[s].receiver != NULL)
+			st = store_box_put(o->store, c->id, op->id, call->who->name, spot_steps[s].receiver, b.data,
+			                   b.len, e);
 		else
 			st = put_boxes(o, c, op, call, e);
 		if (st == QB_OK)
@@ -217,6 +242,27 @@ static enum qb_status give_spot(struct ops *o, struct campaign *c, struct openin
 		txn_end(&t);
 	}
 	buf_free(&b);
+	return st;
+}
+
+/* A public refusal of the full opening. */
+static enum qb_status refuse_full(struct ops *o, struct campaign *c, struct opening *op, const struct ops_call *call,
+                                  const struct accepted *a, struct ops_reply *reply, struct qb_error *e)
+{
+	struct txn t;
+	uint8_t leaf[32];
+	int64_t seq;
+	enum qb_status st = op->opened ? qb_fail(e, QB_CONFLICT, "opening", NULL, "it is open already") : QB_OK;
+	if (st == QB_OK && (st = txn_begin(&t, o, "opening-refusal", e)) == QB_OK) {
+		st = store_box_put(o->store, c->id, op->id, call->who->name, REFUSED, "", 0, e);
+		if (st == QB_OK)
+			st = txn_entry(&t, call->who->key_id, a->text, a->signature, &seq, leaf, e);
+		if (st == QB_OK)
+			st = txn_commit(&t, e);
+		if (st == QB_OK)
+			reply_entry(reply, 201, seq, leaf, t.now_ns);
+		txn_end(&t);
+	}
 	return st;
 }
 
@@ -230,12 +276,15 @@ enum qb_status case_opening_shares(struct ops *o, struct campaign *c, const stru
 	enum qb_status st = accept_entry(o, call, c, &a, e);
 	if (st != QB_OK)
 		return st;
-	bool full = strcmp(a.entry.type->type, "opening-shares") == 0;
+	bool refusal = strcmp(a.entry.type->type, "opening-refusal") == 0;
+	bool full = refusal || strcmp(a.entry.type->type, "opening-shares") == 0;
 	if (strcmp(wire_entry_text(&a.entry, "opening"), call->match->parts[1]) != 0)
 		st = qb_fail(e, QB_REFUSED, "entry: opening", NULL, "is not the opening of the path");
 	else if (full != (op->scope == SCOPE_FULL))
 		st = qb_fail(e, QB_REFUSED, "entry", NULL, "this is a %s opening",
 		             op->scope == SCOPE_FULL ? "full" : "spot");
+	else if (refusal)
+		st = refuse_full(o, c, op, call, &a, reply, e);
 	else
 		st = full ? give_full(o, c, op, call, &a, reply, e) : give_spot(o, c, op, call, &a, reply, e);
 	accepted_free(&a);

@@ -227,7 +227,11 @@ static void apply_opening(struct campaign *c, const struct wire_entry *en, const
 		c->hidden_count = wire_entry_int(en, "count");
 		wire_entry_hex(en, "commitments_hash", c->hidden_hash, 64);
 	} else if (strcmp(type, "opening-request") == 0) {
-		struct opening op = {.scope = SCOPE_FULL, .seq = (int64_t)leaf->seq};
+		struct opening op = {.scope = SCOPE_FULL,
+		                     .seq = (int64_t)leaf->seq,
+		                     .asked_ns = leaf->received_gps_ns,
+		                     .deadline_ns = wire_entry_gps(en, "deadline_gps"),
+		                     .reveal_ns = wire_entry_gps(en, "reveal_gps")};
 		memcpy(op.id, leaf_hash, 16);
 		memcpy(op.authority, leaf_hash, 32);
 		memcpy(op.asker, leaf->author, 16);

@@ -137,6 +137,38 @@ enum qb_status view_author_key(const struct view *v, const struct entry *leaf, u
 	return st;
 }
 
+int opening_rota(const struct campaign *c, const uint8_t id[static 16], enum opening_scope scope, int64_t asked_ns,
+                 int64_t deadline_ns, int64_t now_ns, int order[CUSTODY_MAX])
+{
+	int start = id[0] % c->n;
+	int64_t step =
+	    scope == SCOPE_SPOT ? c->plan->alerts.call_next_after_ns : (deadline_ns - asked_ns) / (c->n - c->k + 1);
+	for (int i = 0; i < c->n; i++)
+		order[i] = (start + i) % c->n;
+	int64_t more = step > 0 && now_ns > asked_ns ? (now_ns - asked_ns) / step : 0;
+	return more > c->n - c->k ? c->n : c->k + (int)more;
+}
+
+enum qb_status campaign_spot_allowed(const struct campaign *c, const struct wire_entry *en, struct qb_error *e)
+{
+	const struct plan_names *may = &c->plan->alerts.recipients;
+	size_t i;
+	json_t *v;
+	if (strcmp(en->why, "-") == 0)
+		return qb_fail(e, QB_REFUSED, "spot request: why", "give --reason", "a spot request needs a reason");
+	json_array_foreach(wire_entry_json(en, "recipients"), i, v)
+	{
+		bool named = !c->plan->alerts.given || may->n == 0;
+		for (int j = 0; j < may->n; j++)
+			named = named || strcmp(may->name[j], json_string_value(v)) == 0;
+		if (!named)
+			return qb_fail(e, QB_REFUSED, "spot request: recipients",
+			               "name recipients of the plan's alerts section",
+			               "'%.60s' may not learn the answer by the plan", json_string_value(v));
+	}
+	return QB_OK;
+}
+
 const struct custodian *campaign_drawers(const struct campaign *c, int *n)
 {
 	*n = c->epoch == 1 ? c->n : c->n_founders;

@@ -124,7 +124,9 @@ struct opening {
 	int64_t seq;           /* of the entry; NO_SEQ for a spot */
 	uint8_t asker[16];     /* key id */
 	bool opened;
-	int64_t *positions; /* spot: the records it opens, fixed when it was asked */
+	int64_t asked_ns, deadline_ns; /* received; of the request */
+	int64_t reveal_ns;             /* full: shares are taken from this time on */
+	int64_t *positions;            /* spot: the records it opens, fixed when it was asked */
 	int n_positions;
 };
 
@@ -275,6 +277,20 @@ uint64_t campaign_next_canary(const struct campaign *c);
 int campaign_margin(const struct campaign *c);
 /* The custodians of epoch 1, whose contributions the draw is made of. */
 const struct custodian *campaign_drawers(const struct campaign *c, int *n);
+/*
+ * Who is called for an opening, in what order: the list begins at a place that the opening's id fixes, so that the same
+ * people are not always first; the first k at once, one more for each step that passes without enough shares.
+ *
+ * Returned: order        positions of custodians, all n
+ *           the number of them that are called at this time
+ */
+int opening_rota(const struct campaign *c, const uint8_t id[static 16], enum opening_scope scope, int64_t asked_ns,
+                 int64_t deadline_ns, int64_t now_ns, int order[CUSTODY_MAX]);
+/*
+ * Whether the plan lets this be asked: a reason, and recipients that the plan names. Errors: QB_REFUSED
+ */
+enum qb_status campaign_spot_allowed(const struct campaign *c, const struct wire_entry *en,
+                                     struct qb_error *e) QB_MUST_USE;
 /* Drafted, certified ... or stalled. */
 const char *campaign_word(const struct campaign *c);
 /*

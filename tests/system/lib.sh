@@ -14,7 +14,15 @@ fails() {
 	[ $got -eq "$wanted" ] && grep -q -- "$text" "$work/out" && [ "$(wc -l <"$work/out")" -eq 1 ]
 }
 finish() {
+	# a driver that is told to end in the middle of a slot stays to report it, on a clock that moves no more
 	for p in $children; do kill "$p" 2>/dev/null; done
+	for _ in $(seq 30); do
+		left=0
+		for p in $children; do kill -0 "$p" 2>/dev/null && left=1; done
+		[ $left -eq 0 ] && break
+		sleep 0.1
+	done
+	for p in $children; do kill -9 "$p" 2>/dev/null; done
 	wait 2>/dev/null
 	if [ $bad -ne 0 ] && [ -n "${QB_KEEP:-}" ]; then echo "kept: $work"; else rm -rf "$work"; fi
 }

@@ -287,19 +287,22 @@ static void null_and_live_take_the_same_calls(void **state)
 static void notes(void **state)
 {
 	(void)state;
-	assert_int_equal(play_notes(64 * NS_PER_S), 2);
+	assert_int_equal(play_notes(64 * NS_PER_S), 3);
 	assert_int_equal(play_note_due(START, 64 * NS_PER_S, 0), START);
 	assert_int_equal(play_note_due(START, 64 * NS_PER_S, 1), START + 60 * NS_PER_S);
-	assert_int_equal(play_notes(60 * NS_PER_S), 1);
-	assert_int_equal(play_notes(900 * NS_PER_S), 15);
-	assert_int_equal(play_notes(901 * NS_PER_S), 15);
+	assert_int_equal(play_note_due(START, 64 * NS_PER_S, 2), START + 64 * NS_PER_S);
+	assert_int_equal(play_notes(60 * NS_PER_S), 2);
+	assert_int_equal(play_notes(5 * NS_PER_S), 2);
+	assert_int_equal(play_notes(840 * NS_PER_S), 15);
+	assert_int_equal(play_notes(841 * NS_PER_S), 15);
 	assert_int_equal(play_notes(3600 * NS_PER_S), 15);
-	assert_int_equal(play_note_due(START, 3600 * NS_PER_S, 14), START + 14 * 240 * NS_PER_S);
+	assert_int_equal(play_note_due(START, 3600 * NS_PER_S, 13), START + 13 * 258 * NS_PER_S);
+	assert_int_equal(play_note_due(START, 3600 * NS_PER_S, 14), START + 3600 * NS_PER_S);
 	for (int64_t s = 1; s < 100000; s += 37) {
 		int n = play_notes(s * NS_PER_S);
-		assert_true(n >= 1 && n <= PLAY_NOTES_MAX);
-		assert_true(play_note_due(0, s * NS_PER_S, n - 1) < s * NS_PER_S);
-		assert_true(play_note_due(0, s * NS_PER_S, n) >= s * NS_PER_S);
+		assert_true(n >= 2 && n <= PLAY_NOTES_MAX);
+		assert_true(play_note_due(0, s * NS_PER_S, n - 2) < s * NS_PER_S);
+		assert_true(play_note_due(0, s * NS_PER_S, n - 1) == s * NS_PER_S);
 	}
 }
 
