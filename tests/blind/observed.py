@@ -105,11 +105,15 @@ def between(t, looks):
     for i in range(len(looks) - 1):
         a, b = looks[i], looks[i + 1]
         for where, slot in (('ending', i), ('starting', i + 1)):
+            newest = {}
             for path in b['files']:
-                size, blocks, _ = b['files'][path]
+                size, blocks, changed = b['files'][path]
+                newest[place_of(path)] = max(changed, newest.get(place_of(path), 0))
                 was = a['files'].get(path, (0, 0, 0))
                 t.add('%s.files.%s.bytes' % (where, place_of(path)), slot, size - was[0])
                 t.add('%s.files.%s.blocks' % (where, place_of(path)), slot, blocks - was[1])
+            for place, changed in newest.items():
+                t.put('%s.files.%s.age' % (where, place), slot, b['wall'] - changed if changed > 0 else 0)
             t.put(where + '.files', slot, len(b['files']))
             for name, now in b['processes'].items():
                 was = a['processes'].get(name, (0, 0, 0, 0))

@@ -8,10 +8,9 @@ import warnings
 import numpy as np
 from scipy import special, stats
 
-CLIP = 5.0
 FOLDS = 10
 FEW = 8         # campaigns below which the effect of a slot's place can't be learnt
-SPARSE = 0.6    # of the penalty at which blind observables would all stay out
+SPARSE = 0.8    # of the penalty at which blind observables would all stay out
 STEPS = 150
 
 
@@ -20,7 +19,7 @@ def ranks(x):
 
 
 class Game:
-    """All slots of all campaigns: tables of one campaign each, stacked; numbers seen from their own campaign and place."""
+    """All slots of all campaigns, stacked; numbers seen from their own campaign and their place in it."""
 
     def __init__(self, played):
         names = sorted(set().union(*(p[0] for p in played)))
@@ -45,18 +44,23 @@ class Game:
             if len(played) >= FEW:
                 x = x - self._centres(x, place)
                 x = x - self._centres(x, self.group)
-            wide = np.nanpercentile(np.abs(x), 75, axis=0)
-            spread = np.nanstd(x, axis=0)
-        scale = np.where(wide > 1e-3 * spread, 1.48 * wide, spread)
-        keep = scale > 0
+            # what is left of a constant that was centred is rounding
+        keep = np.nanmax(np.abs(x), 0) > 1e-9 * np.nanmax(np.abs(raw[:, varies]), 0)
         self.constant += [n for n, k in zip(self.names, keep) if not k]
         self.names = [n for n, k in zip(self.names, keep) if k]
-        x = x[:, keep]
-        self.x = np.nan_to_num(np.clip(x / scale[keep], -CLIP, CLIP))
+        x = np.nan_to_num(x[:, keep])
         # how far from usual, either way, is an observable of its own
-        far = np.abs(self.x)
-        self.features = np.hstack([self.x, far - far.mean(0)])
+        self.features = self._normal(np.hstack([x, np.abs(x)]))
         self.features /= np.maximum(self.features.std(0), 1e-12)
+
+    def _normal(self, x):
+        """Normal scores of ranks within campaigns (van der Waerden 1952): a busy moment is no more than the last rank."""
+        out = np.zeros_like(x)
+        for g in np.unique(self.group):
+            rows = self.group == g
+            out[rows] = special.ndtri(ranks(x[rows]) / (rows.sum() + 1))
+            out[rows] -= out[rows].mean(0)
+        return out
 
     @staticmethod
     def _centres(x, by):
