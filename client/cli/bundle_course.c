@@ -92,5 +92,6 @@ enum qb_status bundle_course_of(const struct verified *v, json_t *course, struct
 {
 	json_t *incidents = json_array();
 	json_object_set_new(course, "incidents", incidents);
-	return incidents_of(v, incidents, e);
+	enum qb_status st = incidents_of(v, incidents, e);
+	return st == QB_OK ? bundle_questions_of(v, course, e) : st;
 }

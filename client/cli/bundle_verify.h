@@ -52,6 +52,8 @@ size_t bundle_record(const struct bundle *b, const uint8_t id[static 64]);
 
 /* What happened beside the claims, for the report: see docs/audit.md, "The course" (bundle_course.c). */
 enum qb_status bundle_course_of(const struct verified *v, json_t *course, struct qb_error *e) QB_MUST_USE;
+/* Its part about questions and answers during the campaign (bundle_questions.c). */
+enum qb_status bundle_questions_of(const struct verified *v, json_t *course, struct qb_error *e) QB_MUST_USE;
 
 /* Settings, slots, claims and guesses of a verified bundle as the audit reads them, owned by the caller. */
 struct bundle_audit {
