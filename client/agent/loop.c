@@ -186,6 +186,9 @@ static enum qb_status wait_sealed(struct driver *d, struct qb_error *e)
 	while (d->campaign->state < C_SEALED && !watch_stopping(d)) {
 		struct qb_error now = {0};
 		enum qb_status st = find_campaign(d, &now);
+		if (st == QB_OK && campaign_over(d->campaign))
+			return qb_fail(e, QB_REFUSED, d->campaign->name, NULL, "was abandoned by %s: %.200s",
+			               d->campaign->ended_by, d->campaign->ended_why);
 		if (st != QB_OK && st != QB_UNREACHABLE) {
 			*e = now;
 			return st;
@@ -205,6 +208,16 @@ static enum qb_status erase_past(struct driver *d, int64_t now_ns, struct qb_err
 	enum qb_status st = QB_OK;
 	const struct slots *sl = &d->campaign->plan->slots;
 	for (int64_t n = 0; st == QB_OK && n < d->campaign->n_slots && slots_start(sl, n + 1) <= now_ns; n++)
+		st = prekeys_erase(d->prekeys, n, e);
+	return st;
+}
+
+/* The campaign ended before its time: from this slot on nothing is played. */
+static enum qb_status erase_from(struct driver *d, int64_t slot, struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	log_event(&d->log, LOG_INFO_, "campaign-ended-early", NULL);
+	for (int64_t n = slot; st == QB_OK && n < d->campaign->n_slots; n++)
 		st = prekeys_erase(d->prekeys, n, e);
 	return st;
 }
@@ -255,6 +268,8 @@ static enum qb_status play_slots(struct driver *d, struct qb_error *e)
 		char line[600];
 		bool filed;
 		st = insist(d, get_slot, n, &seen, e);
+		if (st == QB_OK && watch_ended(&seen))
+			return erase_from(d, n, e);
 		if (st != QB_OK || seen.reported)
 			continue;
 		/* Without its recipe the slot is not played, and reported as such. */
@@ -262,6 +277,10 @@ static enum qb_status play_slots(struct driver *d, struct qb_error *e)
 			log_event(&d->log, LOG_WARN_, "recipes-not-fetched", "why",
 			          qb_error_line(&why, line, sizeof line), NULL);
 		st = slot_run(d, n, &filed, e);
+		/* Left unfiled without being told to end: the campaign ended while this slot was waited for. */
+		if (st == QB_OK && !filed && !watch_stopping(d) && insist(d, get_slot, n, &seen, &why) == QB_OK &&
+		    watch_ended(&seen))
+			return erase_from(d, n, e);
 	}
 	return watch_stopping(d) && st == QB_UNREACHABLE ? QB_OK : st;
 }

@@ -275,7 +275,7 @@ static bool may_leave(const struct slot_run *r)
 	       (r->play.silent_from != PLAY_NEVER && r->play.next >= r->play.silent_from);
 }
 
-/* Until the slot's last sample is out and its last note taken. False: told to end. */
+/* Until the slot's last sample is out and its last note taken. False: told to end, or the campaign ended before it. */
 static bool play_out(struct slot_run *r)
 {
 	bool begun = false;
@@ -283,6 +283,8 @@ static bool play_out(struct slot_run *r)
 		struct qb_error e = {0};
 		bool progress = false;
 		if (look(r, &e) == QB_OK || !r->d->link.rehearsal) {
+			if (watch_ended(&r->seen))
+				return false;
 			if (!begun && r->seen_once) {
 				filing_begin(&r->filing, r->d, r->n, r->seen.notes);
 				begun = true;

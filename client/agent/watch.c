@@ -53,6 +53,8 @@ enum qb_status watch_slot_parse(const json_t *doc, int64_t slot, const char *sta
 	if (st == QB_OK && (number != slot || mine == NULL))
 		st = qb_fail(e, QB_FORMAT, "slot", NULL, "the service answers about another slot or station");
 	if (st == QB_OK)
+		st = read_flag(doc, "ended", &out->ended, e);
+	if (st == QB_OK)
 		st = read_flag(mine, "held", &out->held, e);
 	if (st == QB_OK)
 		st = read_flag(mine, "stopped", &out->stopped, e);
@@ -79,6 +81,11 @@ enum qb_status watch_slot(struct driver *d, int64_t slot, struct watch_slot *out
 	json_decref(doc);
 	qb_free(path);
 	return st;
+}
+
+bool watch_ended(const struct watch_slot *seen)
+{
+	return seen->ended && seen->going == GOING_UNKNOWN;
 }
 
 bool watch_observing(const char *path)

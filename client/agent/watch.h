@@ -11,10 +11,14 @@ enum watch_going { GOING_UNKNOWN, GOING_NO, GOING_YES };
 
 struct watch_slot {
 	bool held, stopped, reported;
+	bool ended;             /* the campaign, before its time */
 	int64_t stopped_gps_ns; /* of the standing stop */
 	enum watch_going going;
 	int64_t notes;
 };
+
+/* The campaign ended before this slot's freeze: there is nothing to play in it or after it. */
+bool watch_ended(const struct watch_slot *seen);
 
 /* The real clock, or under a rehearsal clock the service's. Errors: QB_UNREACHABLE. */
 enum qb_status watch_now(struct driver *d, int64_t *now_gps_ns, struct qb_error *e) QB_MUST_USE;

@@ -42,6 +42,13 @@ static int by_start(const void *a, const void *b)
 	return (x->from > y->from) - (x->from < y->from);
 }
 
+/* Where observing counts no more: the end of the stretch, or of a campaign that ended before it. */
+static int64_t last_instant(const struct campaign *k)
+{
+	int64_t end = k->plan->slots.end_gps_ns;
+	return k->ending != ENDING_NONE && k->ended_ns < end ? k->ended_ns : end;
+}
+
 /* All stated segments of a kind over all stations, merged. */
 static enum qb_status segments_of(const struct verified *v, const char *kind, json_t *out, struct qb_error *e)
 {
@@ -63,7 +70,11 @@ static enum qb_status segments_of(const struct verified *v, const char *kind, js
 		{
 			struct span s;
 			if (!clock_gps_parse(json_string_value(json_array_get(pair, 0)), &s.from) ||
-			    !clock_gps_parse(json_string_value(json_array_get(pair, 1)), &s.to) || s.to <= s.from)
+			    !clock_gps_parse(json_string_value(json_array_get(pair, 1)), &s.to))
+				continue;
+			if (v->k->ending != ENDING_NONE && s.to > last_instant(v->k))
+				s.to = last_instant(v->k);
+			if (s.to <= s.from)
 				continue;
 			span = (n & (n - 1)) == 0 ? qb_realloc(span, n > 0 ? 2 * n : 1, sizeof *span) : span;
 			span[n++] = s;
@@ -116,10 +127,10 @@ static enum qb_status make_settings(const struct verified *v, json_t *s, struct 
 		st = segments_of(v, "observing", observing, e);
 	if (st == QB_OK)
 		st = segments_of(v, "veto", vetoes, e);
-	if (json_array_size(observing) == 0) {
+	if (json_array_size(observing) == 0 && last_instant(v->k) > p->slots.start_gps_ns) {
 		json_t *whole = json_array();
 		json_array_append_new(whole, seconds(p->slots.start_gps_ns));
-		json_array_append_new(whole, seconds(p->slots.end_gps_ns));
+		json_array_append_new(whole, seconds(last_instant(v->k)));
 		json_array_append_new(observing, whole);
 	}
 	json_object_set_new(s, "name", json_string(v->k->name));
@@ -207,6 +218,8 @@ static enum qb_status make_slots(const struct verified *v, json_t *list, struct 
 			square += t->station[s].snr * t->station[s].snr;
 		}
 		json_object_set_new(j, "state", json_string(slot_state_word(verdict.state)));
+		if (!campaign_reached(v->k, t->slot))
+			json_object_set_new(j, "unplayed", json_true());
 		json_object_set_new(j, "stations", played);
 		if (t->live)
 			json_object_set_new(j, "delivered_network_snr", json_real(sqrt(square)));

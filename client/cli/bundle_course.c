@@ -2,6 +2,7 @@
  * The course of a campaign, out of its verified bundle: what the report prints beside the numbers. Nothing in it is
  * computed from; an incident that can't be read is printed as such and holds nobody's audit up.
  */
+#include <stdio.h>
 #include <string.h>
 
 #include "client/cli/bundle_verify.h"
@@ -88,9 +89,58 @@ static enum qb_status incidents_of(const struct verified *v, json_t *list, struc
 	return st;
 }
 
+static json_t *ending_of(const struct campaign *k)
+{
+	json_t *j = json_object();
+	int64_t unplayed = 0, first = -1;
+	for (int64_t n = k->n_slots - 1; n >= 0; n--) {
+		if (campaign_reached(k, n))
+			continue;
+		unplayed++;
+		first = n;
+	}
+	json_object_set_new(j, "how", json_string(campaign_ending_word(k->ending)));
+	json_object_set_new(j, "by", json_string(k->ended_by));
+	json_object_set_new(j, "why", json_string(k->ended_why));
+	json_object_set_new(j, "ended_gps", json_real((double)k->ended_ns / 1e9));
+	json_object_set_new(j, "slots", json_integer(k->n_slots));
+	json_object_set_new(j, "slots_unplayed", json_integer(unplayed));
+	json_object_set_new(j, "first_unplayed", first >= 0 ? json_integer(first) : json_null());
+	return j;
+}
+
+enum qb_status verify_ending(struct verified *v, struct qb_error *e)
+{
+	struct entry leaf;
+	const struct campaign *k = v->k;
+	if (k->closing_seq == NO_SEQ || (uint64_t)k->closing_seq >= v->follow.n)
+		return qb_fail(e, QB_NO, "bundle", NULL, "the analysis was never closed");
+	const struct buf *frame = &v->follow.frame[k->closing_seq];
+	enum qb_status st = entry_decode(frame->data, frame->len, &leaf, e);
+	if (st == QB_OK && k->ending == ENDING_NONE && leaf.received_gps_ns < k->plan->slots.end_gps_ns)
+		st = qb_fail(e, QB_NO, "bundle", NULL,
+		             "the analysis was closed before the end, and not as an early closing");
+	if (st == QB_OK && k->ending != ENDING_NONE && strcmp(k->ended_why, "-") == 0)
+		st = qb_fail(e, QB_NO, "bundle", NULL, "the campaign ended before its time without a reason");
+	for (int64_t n = 0; st == QB_OK && k->ending != ENDING_NONE && n < k->n_slots; n++) {
+		if (k->slot[n].freeze_seq > k->ending_seq)
+			st = qb_fail(e, QB_NO, "bundle", NULL, "a slot was frozen after the end of the campaign");
+	}
+	if (st == QB_OK && k->ending != ENDING_NONE) {
+		json_t *j = ending_of(k);
+		(void)snprintf(v->note, sizeof v->note, "%s by %s, %lld of %lld slots not played: %.200s",
+		               campaign_ending_word(k->ending), k->ended_by,
+		               (long long)json_integer_value(json_object_get(j, "slots_unplayed")),
+		               (long long)k->n_slots, k->ended_why);
+		json_decref(j);
+	}
+	return st;
+}
+
 enum qb_status bundle_course_of(const struct verified *v, json_t *course, struct qb_error *e)
 {
 	json_t *incidents = json_array();
+	json_object_set_new(course, "ending", v->k->ending == ENDING_NONE ? json_null() : ending_of(v->k));
 	json_object_set_new(course, "incidents", incidents);
 	enum qb_status st = incidents_of(v, incidents, e);
 	return st == QB_OK ? bundle_questions_of(v, course, e) : st;

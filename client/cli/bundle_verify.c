@@ -358,6 +358,7 @@ static const struct {
     {"recipes and one-time keys are those of the sealing", "hashes entered before anything was played", check_recipes},
     {"enough custodians opened, each correctly", "proof of each partial opening, combination, hash of all contents",
      check_opening},
+    {"the campaign ended when and as the ledger says", "the closing entry, its author, time and reason", verify_ending},
     {"every guess came before its slot", "promised times, places in the ledger, the slot in each sealed guess",
      verify_guesses},
     {"nobody chose the draw", "every contribution fits the commitment made before it; the seed follows", verify_seed},

@@ -42,6 +42,8 @@ enum qb_status verify_seed(struct verified *v, struct qb_error *e) QB_MUST_USE;
 enum qb_status verify_reseal(struct verified *v, struct qb_error *e) QB_MUST_USE;
 enum qb_status verify_redraw(struct verified *v, struct qb_error *e) QB_MUST_USE;
 
+/* The campaign was closed when and as it may be, and nothing was frozen after an early end (bundle_course.c). */
+enum qb_status verify_ending(struct verified *v, struct qb_error *e) QB_MUST_USE;
 /* Every guess was received before its slot started, and is about it (bundle_guesses.c). */
 enum qb_status verify_guesses(struct verified *v, struct qb_error *e) QB_MUST_USE;
 /* Appends the standing guesses: the newest of each person about each slot. */

@@ -177,6 +177,9 @@ static enum qb_status run_show(struct cli_call *c)
 			reports += __builtin_popcount(k->slot[n].reported);
 		cli_print(c, "campaign   %s (%s%s)\nstate      %s\n", k->name, plan_phase_word(k->plan->phase),
 		          k->rehearsal_clock ? ", rehearsal clock" : "", campaign_word(k));
+		if (k->ending != ENDING_NONE)
+			cli_print(c, "ending     %s on %s by %s: %s\n", campaign_ending_word(k->ending),
+			          clock_utc_text(k->ended_ns, from, sizeof from), k->ended_by, k->ended_why);
 		cli_print(c, "slots      %lld of %g s, %s to %s\n", (long long)k->n_slots,
 		          (double)k->plan->slots.slot_ns / 1e9,
 		          clock_utc_text(k->plan->slots.start_gps_ns, from, sizeof from),
@@ -253,26 +256,15 @@ static enum qb_status run_seal(struct cli_call *c)
 	return st;
 }
 
-static enum qb_status run_close(struct cli_call *c)
-{
-	struct campaign *k;
-	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
-	if (st != QB_OK)
-		return st;
-	char *path = text_printf("/v1/campaigns/%s/close", k->name);
-	st = cli_post_entry(c, path, "closing", k->id, cli_option(c, "reason"), NULL, NULL, NULL);
-	qb_free(path);
-	if (st == QB_OK)
-		cli_print(c, "campaign %s is closed: no claim is taken any more\n", k->name);
-	return st;
-}
-
+static const struct cli_option close_options[] = {
+    {"check", NULL, false, "list what is missing, and change nothing; status 1 when something is"},
+    {"early", NULL, false, "before the end of the stretch; nothing more is played"},
+    {"reason", "TEXT", false, "why, for the ledger; needed with --early"},
+    {NULL, NULL, false, NULL}};
 static const struct cli_option draft_options[] = {
     {"reason", "TEXT", false, "why, for the ledger"},
     {"rehearsal-seed", "N", false, "a fixed campaign number, for reproducible rehearsals"},
     {NULL, NULL, false, NULL}};
-static const struct cli_option reason_options[] = {{"reason", "TEXT", false, "why, for the ledger"},
-                                                   {NULL, NULL, false, NULL}};
 static const struct cli_option keygen_options[] = {
     {"wait", NULL, false, "wait for the others and go on until the campaign is sealed"},
     {"rehearsal-seed", "N", false, "a fixed contribution, for reproducible rehearsals"},
@@ -323,6 +315,9 @@ const struct cli_verb cli_campaign_verbs[] = {
      "quietbell campaign witness fells-spring --station tarn --reason 'walked the racks'"},
     {"campaign", "seal", "CAMPAIGN", run_seal, seal_options, "draws and seals every slot (administrator)",
      "quietbell campaign seal fells-spring"},
-    {"campaign", "close", "CAMPAIGN", run_close, reason_options, "closes the analysis (reviewer)",
+    {"campaign", "close", "CAMPAIGN", cli_close, close_options, "closes the analysis (reviewer)",
      "quietbell campaign close fells-spring"},
+    {"campaign", "abandon", "CAMPAIGN", cli_abandon, why_options,
+     "ends a campaign for good: nothing more is played (reviewer; before the sealing also the administrator)",
+     "quietbell campaign abandon fells-spring --reason 'the schedule was on a public page'"},
     {NULL, NULL, NULL, NULL, NULL, NULL, NULL}};

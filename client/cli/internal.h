@@ -58,6 +58,8 @@ enum qb_status cli_witness(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_reshare(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_repair(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_exclude(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_close(struct cli_call *c) QB_MUST_USE;
+enum qb_status cli_abandon(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_rehearse(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_key_backup(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_key_restore(struct cli_call *c) QB_MUST_USE;

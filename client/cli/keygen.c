@@ -368,6 +368,9 @@ static enum qb_status step_finish(struct part *p)
 static enum qb_status turn(struct part *p, bool *idle, bool *done)
 {
 	*idle = true;
+	if (campaign_over(p->k) && p->k->state < C_SEALED)
+		return qb_fail(&p->c->error, QB_NO, p->k->name, "nothing more is to do", "was abandoned by %s: %.200s",
+		               p->k->ended_by, p->k->ended_why);
 	enum qb_status st = part_later(p, idle);
 	if (p->left)
 		*done = true;

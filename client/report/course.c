@@ -2,6 +2,7 @@
 #include <stdio.h>
 
 #include "client/report/facts.h"
+#include "client/report/figure.h"
 #include "client/report/lines.h"
 #include "client/report/page.h"
 
@@ -87,8 +88,7 @@ static void times(struct buf *b, const json_t *doc)
 {
 	const json_t *t = facts_at(doc, "course.question_times");
 	buf_clear(b);
-	buf_printf(b, "Questions: %.0f asked, %.0f answered", facts_number(t, "asked"),
-	           facts_number(t, "answered"));
+	buf_printf(b, "Questions: %.0f asked, %.0f answered", facts_number(t, "asked"), facts_number(t, "answered"));
 	if (json_is_real(json_object_get(t, "median_s")))
 		buf_printf(b, "; median time from question to answer %.1f s, longest %.1f s",
 		           facts_number(t, "median_s"), facts_number(t, "longest_s"));
@@ -138,11 +138,34 @@ static void questions_text(struct buf *out, const json_t *doc, const json_t *lis
 	buf_free(&fate);
 }
 
+/* The sentence about an early end into b; false without one. */
+static bool ending_sentence(struct buf *b, const json_t *doc)
+{
+	const json_t *x = facts_at(doc, "course.ending");
+	char a[FACT], n[FACT], of[FACT];
+	if (!json_is_object(x))
+		return false;
+	buf_printf(
+	    b,
+	    "The campaign was %s by %s on %s: %s. %s of its %s slots were not played; they are counted neither as "
+	    "found nor as missed.",
+	    facts_text(x, "how"), facts_text(x, "by"), facts_utc(a, facts_number(x, "ended_gps")), facts_text(x, "why"),
+	    facts_count(n, facts_number(x, "slots_unplayed")), facts_count(of, facts_number(x, "slots")));
+	return true;
+}
+
 void course_html(struct buf *out, const json_t *doc)
 {
 	const json_t *questions = facts_at(doc, "course.questions");
 	if (json_array_size(questions) > 0)
 		questions_html(out, doc, questions);
+	struct buf sentence = {0};
+	if (ending_sentence(&sentence, doc)) {
+		buf_text(out, "<p class=\"note\">");
+		figure_escape(out, (const char *)sentence.data);
+		buf_text(out, "</p>\n");
+	}
+	buf_free(&sentence);
 	const json_t *incidents = facts_at(doc, "course.incidents");
 	if (json_is_array(incidents) && json_array_size(incidents) == 0)
 		buf_text(out, "<p class=\"note\">Nobody reported a break of the blind.</p>\n");
@@ -174,6 +197,10 @@ void course_text(struct buf *out, const json_t *doc)
 	const json_t *questions = facts_at(doc, "course.questions");
 	if (json_array_size(questions) > 0)
 		questions_text(out, doc, questions);
+	struct buf sentence = {0};
+	if (ending_sentence(&sentence, doc))
+		lines_wrap(out, "", (const char *)sentence.data);
+	buf_free(&sentence);
 	const json_t *incidents = facts_at(doc, "course.incidents");
 	if (json_is_array(incidents))
 		incidents_text(out, incidents);

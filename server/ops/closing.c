@@ -9,34 +9,85 @@
 #define BUNDLE_MAX      ((size_t)2 << 30)
 #define SERVICE_VERSION "1.0"
 
+/* The closing itself, also of a campaign that ends before its time: then every key that is left is erased with it. */
+static enum qb_status close_now(struct ops *o, struct campaign *c, const struct ops_call *call,
+                                const struct accepted *a, bool early, struct ops_reply *reply, struct qb_error *e)
+{
+	struct txn t;
+	int64_t seq;
+	uint8_t leaf[32];
+	enum qb_status st = txn_begin(&t, o, a->entry.type->type, e);
+	if (st != QB_OK)
+		return st;
+	st = hidden_batches(&t, c, true, e);
+	if (st == QB_OK)
+		st = hidden_summary(&t, c, e);
+	if (st == QB_OK)
+		st = txn_entry(&t, call->who->key_id, a->text, a->signature, &seq, leaf, e);
+	if (st == QB_OK && early)
+		st = store_slot_keys_erase_below(o->store, c->id, c->n_slots, e);
+	if (st == QB_OK)
+		st = txn_commit(&t, e);
+	if (st == QB_OK && early)
+		c->erased_below = c->n_slots;
+	if (st == QB_OK)
+		reply_entry(reply, 201, seq, leaf, t.now_ns);
+	txn_end(&t);
+	return st;
+}
+
+static enum qb_status needs_reason(const struct accepted *a, struct qb_error *e)
+{
+	return strcmp(a->entry.why, "-") != 0 ? QB_OK
+	                                      : qb_fail(e, QB_REFUSED, a->entry.type->type, "give --reason",
+	                                                "an end before the time needs a reason");
+}
+
 enum qb_status case_close(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                           struct qb_error *e)
 {
 	struct accepted a;
-	struct txn t;
-	int64_t seq;
-	uint8_t leaf[32];
+	int64_t end = c->plan->slots.end_gps_ns;
 	enum qb_status st = accept_entry(o, call, c, &a, e);
 	if (st != QB_OK)
 		return st;
-	if (c->state != C_SEALED)
+	bool early = strcmp(a.entry.type->type, "early-closing") == 0, running = now_locked(o) < end;
+	if (c->state != C_SEALED) {
 		st = qb_fail(e, QB_CONFLICT, "close", NULL, "the campaign is %s", campaign_word(c));
-	else if (now_locked(o) < c->plan->slots.end_gps_ns)
-		st = qb_fail(e, QB_CONFLICT, "close", "wait for the end of the stretch", "the campaign still runs");
-	if (st == QB_CONFLICT && c->state == C_SEALED)
-		reply->until_gps_ns = c->plan->slots.end_gps_ns;
-	if (st == QB_OK && (st = txn_begin(&t, o, "close", e)) == QB_OK) {
-		st = hidden_batches(&t, c, true, e);
-		if (st == QB_OK)
-			st = hidden_summary(&t, c, e);
-		if (st == QB_OK)
-			st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
-		if (st == QB_OK)
-			st = txn_commit(&t, e);
-		if (st == QB_OK)
-			reply_entry(reply, 201, seq, leaf, t.now_ns);
-		txn_end(&t);
+	} else if (running && !early) {
+		reply->until_gps_ns = end;
+		st = qb_fail(e, QB_CONFLICT, "close", "wait for the end of the stretch, or give --early and a reason",
+		             "the campaign still runs");
+	} else if (early && !running) {
+		st = qb_fail(e, QB_CONFLICT, "close", "close it without --early", "the stretch is over");
+	} else if (early) {
+		st = needs_reason(&a, e);
 	}
+	if (st == QB_OK)
+		st = close_now(o, c, call, &a, early, reply, e);
+	accepted_free(&a);
+	return st;
+}
+
+enum qb_status case_abandon(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
+                            struct qb_error *e)
+{
+	struct accepted a;
+	enum qb_status st = accept_entry(o, call, c, &a, e);
+	if (st != QB_OK)
+		return st;
+	if (c->state > C_SEALED)
+		st = qb_fail(e, QB_CONFLICT, "abandon", NULL, "the campaign is %s", campaign_word(c));
+	else if (c->state == C_SEALED && campaign_role(c, call->who) != ROLE_REVIEWER)
+		st =
+		    qb_fail(e, QB_REFUSED, "abandon", "ask a reviewer", "a sealed campaign is a reviewer's to abandon");
+	else
+		st = needs_reason(&a, e);
+	if (st == QB_OK)
+		st = c->state == C_SEALED ? close_now(o, c, call, &a, true, reply, e)
+		                          : enter_one(o, "abandonment", call, &a, reply, e);
+	if (st == QB_OK)
+		seal_job_cancel(o, c);
 	accepted_free(&a);
 	return st;
 }

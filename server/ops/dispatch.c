@@ -39,6 +39,7 @@ static use_case *const cases[R_COUNT] = {
     [R_INCIDENTS] = case_incident,
     [R_RECEIPTS] = case_receipts,
     [R_CLOSE] = case_close,
+    [R_ABANDON] = case_abandon,
     [R_SIGNATURES] = case_sign,
     [R_OPENINGS_POST] = case_opening_request,
     [R_OPENINGS_GET] = case_openings_list,
@@ -86,6 +87,9 @@ static enum qb_status run(struct ops *o, const struct ops_call *call, struct ops
 	}
 	if ((st = check_role(o, call, c, e)) != QB_OK)
 		return st;
+	if (c != NULL && campaign_over(c) && c->state < C_SEALED && strcmp(r->method, "POST") == 0)
+		return qb_fail(e, QB_CONFLICT, c->name, "draft a new plan", "was abandoned by %s: %.200s", c->ended_by,
+		               c->ended_why);
 	if (c != NULL && (st = campaign_due(o, c, e)) != QB_OK)
 		return st;
 	return cases[r->id](o, c, call, reply, e);

@@ -199,6 +199,8 @@ enum qb_status case_campaign(struct ops *o, struct campaign *c, const struct ops
 	json_object_set_new(d, "sealing", seq_or_null(c->sealing_seq));
 	json_object_set_new(d, "sealed", seq_or_null(c->sealed_seq));
 	json_object_set_new(d, "closing", seq_or_null(c->closing_seq));
+	json_object_set_new(d, "ending",
+	                    c->ending == ENDING_NONE ? json_null() : json_string(campaign_ending_word(c->ending)));
 	json_object_set_new(d, "group_key", c->has_group ? json_hex_new(c->group.s, 32) : json_null());
 	json_object_set_new(d, "transcript", c->has_group ? json_hex_new(c->group.th, 64) : json_null());
 	json_object_set_new(d, "claims", c->state >= C_CLOSED ? json_integer(c->n_claims) : json_null());

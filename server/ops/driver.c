@@ -108,6 +108,9 @@ enum qb_status case_recipe(struct ops *o, struct campaign *c, const struct ops_c
 		st = slot_number(c, call->match->parts[1], &slot, e);
 	if (st == QB_OK && !query_int(call->query, "place", 0, RECIPE_PLACES - 1, 0, &place))
 		st = qb_fail(e, QB_RANGE, "query: place", "0 (main) or 1 (spare)", "is out of range");
+	if (st == QB_OK && !campaign_reached(c, slot))
+		st = qb_fail(e, QB_CONFLICT, "recipe", "end the driver", "the campaign was %s before this slot",
+		             campaign_ending_word(c->ending));
 	if (st != QB_OK)
 		return st;
 	const char *name = c->plan->network->stations[station].name;
@@ -134,6 +137,9 @@ static enum qb_status may_release(struct ops *o, const struct campaign *c, int64
 	const struct slot_public *s = &c->slot[slot];
 	if (c->state < C_SEALED)
 		return qb_fail(e, QB_CONFLICT, "slot key", NULL, "the campaign is not sealed");
+	if (c->ending != ENDING_NONE)
+		return qb_fail(e, QB_CONFLICT, "slot key", "end the driver",
+		               "the campaign was %s and its keys are erased", campaign_ending_word(c->ending));
 	if (now < freeze || s->freeze_seq == NO_SEQ) {
 		reply->until_gps_ns = freeze;
 		return qb_fail(e, QB_CONFLICT, "slot key", "wait until start - lead", "the slot is not frozen yet");
@@ -189,6 +195,9 @@ static enum qb_status check_filed(const struct campaign *c, const struct ops_cal
 		st = qb_fail(e, QB_REFUSED, "entry: slot", NULL, "is not the slot of the path");
 	if (st == QB_OK && (c->state < C_SEALED || c->state > C_CLOSED))
 		st = qb_fail(e, QB_CONFLICT, NULL, NULL, "the campaign is %s", campaign_word(c));
+	/* Custodians may have opened what is there already. */
+	if (st == QB_OK && campaign_full_opening(c))
+		st = qb_fail(e, QB_CONFLICT, NULL, NULL, "the full opening was asked for: nothing more is filed");
 	if (st == QB_OK && report && (c->slot[slot].reported >> station & 1) != 0)
 		st = qb_fail(e, QB_CONFLICT, "report", NULL, "the report of this slot and station is here already");
 	if (st == QB_OK && !report && number >= PLAY_NOTES_MAX)

@@ -130,7 +130,7 @@ use_case case_service, case_parties_list, case_parties_post, case_campaigns_list
     case_witness, case_prekeys, case_recipe, case_recipe_key, case_note, case_report, case_claim, case_claims_list,
     case_claim_withdraw, case_milestone, case_close, case_sign, case_opening_request, case_openings_list, case_opening,
     case_opening_shares, case_bundle, case_head, case_entries, case_inclusion, case_consistency, case_cosign,
-    case_clock, case_guess, case_incident, case_receipts;
+    case_clock, case_guess, case_incident, case_receipts, case_abandon;
 
 /* ---- people.c ---- */
 /* The rules of entries about people that are enrolled: same-person, key-rotation, vouch, retirement. */
@@ -146,6 +146,7 @@ enum qb_status put_sealed(struct ops *o, const struct campaign *c, const struct 
 /* Slot keys at rest: encrypted under the storage key, bound to campaign and slot. */
 enum qb_status slot_key_unbox(struct ops *o, const struct campaign *c, int64_t slot, const struct buf *boxed,
                               struct secret **out, struct qb_error *e) QB_MUST_USE;
+void seal_job_cancel(struct ops *o, struct campaign *c); /* under the lock; the thread then closes the attempt */
 void seal_job_stop(struct campaign *c); /* ends the sealer of a campaign, joins its thread; not under the lock */
 /* ---- ledger_read.c ---- */
 /* The head of this size with every cosignature that is there. */

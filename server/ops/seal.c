@@ -322,7 +322,9 @@ static enum qb_status store_all(struct seal_job *j, const struct buf *messages, 
 	pthread_mutex_lock(&j->o->lock);
 	transcript_begin(&all.recipes, "quietbell/1/recipe/all");
 	seal_output_begin(&all.output, c->context.ctx, c->sealing_attempt, j->sealer_key);
-	enum qb_status st = txn_begin(&t, j->o, "sealed", e);
+	enum qb_status st = c->ending == ENDING_NONE
+	                        ? txn_begin(&t, j->o, "sealed", e)
+	                        : qb_fail(e, QB_REFUSED, "sealing", NULL, "the campaign was abandoned meanwhile");
 	if (st == QB_OK) {
 		for (int64_t n = 0; st == QB_OK && n <= c->n_slots; n++)
 			st = store_slot(&t, c, &messages[n], &all, e);
@@ -393,6 +395,15 @@ static void *seal_thread(void *arg)
 	pthread_cond_broadcast(&j->o->changed);
 	pthread_mutex_unlock(&j->o->lock);
 	return NULL;
+}
+
+void seal_job_cancel(struct ops *o, struct campaign *c)
+{
+	if (c->job == NULL)
+		return;
+	c->job->cancelled = true;
+	seal_channel_break(c->job->channel);
+	pthread_cond_broadcast(&o->changed);
 }
 
 void seal_job_stop(struct campaign *c)

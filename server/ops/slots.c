@@ -94,25 +94,31 @@ static int64_t first_unfinished(const struct campaign *c, int64_t now_ns)
 	return n < 0 ? c->n_slots : n;
 }
 
+/* Slots below this one need their keys no more. */
+static int64_t erasable(const struct campaign *c, int64_t now_ns)
+{
+	return c->ending != ENDING_NONE ? c->n_slots : first_unfinished(c, now_ns);
+}
+
 bool slots_anything_due(struct ops *o, const struct campaign *c)
 {
 	int64_t now = now_locked(o);
 	if (c->state < C_SEALED)
 		return false;
-	return first_unfinished(c, now) > c->erased_below ||
-	       (c->next_freeze < c->n_slots && now >= slots_freeze(&c->plan->slots, c->next_freeze));
+	return erasable(c, now) > c->erased_below || (c->ending == ENDING_NONE && c->next_freeze < c->n_slots &&
+	                                              now >= slots_freeze(&c->plan->slots, c->next_freeze));
 }
 
 enum qb_status slots_due(struct ops *o, struct campaign *c, struct qb_error *e)
 {
 	struct txn t;
-	int64_t erase = first_unfinished(c, now_locked(o));
+	int64_t erase = erasable(c, now_locked(o));
 	enum qb_status st = txn_begin(&t, o, "slots-due", e);
 	if (st != QB_OK)
 		return st;
 	for (int64_t n = c->next_freeze, done = 0; st == QB_OK && done < FREEZES_PER_TURN && n < c->n_slots;
 	     n++, done++) {
-		if (t.now_ns < slots_freeze(&c->plan->slots, n))
+		if (t.now_ns < slots_freeze(&c->plan->slots, n) || c->ending != ENDING_NONE)
 			break;
 		st = freeze_slot(&t, c, n, e);
 	}
@@ -131,6 +137,8 @@ enum qb_status slots_due(struct ops *o, struct campaign *c, struct qb_error *e)
 static const char *public_state(struct ops *o, const struct campaign *c, int64_t n)
 {
 	int64_t now = now_locked(o);
+	if (!campaign_reached(c, n))
+		return "unplayed";
 	if (now >= slot_end(c, n))
 		return "done";
 	if (now >= slots_start(&c->plan->slots, n))
@@ -150,6 +158,7 @@ static enum qb_status slot_json(struct ops *o, const struct campaign *c, int64_t
 	json_object_set_new(j, "start_utc", json_string(clock_utc_text(start, utc, sizeof utc)));
 	json_object_set_new(j, "duration_s", json_real((double)c->plan->slots.slot_ns / 1e9));
 	json_object_set_new(j, "state", json_string(public_state(o, c, n)));
+	json_object_set_new(j, "ended", json_boolean(c->ending != ENDING_NONE));
 	json_object_set_new(j, "record_id", c->state >= C_SEALED ? json_hex_new(s->record_id, 64) : json_null());
 	json_object_set_new(j, "slot_key_commitment",
 	                    c->state >= C_SEALED ? json_hex_new(s->slot_key_commitment, 64) : json_null());
@@ -275,7 +284,7 @@ static enum qb_status check_stop_lift(struct campaign *c, const struct ops_call 
 {
 	int64_t seq;
 	for (int i = 0; i < c->n_stops; i++) {
-		if (text_i64(call->match->parts[1], &seq) && c->stop[i].seq == seq &&
+		if (text_i64(call->match->parts[1], &seq) && c->stop[i].seq == seq && seq != c->ending_seq &&
 		    wire_entry_int(&a->entry, "stop") == seq && c->stop[i].stop.lifted_ns == STATES_NEVER)
 			return QB_OK;
 	}

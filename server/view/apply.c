@@ -59,7 +59,8 @@ static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, co
 	(void)snprintf(c->name, sizeof c->name, "%s", c->plan->campaign);
 	c->rehearsal_clock = v->rehearsal_clock;
 	c->sealing_attempt = c->reshare_attempt = c->repair_attempt = 1;
-	c->sealing_seq = c->sealed_seq = c->closing_seq = c->hidden_count = NO_SEQ;
+	c->sealing_seq = c->sealed_seq = c->closing_seq = c->hidden_count = c->ending_seq = NO_SEQ;
+	c->ended_why = qb_strdup("");
 	st = view_draft_keyholders(v, c, leaf->received_gps_ns, e);
 	if (st != QB_OK) {
 		campaign_free(&c);
@@ -91,6 +92,7 @@ void campaign_free(struct campaign **cp)
 	qb_free(c->hold);
 	qb_free(c->stop);
 	qb_free(c->opening);
+	qb_free(c->ended_why);
 	qb_free(c);
 	*cp = NULL;
 }
@@ -172,7 +174,7 @@ static void apply_control(struct campaign *c, const struct wire_entry *en, const
 		}
 	} else if (strcmp(type, "stop-lift") == 0) {
 		for (int i = 0; i < c->n_stops; i++) {
-			if (c->stop[i].seq == wire_entry_int(en, "stop"))
+			if (c->stop[i].seq == wire_entry_int(en, "stop") && c->stop[i].seq != c->ending_seq)
 				c->stop[i].stop.lifted_ns = at;
 		}
 	}
@@ -214,6 +216,26 @@ static void apply_slot(struct campaign *c, const struct wire_entry *en, const st
 		s->reported = (uint8_t)(s->reported | 1u << station);
 	else if (s->notes[station] < PLAY_NOTES_MAX)
 		s->notes[station]++;
+}
+
+/* An end before the time: what was sealed is closed, and from here on a stop stands that nobody lifts. */
+static void apply_ending(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
+{
+	bool early = strcmp(en->type->type, "early-closing") == 0;
+	if (!early && strcmp(en->type->type, "abandonment") != 0)
+		return;
+	c->ending = early ? ENDING_EARLY : ENDING_ABANDONED;
+	c->ended_ns = leaf->received_gps_ns;
+	c->ending_seq = (int64_t)leaf->seq;
+	(void)snprintf(c->ended_by, sizeof c->ended_by, "%s", en->by);
+	qb_free(c->ended_why);
+	c->ended_why = qb_strdup(en->why);
+	if (c->state < C_SEALED)
+		return;
+	c->state = C_CLOSED;
+	c->closing_seq = (int64_t)leaf->seq;
+	c->stop = qb_realloc(c->stop, (size_t)c->n_stops + 1, sizeof *c->stop);
+	c->stop[c->n_stops++] = (struct stop){(int64_t)leaf->seq, {STATES_ALL, leaf->received_gps_ns, STATES_NEVER}};
 }
 
 static void apply_opening(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
@@ -263,6 +285,7 @@ static enum qb_status apply_campaign_entry(struct view *v, const struct wire_ent
 	}
 	apply_sealing(c, en, leaf);
 	apply_control(c, en, leaf);
+	apply_ending(c, en, leaf);
 	apply_opening(c, en, leaf, leaf_hash);
 	return QB_OK;
 }
@@ -292,6 +315,9 @@ static enum qb_status check_author(const struct view *v, const struct wire_entry
 		hex_encode(id, en->campaign, 16);
 		const struct campaign *c = view_campaign(v, id);
 		good = c == NULL || campaign_role(c, p) != ROLE_NONE;
+		/* Once there is something sealed, the administrator alone can't bring a campaign down. */
+		if (c != NULL && strcmp(en->type->type, "abandonment") == 0 && c->state >= C_SEALED)
+			good = campaign_role(c, p) == ROLE_REVIEWER;
 	}
 	return good ? QB_OK
 	            : qb_fail(e, QB_CRYPTO, "ledger", "do not trust this ledger",

@@ -79,7 +79,7 @@ bool view_keys_in_use(const struct view *v, const struct view_party *p)
 {
 	for (int i = 0; i < v->n_campaigns; i++) {
 		const struct campaign *c = v->campaign[i];
-		if (c->state < C_REHEARSED && custodian_index(c, p->name) >= 0 &&
+		if (!campaign_over(c) && c->state < C_REHEARSED && custodian_index(c, p->name) >= 0 &&
 		    c->custodian[custodian_index(c, p->name)].deal_seq != NO_SEQ)
 			return true;
 		if (reshare_member(c, p->name) >= 0 || reshare_dealer(c, p->name) >= 0 ||
@@ -164,7 +164,7 @@ enum qb_status view_may_vouch(const struct view *v, const char *by_name, const c
 	/* Somebody who knows the person from the campaign, and not a name made up for the purpose. */
 	for (int i = 0; i < v->n_campaigns; i++) {
 		const struct campaign *c = v->campaign[i];
-		if (c->state < C_OPENED && campaign_role(c, p) != ROLE_NONE && campaign_role(c, by) == ROLE_NONE)
+		if (!campaign_over(c) && campaign_role(c, p) != ROLE_NONE && campaign_role(c, by) == ROLE_NONE)
 			return qb_fail(e, QB_REFUSED, name, "let somebody with a part in it vouch",
 			               "%s has no part in campaign '%s' of this party", by_name, c->name);
 	}

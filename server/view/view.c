@@ -190,7 +190,24 @@ int campaign_margin(const struct campaign *c)
 
 const char *campaign_word(const struct campaign *c)
 {
+	if (c->ending == ENDING_ABANDONED && c->state < C_SEALED)
+		return "abandoned";
 	return c->stalled ? "stalled" : campaign_state_word(c->state);
+}
+
+bool campaign_over(const struct campaign *c)
+{
+	return c->state == C_OPENED || (c->ending == ENDING_ABANDONED && c->state < C_SEALED);
+}
+
+bool campaign_reached(const struct campaign *c, int64_t slot)
+{
+	return c->ending == ENDING_NONE || c->slot[slot].freeze_seq != NO_SEQ;
+}
+
+const char *campaign_ending_word(enum campaign_ending ending)
+{
+	return ending == ENDING_EARLY ? "closed early" : ending == ENDING_ABANDONED ? "abandoned" : "";
 }
 
 bool campaign_full_opening(const struct campaign *c)

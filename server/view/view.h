@@ -139,6 +139,9 @@ struct slot_public {
 	uint8_t notes[STATES_MAX_STATIONS];
 };
 
+/* How a campaign ended before its time. */
+enum campaign_ending { ENDING_NONE, ENDING_EARLY, ENDING_ABANDONED };
+
 struct seal_job; /* the service's, server/ops/seal.c */
 
 struct campaign {
@@ -195,6 +198,10 @@ struct campaign {
 	int n_stops;
 	struct opening *opening;
 	int n_openings;
+	enum campaign_ending ending;
+	int64_t ended_ns, ending_seq; /* of its entry; from then on nothing is played: it also stands as a stop */
+	char ended_by[64];
+	char *ended_why; /* owned; "" without an ending */
 	/* Working state of the service alone; readers leave it as it is. */
 	struct seal_job *job;
 	int64_t erased_below;  /* keys of slots below this one are erased */
@@ -316,6 +323,11 @@ enum qb_status reshare_deals(const struct campaign *c, struct deal *out, struct 
 /* As campaign_judge; *guilty is the name of the dealer or of the accuser. */
 enum qb_status reshare_judge(const struct campaign *c, const struct wire_entry *en, const char **guilty,
                              struct qb_error *e) QB_MUST_USE;
+/* Opened, or abandoned before there was anything to open: nobody has a part in it any more. */
+bool campaign_over(const struct campaign *c);
+/* False for a slot that an early ending kept from its freeze. */
+bool campaign_reached(const struct campaign *c, int64_t slot);
+const char *campaign_ending_word(enum campaign_ending ending); /* "closed early", "abandoned", "" */
 /* Whether the full opening has been asked for. */
 bool campaign_full_opening(const struct campaign *c);
 /* The certificate verified from the deals, with all n signatures. Errors: QB_CRYPTO; QB_CONFLICT not certified yet. */

@@ -43,7 +43,7 @@ struct service {
 	int n_steps, at, looks;
 	/* What stands in the way, from when on. */
 	int64_t held_from_ns, stopped_from_ns;
-	bool not_going;
+	bool not_going, ended;                /* ended: before any freeze */
 	int64_t silent_from_ns, silent_to_ns; /* the service answers nothing in between */
 	int lose_answers;                     /* so many posts arrive, but their answers do not */
 	/* What came in. */
@@ -94,11 +94,12 @@ static inline json_t *service_slot(int64_t n)
 	int64_t now = service_now();
 	bool frozen = now >= SERVICE_START + n * SERVICE_SLOT - SERVICE_LEAD, stopped = now >= service->stopped_from_ns;
 	json_object_set_new(doc, "slot", json_integer(n));
+	json_object_set_new(doc, "ended", json_boolean(service->ended));
 	json_object_set_new(x, "held", json_boolean(now >= service->held_from_ns));
 	json_object_set_new(x, "stopped", json_boolean(stopped));
 	json_object_set_new(x, "stopped_gps", stopped ? json_gps_new(service->stopped_from_ns) : json_null());
 	json_object_set_new(x, "ready", json_true());
-	json_object_set_new(x, "going", frozen ? json_boolean(!service->not_going) : json_null());
+	json_object_set_new(x, "going", frozen && !service->ended ? json_boolean(!service->not_going) : json_null());
 	json_object_set_new(x, "reported", json_boolean(service->n_reports > 0));
 	json_object_set_new(x, "notes", json_integer(service->n_notes));
 	json_object_set_new(all, "tarn", x);

@@ -401,27 +401,37 @@ static void station_not_observing(void **state)
 static void slot_answers_are_read_strictly(void **state)
 {
 	(void)state;
-	const char *const good = "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"stopped_gps\":"
-	                         "\"12.5\",\"going\":null,\"reported\":false,\"notes\":2}}}";
+	const char *const good =
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"stopped_gps\":"
+	    "\"12.5\",\"going\":null,\"reported\":false,\"notes\":2}}}";
 	const char *const bad[] = {
-	    "{\"slot\":4,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,\"reported\":false,"
+	    "{\"slot\":4,\"ended\":false,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,"
+	    "\"reported\":false,"
 	    "\"notes\":2}}}",
-	    "{\"slot\":3,\"stations\":{\"heron\":{}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"stopped\":false,\"going\":null,\"reported\":false,\"notes\":2}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":\"no\",\"stopped\":false,\"going\":null,\"reported\":false,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"heron\":{}}}",
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"stopped\":false,\"going\":null,\"reported\":false,"
 	    "\"notes\":2}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"going\":null,\"reported\":false,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":\"no\",\"stopped\":false,\"going\":null,"
+	    "\"reported\":false,"
 	    "\"notes\":2}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":1,\"reported\":false,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"going\":null,"
+	    "\"reported\":false,"
 	    "\"notes\":2}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":true,\"reported\":false,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":1,"
+	    "\"reported\":false,"
+	    "\"notes\":2}}}",
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":true,"
+	    "\"reported\":false,"
 	    "\"notes\":16}}}",
+	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,\"reported\":false,"
+	    "\"notes\":2}}}",
 	    "[]"};
 	struct watch_slot w;
 	struct qb_error e = {0};
 	json_t *doc = json_loads(good, 0, NULL);
 	assert_int_equal(watch_slot_parse(doc, 3, "tarn", &w, &e), QB_OK);
-	assert_true(w.stopped && !w.held && !w.reported && w.going == GOING_UNKNOWN && w.notes == 2);
+	assert_true(w.ended && watch_ended(&w) && w.stopped && !w.held && !w.reported && w.going == GOING_UNKNOWN &&
+	            w.notes == 2);
 	assert_int_equal(w.stopped_gps_ns, INT64_C(12500000000));
 	json_decref(doc);
 	for (size_t i = 0; i < sizeof bad / sizeof bad[0]; i++) {
@@ -431,6 +441,22 @@ static void slot_answers_are_read_strictly(void **state)
 		assert_true(e.what[0] != '\0');
 		json_decref(doc);
 	}
+}
+
+/* The campaign ends while the driver waits for the slot: it leaves, files nothing, asks for no key. */
+static void ended_before_the_freeze(void **state)
+{
+	(void)state;
+	bool filed;
+	struct qb_error e = {0};
+	service_begin(1);
+	service->ended = true;
+	assert_int_equal(slot_run(&service->driver, 0, &filed, &e), QB_OK);
+	assert_false(filed);
+	assert_int_equal(service->n_keys, 0);
+	assert_int_equal(service->n_notes, 0);
+	assert_int_equal(service->n_reports, 0);
+	service_end();
 }
 
 static const struct CMUnitTest tests[] = {
@@ -454,6 +480,7 @@ static const struct CMUnitTest tests[] = {
     cmocka_unit_test(too_late),
     cmocka_unit_test(station_not_observing),
     cmocka_unit_test(slot_answers_are_read_strictly),
+    cmocka_unit_test(ended_before_the_freeze),
 };
 
 SCENE_MAIN(tests)
