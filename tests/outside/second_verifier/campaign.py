@@ -345,6 +345,19 @@ class Campaign:
                   'closed before the sealing, or without fixing the hidden entries right before')
         self.state, self.closing = 'closed', leaf
 
+    def on_early_closing(self, leaf, e):
+        self.need(e['why'] != '-', leaf, 'ended before its time without a reason')
+        self.on_closing(leaf, e)
+
+    def on_abandonment(self, leaf, e):
+        self.need(e['why'] != '-' and self.state not in ('closed', 'opened', 'abandoned'), leaf,
+                  'abandoned without a reason, or after the end')
+        if self.state == 'sealed':
+            self.need(e['by'] in self.plan.duty['reviewer'], leaf, 'what is sealed is a reviewer\'s to abandon')
+            self.on_closing(leaf, e)
+        else:
+            self.state = 'abandoned'
+
     def on_opening_request(self, leaf, e):
         self.need(self.state == 'closed', leaf, 'an opening was asked for before the closing')
         self.opening, self.share_sets = leaf, {}
