@@ -33,7 +33,7 @@ static void run(int64_t slot)
 	assert_int_equal(slot_run(&service->driver, slot, &filed, &e), QB_OK);
 	assert_true(filed);
 	assert_int_equal(service->n_reports, 1);
-	assert_int_equal(service->n_notes, 1);
+	assert_int_equal(service->n_notes, 2); /* at the start and at the end */
 	assert_int_equal(service->report.slot, slot);
 	assert_string_equal(service->report.station, "tarn");
 }
