@@ -238,13 +238,12 @@ def partial(group, record, i, share, purpose, authority, d=None, leave_out=()):
     return Partial(i, purpose, record.id, authority, d, sc(c), sc(w + c * share))
 
 
-def forged_partial(group, record, i, purpose, authority):
-    """Whoever holds no share, against a verifier that left D_i out of the challenge: A and A' are chosen first, then D_i is solved for."""
-    big_r, y = decode(record.r), group.y[i - 1]
-    c0, z = fresh(), fresh()
-    a1 = total([mul(z, G), mul(L - c0, y)])  # any A with a known z for this c
-    a2 = mul(fresh(), G)
+def forged_partial(group, record, i, share, purpose, authority):
+    """A false D_i whose proof would hold for a verifier that left D_i out of the challenge: A' is chosen first and D_i solved for."""
+    w, big_r = fresh(), decode(record.r)
+    a1, a2 = mul(w, G), mul(fresh(), G)
     c = scalar(T('opening/partial', group.th, record.id, i, purpose, authority, group.Y[i - 1], record.r, a1, a2))
+    z = w + c * share
     d = mul(pow(c, -1, L), total([mul(z, big_r), mul(L - 1, a2)]))
     return Partial(i, purpose, record.id, authority, encode(d), sc(c), sc(z))
 
