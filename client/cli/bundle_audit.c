@@ -165,9 +165,8 @@ static size_t find_record(const struct verified *v, enum record_type type, int64
 	return i;
 }
 
-static enum qb_status slot_state_of(const struct verified *v, const struct drill_truth *t,
-                                    const struct states_hold *holds, const struct states_stop *stops,
-                                    struct states_verdict *out, struct qb_error *e)
+static void slot_state_of(const struct verified *v, const struct drill_truth *t, const struct states_hold *holds,
+                          const struct states_stop *stops, struct states_verdict *out)
 {
 	const struct slots *sl = &v->k->plan->slots;
 	struct play_report report[STATES_MAX_STATIONS];
@@ -177,20 +176,17 @@ static enum qb_status slot_state_of(const struct verified *v, const struct drill
 	                        .live = t->live,
 	                        .n_stations = t->n_stations,
 	                        .stations_needed = v->k->plan->stations_needed};
-	enum qb_status st = QB_OK;
-	for (int i = 0; st == QB_OK && i < t->n_stations; i++) {
+	for (int i = 0; i < t->n_stations; i++) {
 		size_t at = find_record(v, RECORD_PLAY_REPORT, t->slot, i);
 		s.station[i].ready = (v->k->slot[t->slot].ready >> i & 1) != 0;
 		s.station[i].drive_from_ns = t->station[i].drive_from_ns;
 		s.station[i].drive_to_ns = t->station[i].drive_to_ns;
-		if (at < v->bundle->records.n) {
-			st = play_report_decode(v->content[at].data, v->content[at].len, &report[i], e);
+		/* A report that can't be read is none: what its driver did is not known. */
+		if (at < v->bundle->records.n && v->opens[at] &&
+		    play_report_decode(v->content[at].data, v->content[at].len, &report[i], NULL) == QB_OK)
 			s.station[i].report = &report[i];
-		}
 	}
-	if (st == QB_OK)
-		states_judge(&s, holds, (size_t)v->k->n_holds, stops, (size_t)v->k->n_stops, out);
-	return st;
+	states_judge(&s, holds, (size_t)v->k->n_holds, stops, (size_t)v->k->n_stops, out);
 }
 
 static enum qb_status make_slots(const struct verified *v, json_t *list, struct qb_error *e)
@@ -205,10 +201,9 @@ static enum qb_status make_slots(const struct verified *v, json_t *list, struct 
 		if (v->bundle->records.item[i].rec.header.type != RECORD_SLOT)
 			continue;
 		st = truth_decode(v->content[i].data, v->content[i].len, t, e);
-		if (st == QB_OK)
-			st = slot_state_of(v, t, holds, stops, &verdict, e);
 		if (st != QB_OK)
 			break;
+		slot_state_of(v, t, holds, stops, &verdict);
 		json_t *j = truth_audit_json(t), *played = json_array();
 		double square = 0;
 		for (int s = 0; s < t->n_stations; s++) {
@@ -269,26 +264,54 @@ static bool id_taken(const json_t *list, const char *id)
 	return false;
 }
 
+/* An identifier that no claim of the list has: the given one, with a number behind it where it is taken. */
+static void give_id(const json_t *list, json_t *claim, const char *wanted)
+{
+	char *id = text_printf("%.100s", wanted);
+	for (size_t i = 2; id_taken(list, id); i++) {
+		qb_free(id);
+		id = text_printf("%.100s#%zu", wanted, i);
+	}
+	json_object_set_new(claim, "claim_id", json_string(id));
+	qb_free(id);
+}
+
+/*
+ * What an analyst sealed, or where it is no claim that can be read, a claim without any content: it counts as
+ * malformed, and holds nobody's audit up.
+ */
+static json_t *read_claim(const struct verified *v, size_t i)
+{
+	const char *id = NULL, *parent = NULL;
+	json_t *claim = NULL;
+	bool good = v->opens[i] &&
+	            json_read((const char *)v->content[i].data, v->content[i].len, "claim", &claim, NULL) == QB_OK &&
+	            json_str(claim, "claim_id", "claim", &id, NULL) == QB_OK && text_is_line(id, 128);
+	const json_t *revision = json_object_get(claim, "revision_of");
+	if (good && revision != NULL && !json_is_null(revision))
+		good = json_str(claim, "revision_of", "claim", &parent, NULL) == QB_OK && text_is_line(parent, 128);
+	if (good)
+		return claim;
+	json_decref(claim);
+	claim = json_object();
+	json_object_set_new(claim, "claim_id", json_string("unreadable"));
+	return claim;
+}
+
 static enum qb_status make_claims(const struct verified *v, json_t *list, struct qb_error *e)
 {
 	enum qb_status st = QB_OK;
 	for (size_t i = 0; st == QB_OK && i < v->bundle->records.n; i++) {
-		json_t *claim = NULL;
 		if (v->bundle->records.item[i].rec.header.type != RECORD_CLAIM)
 			continue;
-		char where[48];
-		(void)snprintf(where, sizeof where, "claim at position %zu", i);
-		st = json_read((const char *)v->content[i].data, v->content[i].len, where, &claim, e);
-		if (st == QB_OK && !json_is_string(json_object_get(claim, "claim_id")))
-			st = qb_fail(e, QB_NO, where, NULL, "has no claim_id");
-		if (st == QB_OK)
-			st = claim_entry(v, v->bundle->records.item[i].rec.id, claim, e);
+		json_t *claim = read_claim(v, i);
+		st = claim_entry(v, v->bundle->records.item[i].rec.id, claim, e);
 		/* An analyst may have used an identifier twice; both claims count, under different names. */
-		if (st == QB_OK && id_taken(list, json_string_value(json_object_get(claim, "claim_id")))) {
-			char *other =
-			    text_printf("%.100s#%zu", json_string_value(json_object_get(claim, "claim_id")), i);
-			json_object_set_new(claim, "claim_id", json_string(other));
-			qb_free(other);
+		const char *id = json_string_value(json_object_get(claim, "claim_id"));
+		if (st == QB_OK && id_taken(list, id)) {
+			char *wanted = qb_strdup(id);
+			give_id(list, claim, wanted);
+			qb_free(wanted);
 		}
 		if (st == QB_OK)
 			json_array_append(list, claim);

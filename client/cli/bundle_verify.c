@@ -269,6 +269,27 @@ static enum qb_status check_recipes(struct verified *v, struct qb_error *e)
 	return st == QB_OK && prekeys != v->bundle->n_prekeys ? no(e, "one-time keys that no driver left") : st;
 }
 
+/* Who sealed something that nobody can open, under a proof that holds. */
+static void note_shut(struct verified *v)
+{
+	size_t shut = 0, at;
+	for (size_t r = 0; r < v->bundle->records.n; r++)
+		shut += !v->opens[r];
+	if (shut == 0)
+		return;
+	(void)snprintf(v->note, sizeof v->note, "%zu of %zu records were sealed so that nothing opens them:", shut,
+	               v->bundle->records.n);
+	for (size_t r = 0; r < v->bundle->records.n; r++) {
+		const struct sealed_item *x = &v->bundle->records.item[r];
+		at = strlen(v->note);
+		if (!v->opens[r])
+			(void)snprintf(v->note + at, sizeof v->note - at, " a %s by %s;",
+			               record_type_word((enum record_type)x->type), x->by);
+	}
+	at = strlen(v->note);
+	v->note[at - 1] = v->note[at - 1] == ';' ? '\0' : v->note[at - 1];
+}
+
 /* k custodians' partial openings, each with its proof, combined; the contents must hash to what was announced. */
 static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 {
@@ -293,6 +314,7 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 	if (n < (size_t)v->k->k)
 		return no(e, "too few custodians opened");
 	v->content = QB_NEW_ARRAY(struct buf, records);
+	v->opens = QB_NEW_ARRAY(bool, records);
 	transcript_begin(&t, "quietbell/1/opening/plaintexts");
 	for (size_t r = 0; st == QB_OK && r < records; r++) {
 		const struct record *rec = &v->bundle->records.item[r].rec;
@@ -306,9 +328,9 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 				st = no(e, "a partial opening is another custodian's");
 		}
 		if (st == QB_OK)
-			st = partial_open(&v->group, rec, p, n, &v->content[r], e);
+			st = partial_open_filed(&v->group, rec, p, n, &v->content[r], &v->opens[r], e);
 		if (st == QB_OK) {
-			blake2b_512(hash, v->content[r].data, v->content[r].len);
+			partial_content_hash(&v->content[r], v->opens[r], hash);
 			memcpy(id, rec->id, 64);
 			transcript_field(&t, id, 64);
 			transcript_field(&t, hash, 64);
@@ -328,6 +350,7 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 		}
 		wire_entry_free(&en);
 	}
+	note_shut(v);
 	return st;
 }
 
@@ -407,6 +430,7 @@ void verified_free(struct verified **vp)
 	for (size_t i = 0; v->content != NULL && i < v->bundle->records.n; i++)
 		buf_wipe(&v->content[i]);
 	qb_free(v->content);
+	qb_free(v->opens);
 	secret_free(&v->seed);
 	follow_close(&v->follow);
 	bundle_free(&v->bundle);

@@ -23,6 +23,7 @@ struct verified {
 	struct custody_group group;
 	struct opening *opening; /* the full one */
 	struct buf *content;     /* of each record, opened; owned */
+	bool *opens;             /* of each record: false when its author sealed it to nobody; owned */
 	struct secret *seed;
 	uint64_t audit_seed;
 	struct verify_check check[VERIFY_CHECKS];

@@ -40,6 +40,7 @@ static enum qb_status check_request(struct cli_call *c, const struct campaign *k
                                     const struct view_party **asker, int64_t *asked_ns)
 {
 	const char *text;
+	char id[33];
 	uint8_t nonce[32], signature[64];
 	struct entry_promise p;
 	const json_t *receipt = json_object_get(doc, "receipt");
@@ -61,7 +62,9 @@ static enum qb_status check_request(struct cli_call *c, const struct campaign *k
 		return st;
 	memcpy(p.campaign, k->id, 16);
 	entry_hide(nonce, text, strlen(text), commitment);
-	if (memcmp(commitment, p.commitment, 64) != 0)
+	hex_encode(id, commitment, 16);
+	if (memcmp(commitment, p.commitment, 64) != 0 || !json_is_string(json_object_get(doc, "opening")) ||
+	    strcmp(id, json_string_value(json_object_get(doc, "opening"))) != 0)
 		return qb_fail(e, QB_CRYPTO, "spot request", "do not open", "is not what the commitment hides");
 	*asked_ns = p.received_gps_ns;
 	if ((st = entry_promise_verify(&p, c->home.service_key, e)) != QB_OK ||
@@ -246,7 +249,7 @@ static enum qb_status collect(struct spot *s, int *given)
 	return st;
 }
 
-static enum qb_status open_item(struct spot *s, size_t i, struct buf *content)
+static enum qb_status open_item(struct spot *s, size_t i, struct buf *content, bool *opens)
 {
 	struct partial p[CUSTODY_MAX];
 	struct partial_authority auth = {.purpose = PARTIAL_SPOT};
@@ -263,10 +266,13 @@ static enum qb_status open_item(struct spot *s, size_t i, struct buf *content)
 			             "gave another custodian's openings");
 		n++;
 	}
-	return st == QB_OK ? partial_open(&s->g, &s->items.item[i].rec, p, n, content, &s->c->error) : st;
+	return st == QB_OK ? partial_open_filed(&s->g, &s->items.item[i].rec, p, n, content, opens, &s->c->error) : st;
 }
 
-/* What the notes of one slot say: played (or playing) anywhere, and whether every station has spoken. */
+/*
+ * What the notes of one slot say: played (or playing) anywhere, and whether every station has spoken. A station whose
+ * note can't be read has not: its driver may be hostile, and must not keep the custodians from an answer.
+ */
 static enum qb_status read_notes(struct spot *s, int64_t slot, bool *played, bool *complete)
 {
 	int stations = 0;
@@ -277,10 +283,9 @@ static enum qb_status read_notes(struct spot *s, int64_t slot, bool *played, boo
 		struct play_note note;
 		if (s->items.item[i].slot != slot || s->items.item[i].rec.header.type != RECORD_PLAY_NOTE)
 			continue;
-		st = open_item(s, i, &b);
-		if (st == QB_OK)
-			st = play_note_decode(b.data, b.len, &note, &s->c->error);
-		if (st == QB_OK) {
+		bool opens;
+		st = open_item(s, i, &b, &opens);
+		if (st == QB_OK && opens && play_note_decode(b.data, b.len, &note, NULL) == QB_OK) {
 			stations++;
 			*played = *played || note.played_to_ns > note.played_from_ns;
 		}
@@ -298,10 +303,10 @@ static enum qb_status find_answer(struct spot *s, const char **answer)
 	for (size_t i = 0; st == QB_OK && i < s->items.n; i++) {
 		struct buf b = {0};
 		int64_t from, to;
-		bool played, complete;
+		bool played, complete, opens;
 		if (s->items.item[i].rec.header.type != RECORD_SLOT)
 			continue;
-		st = open_item(s, i, &b);
+		st = open_item(s, i, &b, &opens);
 		if (st == QB_OK)
 			st = truth_decode(b.data, b.len, truth, &s->c->error);
 		buf_wipe(&b);

@@ -166,9 +166,24 @@ static enum qb_status run_list(struct cli_call *c)
 
 static enum qb_status fetch_opening(struct cli_call *c, const struct campaign *k, const char *id, json_t **out)
 {
+	uint8_t bytes[16];
+	const char *shown;
+	*out = NULL;
+	if (strlen(id) != 2 * sizeof bytes || !hex_decode(bytes, sizeof bytes, id))
+		return qb_fail(&c->error, QB_USAGE, "opening", "see quietbell opening list",
+		               "'%.40s' is not the number of an opening", id);
 	char *path = text_printf("/v1/campaigns/%s/openings/%s", k->name, id);
 	enum qb_status st = link_get(&c->link, path, out, &c->error);
 	qb_free(path);
+	if (st == QB_OK)
+		st = json_str(*out, "opening", "opening", &shown, &c->error);
+	if (st == QB_OK && strcmp(id, shown) != 0)
+		st = qb_fail(&c->error, QB_CRYPTO, "opening", "do not open; tell the other custodians",
+		             "the service shows another opening than the one asked for");
+	if (st != QB_OK) {
+		json_decref(*out);
+		*out = NULL;
+	}
 	return st;
 }
 

@@ -13,7 +13,7 @@ static const uint8_t magic[4] = {'Q', 'B', 'P', '1'};
 static const struct {
 	enum partial_purpose full;
 	bool spot;
-} opens[RECORD_TYPES] = {
+} opened_by[RECORD_TYPES] = {
     [RECORD_SEED] = {PARTIAL_TRUTH, false},           [RECORD_SLOT] = {PARTIAL_TRUTH, true},
     [RECORD_CLAIM] = {PARTIAL_CLAIMS, false},         [RECORD_CANARY] = {PARTIAL_REHEARSAL, false},
     [RECORD_PLAY_REPORT] = {PARTIAL_DELIVERY, false}, [RECORD_PLAY_NOTE] = {PARTIAL_DELIVERY, true},
@@ -23,14 +23,14 @@ static const struct {
 
 enum partial_purpose partial_full_purpose(enum record_type type)
 {
-	return (unsigned)type < RECORD_TYPES ? opens[type].full : (enum partial_purpose)0;
+	return (unsigned)type < RECORD_TYPES ? opened_by[type].full : (enum partial_purpose)0;
 }
 
 bool partial_purpose_opens(enum partial_purpose purpose, enum record_type type)
 {
 	if ((unsigned)type >= RECORD_TYPES || partial_hash_bytes(purpose) == 0)
 		return false;
-	return purpose == PARTIAL_SPOT ? opens[type].spot : opens[type].full == purpose;
+	return purpose == PARTIAL_SPOT ? opened_by[type].spot : opened_by[type].full == purpose;
 }
 
 size_t partial_hash_bytes(enum partial_purpose purpose)
@@ -213,4 +213,31 @@ enum qb_status partial_open(const struct custody_group *g, const struct record *
 		s = record_open(g, rec, z, content, e);
 	wipe(z, sizeof z);
 	return s;
+}
+
+enum qb_status partial_open_filed(const struct custody_group *g, const struct record *rec,
+                                  const struct partial *partials, size_t n, struct buf *content, bool *opens,
+                                  struct qb_error *e)
+{
+	uint8_t z[POINT_BYTES];
+	bool sealers = rec->header.type == RECORD_SEED || rec->header.type == RECORD_SLOT;
+	if (sealers) {
+		*opens = true;
+		return partial_open(g, rec, partials, n, content, e);
+	}
+	*opens = false;
+	enum qb_status s = partial_combine(g, partials, n, z, e);
+	if (s == QB_OK && memcmp(partials[0].record_id, rec->id, sizeof rec->id) != 0)
+		s = qb_fail(e, QB_CRYPTO, "opening", NULL, "the partial openings are for another record");
+	if (s == QB_OK)
+		*opens = record_open(g, rec, z, content, NULL) == QB_OK;
+	wipe(z, sizeof z);
+	return s;
+}
+
+void partial_content_hash(const struct buf *content, bool opens, uint8_t out[static 64])
+{
+	memset(out, 0, 64);
+	if (opens)
+		blake2b_512(out, content->data, content->len);
 }

@@ -74,6 +74,7 @@ static enum qb_status combine_one(void *state, const struct store_record *r, str
 	struct partial p[CUSTODY_MAX];
 	struct buf content = {0};
 	uint8_t hash[64];
+	bool opens = false;
 	struct partial_authority auth = {.purpose = partial_full_purpose((enum record_type)r->type)};
 	memcpy(auth.hash, x->op->authority, 32);
 	enum qb_status st = record_check(&x->c->group, r->record, r->record_n, &rec, e);
@@ -81,9 +82,9 @@ static enum qb_status combine_one(void *state, const struct store_record *r, str
 		st = partial_check(&x->c->group, &rec, &auth, x->set[i].shares + x->at * PARTIAL_BYTES, PARTIAL_BYTES,
 		                   &p[i], e);
 	if (st == QB_OK)
-		st = partial_open(&x->c->group, &rec, p, (size_t)x->n_sets, &content, e);
+		st = partial_open_filed(&x->c->group, &rec, p, (size_t)x->n_sets, &content, &opens, e);
 	if (st == QB_OK) {
-		blake2b_512(hash, content.data, content.len);
+		partial_content_hash(&content, opens, hash);
 		transcript_field(x->t, rec.id, 64);
 		transcript_field(x->t, hash, 64);
 	}

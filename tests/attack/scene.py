@@ -73,10 +73,10 @@ class Answer:
 
 
 class Run:
-    """Exit status and output of a client."""
+    """Exit status and output of a client: `said` on standard output, `out` everything."""
 
-    def __init__(self, status, out):
-        self.status, self.out = status, out
+    def __init__(self, status, said, errors):
+        self.status, self.said, self.out = status, said, errors + said
 
     @property
     def one_line(self):
@@ -156,12 +156,12 @@ class Scene:
         return status
 
     def client(self, who, *arguments, expect=None, url=None, timeout=120):
-        """Runs the client as a party; output and errors together."""
+        """Runs the client as a party."""
         address = url or (self.url if self.authority else None)
         command = [os.path.join(build, 'quietbell'), *arguments, '--home', os.path.join(self.home, who)]
         command += ['--service', address] if address else []
-        p = subprocess.run(command, env=self.env, stdin=subprocess.DEVNULL, stdout=subprocess.PIPE, stderr=subprocess.STDOUT, timeout=timeout)
-        r = Run(p.returncode, p.stdout.decode(errors='replace'))
+        p = subprocess.run(command, env=self.env, stdin=subprocess.DEVNULL, stdout=subprocess.PIPE, stderr=subprocess.PIPE, timeout=timeout)
+        r = Run(p.returncode, p.stdout.decode(errors='replace'), p.stderr.decode(errors='replace'))
         if expect is not None and r.status != expect:
             raise RuntimeError('%s as %s: %s' % (' '.join(arguments), who, r))
         return r
@@ -189,7 +189,7 @@ class Scene:
 
     def enrol(self, role, name):
         self.client(name, 'key', 'new', '--name', name, '--rehearsal-seed', str(SEED), expect=0)
-        code = json.loads(self.client('admin', 'party', 'invite', role, name, '--json', expect=0).out)['code']
+        code = json.loads(self.client('admin', 'party', 'invite', role, name, '--json', expect=0).said)['code']
         self.client(name, 'party', 'enrol', code, expect=0)
 
     def clock(self, utc):

@@ -226,7 +226,7 @@ class Campaign:
         self.need(self.canary is not None and all(h.rehearsal for h in self.holders), leaf,
                   'a rehearsal was called done that was not')
         content = open_with(self.group, self.canary[0], [h.rehearsal for h in self.holders])
-        self.need(len(content) == 32, leaf, 'the canary does not hold 32 bytes')
+        self.need(content is not None and len(content) == 32, leaf, 'the canary does not hold 32 bytes')
         if self.state == 'certified':
             self.state = 'rehearsed'
 

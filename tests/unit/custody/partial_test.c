@@ -30,6 +30,52 @@ static void any_k_open_a_record(void **state)
 	scene_free(&s);
 }
 
+/* Noise under a proof that holds: only a record of the sealer's has to open. */
+static void what_a_party_sealed_to_nobody_has_no_content(void **state)
+{
+	(void)state;
+	static const uint8_t zeros[64];
+	static const struct {
+		enum record_type type;
+		enum partial_purpose purpose;
+		enum qb_status expected;
+	} table[] = {{RECORD_CLAIM, PARTIAL_CLAIMS, QB_OK},
+	             {RECORD_PLAY_NOTE, PARTIAL_SPOT, QB_OK},
+	             {RECORD_SLOT, PARTIAL_TRUTH, QB_CRYPTO},
+	             {RECORD_SEED, PARTIAL_TRUTH, QB_CRYPTO}};
+	struct scene s;
+	scene_make(&s, 3, 2);
+	for (size_t i = 0; i < sizeof table / sizeof *table; i++) {
+		struct buf bytes = {0}, plain = {0};
+		struct record rec;
+		struct partial p[2];
+		struct partial_authority a = scene_authority(table[i].purpose, 7);
+		uint8_t hash[64];
+		bool opens = false;
+		scene_seal(&s, table[i].type, 12, "words", &bytes, &rec);
+		for (uint32_t j = 1; j <= 2; j++)
+			scene_partial(&s, &rec, j, &a, &p[j - 1]);
+		assert_int_equal(partial_open_filed(&s.g, &rec, p, 2, &plain, &opens, NULL), QB_OK);
+		assert_true(opens);
+		assert_int_equal(plain.len, 5);
+		partial_content_hash(&plain, opens, hash);
+		assert_memory_not_equal(hash, zeros, 64);
+		/* The ciphertext changes after the proof was looked at; what is left is what an author could have
+		 * sealed. */
+		bytes.data[bytes.len - 1] ^= 1;
+		buf_clear(&plain);
+		assert_int_equal(partial_open_filed(&s.g, &rec, p, 2, &plain, &opens, NULL), table[i].expected);
+		assert_true(table[i].expected != QB_OK || !opens);
+		partial_content_hash(&plain, false, hash);
+		assert_memory_equal(hash, zeros, 64);
+		assert_int_equal(plain.len, 0);
+		assert_int_equal(partial_open_filed(&s.g, &rec, p, 1, &plain, &opens, NULL), QB_CRYPTO);
+		buf_free(&bytes);
+		buf_free(&plain);
+	}
+	scene_free(&s);
+}
+
 static void purposes_open_their_own_types_only(void **state)
 {
 	(void)state;
@@ -78,6 +124,7 @@ static void a_custodian_refuses_what_does_not_fit(void **state)
 
 static const struct CMUnitTest tests[] = {
     cmocka_unit_test(any_k_open_a_record),
+    cmocka_unit_test(what_a_party_sealed_to_nobody_has_no_content),
     cmocka_unit_test(purposes_open_their_own_types_only),
     cmocka_unit_test(a_custodian_refuses_what_does_not_fit),
 };
