@@ -65,9 +65,9 @@ enum qb_status partial_combine(const struct custody_group *g, const struct parti
 enum qb_status partial_open(const struct custody_group *g, const struct record *rec, const struct partial *partials,
                             size_t n, struct buf *content, struct qb_error *e) QB_MUST_USE;
 /*
- * The same in an opening of many records by many authors. What a party sealed to nobody's key, under a proof that holds,
- * opens to nothing: that is its author's doing, and must not keep the others' records shut. The seed and the slots are
- * the sealer's, and have to open.
+ * The same in an opening of many records by many authors. What a party sealed to nobody's key, under a proof that
+ * holds, opens to nothing: that is its author's doing, and must not keep the others' records shut. The seed and the
+ * slots are the sealer's, and have to open.
  *
  * Returned: *opens          false: the openings are right, and there is no content
  * Errors:   as partial_open, but for the case above
