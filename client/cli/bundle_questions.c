@@ -80,30 +80,52 @@ static json_t *summary(const struct question *q, size_t n)
 	return s;
 }
 
+/* By the time of receipt, and in the ledger's order where that is the same: the bundle lists them in no order. */
+static int by_receipt(const void *a, const void *b)
+{
+	const struct bundle_hidden *x = *(const struct bundle_hidden *const *)a,
+	                           *y = *(const struct bundle_hidden *const *)b;
+	if (x->received_gps_ns != y->received_gps_ns)
+		return x->received_gps_ns < y->received_gps_ns ? -1 : 1;
+	return x->seq < y->seq ? -1 : x->seq > y->seq;
+}
+
+static enum qb_status take_one(const struct verified *v, const struct bundle_hidden *h, bool questions,
+                               struct question *q, size_t *n, struct qb_error *e)
+{
+	struct wire_entry en;
+	enum qb_status st = wire_entry_parse((const char *)h->entry.data, h->entry.len, &en, e);
+	if (st != QB_OK)
+		return st;
+	bool question = strcmp(en.type->type, "spot-request") == 0;
+	if (questions && question) {
+		hex_encode(q[*n].id, h->commitment, 16);
+		q[*n].asked_ns = h->received_gps_ns;
+		q[(*n)++].j = ask(h, &en);
+	}
+	for (size_t k = 0; !questions && !question && strncmp(en.type->type, "spot-", 5) == 0 && k < *n; k++) {
+		if (strcmp(q[k].id, wire_entry_text(&en, "opening")) == 0)
+			follow_up(&q[k], h, &en, v->k->k);
+	}
+	wire_entry_free(&en);
+	return QB_OK;
+}
+
 enum qb_status bundle_questions_of(const struct verified *v, json_t *course, struct qb_error *e)
 {
 	struct question *q = QB_NEW_ARRAY(struct question, v->bundle->n_hidden + 1);
 	json_t *list = json_array();
 	size_t n = 0;
 	enum qb_status st = QB_OK;
-	for (size_t i = 0; st == QB_OK && i < v->bundle->n_hidden; i++) {
-		const struct bundle_hidden *h = &v->bundle->hidden[i];
-		struct wire_entry en;
-		st = wire_entry_parse((const char *)h->entry.data, h->entry.len, &en, e);
-		if (st != QB_OK)
-			break;
-		if (strcmp(en.type->type, "spot-request") == 0) {
-			hex_encode(q[n].id, h->commitment, 16);
-			q[n].asked_ns = h->received_gps_ns;
-			q[n++].j = ask(h, &en);
-		} else if (strncmp(en.type->type, "spot-", 5) == 0) {
-			for (size_t k = 0; k < n; k++) {
-				if (strcmp(q[k].id, wire_entry_text(&en, "opening")) == 0)
-					follow_up(&q[k], h, &en, v->k->k);
-			}
-		}
-		wire_entry_free(&en);
+	const struct bundle_hidden **order = qb_alloc(v->bundle->n_hidden + 1, sizeof *order);
+	for (size_t i = 0; i < v->bundle->n_hidden; i++)
+		order[i] = &v->bundle->hidden[i];
+	qsort(order, v->bundle->n_hidden, sizeof *order, by_receipt);
+	for (int pass = 0; pass < 2; pass++) {
+		for (size_t i = 0; st == QB_OK && i < v->bundle->n_hidden; i++)
+			st = take_one(v, order[i], pass == 0, q, &n, e);
 	}
+	qb_free(order);
 	for (size_t k = 0; k < n; k++) {
 		json_object_set_new(q[k].j, "answered_gps",
 		                    q[k].answered_ns != 0 ? json_real(seconds(q[k].answered_ns)) : json_null());
