@@ -8,7 +8,7 @@ import numpy as np
 from observed import kind_of
 
 # how strong: for the long run what a careless line of code would do; for a short one of few slots more of it
-LONG = {'size': {'share': 0.1, 'bytes': 1}, 'timing': {'spreads': 0.2}, 'order': {'share': 0.5}}
+LONG = {'size': {'share': 0.2, 'bytes': 1}, 'timing': {'spreads': 0.3}, 'order': {'share': 0.6}}
 SHORT = {'size': {'share': 1.0, 'bytes': 1}, 'timing': {'spreads': 2.0}, 'order': {'share': 1.0}}
 
 

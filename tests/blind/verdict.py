@@ -1,5 +1,5 @@
-"""Can anybody tell? A classifier that has never seen a campaign guesses which of its slots are live, and the area under
-its curve (AUC: the chance that it puts a random live slot above a random null one of the same campaign; 0.5 is
+"""Can anybody tell? A classifier that knows earlier campaigns guesses which slots of the next are live, and the area
+under its curve (AUC: the chance that it puts a random live slot above a random null one of the same campaign; 0.5 is
 blindness) gets an interval. Beside it every single observable is tried alone, with the level corrected for their number
 by permutation (Westfall & Young 1993). The AUC is that of Mann & Whitney (1947), its standard error that of DeLong,
 DeLong & Clarke-Pearson (1988)."""
@@ -8,7 +8,8 @@ import warnings
 import numpy as np
 from scipy import special, stats
 
-FOLDS = 10
+FIRST = 10      # one in so many campaigns only begins the models
+AGAIN = 8       # they are fitted again when there are so much more: an eighth
 FEW = 8         # campaigns below which the effect of a slot's place can't be learnt
 SPARSE = 0.8    # of the penalty at which blind observables would all stay out
 STEPS = 150
@@ -54,7 +55,7 @@ class Game:
         self.features /= np.maximum(self.features.std(0), 1e-12)
 
     def _normal(self, x):
-        """Normal scores of ranks within campaigns (van der Waerden 1952): a busy moment is no more than the last rank."""
+        """Normal scores of ranks within campaigns (van der Waerden 1952): a hiccup is no more than the last rank."""
         out = np.zeros_like(x)
         for g in np.unique(self.group):
             rows = self.group == g
@@ -74,12 +75,18 @@ class Game:
         return out
 
     def scores(self):
-        """Each slot's score by a regularised logistic regression that was fitted on other campaigns only."""
-        out = np.zeros(len(self.live))
-        folds = np.arange(self.group.max() + 1) % FOLDS
-        for f in np.unique(folds):
-            test = folds[self.group] == f
-            out[test] = self.features[test] @ logistic(self.features[~test], self.live[~test])
+        """Each slot's score by a model that was fitted on earlier campaigns only. Scores of the first campaigns are
+        missing: with them the models begin. What is won in a campaign then has the mean of a guess whatever was won
+        before, and spreads add up; in cross-validation, where each part helps to judge the others, they do not."""
+        out = np.full(len(self.live), np.nan)
+        campaigns = int(self.group.max()) + 1
+        at = max(1, campaigns // FIRST)
+        while at < campaigns:
+            to = min(campaigns, at + max(1, at // AGAIN))
+            test = (self.group >= at) & (self.group < to)
+            known = self.group < at
+            out[test] = self.features[test] @ logistic(self.features[known], self.live[known])
+            at = to
         return out
 
     def auc(self, score):
@@ -87,6 +94,8 @@ class Game:
         won, pairs, variance = [], [], []
         for g in np.unique(self.group):
             s, y = score[self.group == g], self.live[self.group == g]
+            if np.isnan(s).any():
+                continue
             n1, n0 = int(y.sum()), int((~y).sum())
             if n1 == 0 or n0 == 0:
                 continue
@@ -139,7 +148,7 @@ def logistic(x, y):
     target = y - y.mean()
     penalty = SPARSE * np.sqrt(n * y.var() * 2 * np.log(max(p, 2)))
     penalty = min(penalty, 0.8 * np.abs(x.T @ target).max())  # something always comes in
-    step = 4 / np.linalg.norm(x, 2) ** 2
+    step = 4 / np.linalg.eigvalsh(x.T @ x)[-1]
     w = ahead = np.zeros(p)
     shift, t = special.logit(min(max(y.mean(), 0.01), 0.99)), 1.0
     for _ in range(STEPS):
@@ -154,16 +163,19 @@ def logistic(x, y):
 def judge(played, level, rng, times=999):
     """A dictionary of the verdict at this level of confidence."""
     g = Game(played)
-    auc, error, won, pairs = g.auc(g.scores())
+    score = g.scores()
+    auc, error, won, pairs = g.auc(score)
+    judged = g.live[~np.isnan(score)]
     half = stats.norm.ppf(0.5 + level / 2) * error
-    low, high = auc - half, auc + half
+    low, high = max(auc - half, 0), min(auc + half, 1)
     if len(won) >= 30:  # enough campaigns for a bootstrap over them: the wider of the two counts
         pick = rng.integers(0, len(won), (2000, len(won)))
         again = np.sort(won[pick].sum(1) / pairs[pick].sum(1))
         low = min(low, again[int((0.5 - level / 2) * 1999)])
         high = max(high, again[int((0.5 + level / 2) * 1999)])
     name, single, p = g.alone(rng, times)
-    return {'slots': len(g.live), 'live': int(g.live.sum()), 'campaigns': len(won), 'observables': len(g.names),
-            'constant': g.constant, 'auc': auc, 'low': low, 'high': high, 'half': (high - low) / 2, 'level': level,
+    return {'slots': len(g.live), 'live': int(g.live.sum()), 'judged_live': int(judged.sum()),
+            'judged_null': int((~judged).sum()), 'observables': len(g.names), 'constant': g.constant,
+            'auc': auc, 'low': low, 'high': high, 'half': (high - low) / 2, 'level': level,
             'strongest': name, 'strongest_auc': single, 'strongest_p': p,
             'blind': bool(low <= 0.5 <= high and p > 1 - level)}
