@@ -9,7 +9,7 @@ from observed import kind_of
 
 # how strong: for the long run what a careless line of code would do; for a short one of few slots more of it
 LONG = {'size': {'share': 0.2, 'bytes': 1}, 'timing': {'spreads': 0.3}, 'order': {'share': 0.6}}
-SHORT = {'size': {'share': 1.0, 'bytes': 1}, 'timing': {'spreads': 2.0}, 'order': {'share': 1.0}}
+SHORT = {'size': {'share': 1.0, 'bytes': 4}, 'timing': {'spreads': 3.0}, 'order': {'share': 1.0, 'null_share': 1.0}}
 
 
 def live_slots(seen):
@@ -45,18 +45,22 @@ def timing(seen, rng, spreads):
     seen['planted'] = delay_ns
 
 
-def order(seen, rng, share):
-    """Of a live slot tarn's note enters the ledger before heron's."""
-    at = {}
-    for i, leaf in enumerate(seen['leaves']):
+def order(seen, rng, share, null_share=0.0):
+    """Of a live slot tarn's notes and report enter the ledger before heron's; of a null, if so wanted, after them."""
+    leaves, at = seen['leaves'], {}
+    for i, leaf in enumerate(leaves):
         entry = leaf['entry']
-        if entry is not None and entry['type'] == 'play-note':
-            at[entry['slot'], entry['station']] = i
-    for n in some(rng, live_slots(seen), share):
-        first, second = at[n, 'heron'], at[n, 'tarn']
-        if first < second:
-            leaves = seen['leaves']
-            leaves[first], leaves[second] = leaves[second], leaves[first]
+        if entry is not None and entry['type'] in ('play-note', 'play-report'):
+            at.setdefault(entry['slot'], {}).setdefault(entry['type'], {}).setdefault(entry['station'], []).append(i)
+    live = live_slots(seen)
+    first = {n: 'tarn' for n in some(rng, live, share)}
+    first.update({n: 'heron' for n in some(rng, set(at) - live, null_share)})
+    for n, leader in first.items():
+        for stations in at[n].values():
+            for pair in zip(*stations.values()):
+                a, b = sorted(pair)
+                if leaves[a]['entry']['station'] != leader:
+                    leaves[a], leaves[b] = leaves[b], leaves[a]
 
 
 LEAKS = {'size': size, 'timing': timing, 'order': order}

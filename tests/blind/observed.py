@@ -34,6 +34,12 @@ def kind_of(event):
     return kind, int(m.group(1)) - (AHEAD if kind == 'fetch' else 0)
 
 
+def number(times, name, slot):
+    """A slot has several notes: which one this is."""
+    times[name, slot] = times.get((name, slot), -1) + 1
+    return '.%d' % times[name, slot]
+
+
 def exchange(t, name, slot, e):
     t.put(name + '.request_bytes', slot, e['request_bytes'])
     t.put(name + '.answer_bytes', slot, e['answer_bytes'])
@@ -54,11 +60,13 @@ def traffic(t, events):
     merged = {}
     for station in STATIONS:
         own = sorted((e for e in events if e['who'] == station), key=lambda e: e['at'])
-        window = {}
+        window, notes = {}, {}
         for i, e in enumerate(own):
             kind, slot = kind_of(e)
             if kind is None or slot < 0 or e['status'] >= 400:
                 continue
+            if kind == 'note':
+                kind += number(notes, kind, slot)
             name = station + '.' + kind
             exchange(t, name, slot, e)
             if i > 0:
@@ -163,20 +171,23 @@ def look_of_bytes(t, name, slot, data):
 def stored(t, seen):
     for (n, station), data in seen['recipes'].items():
         look_of_bytes(t, 'recipe.' + station, n, data)
+    times = {}
     for r in seen['records']:
         if r['type'] in RECORDS:
             name = 'record.%s.%s' % (r['type'], r.get('station', '-'))
+            name += number(times, name, r['slot'])
             look_of_bytes(t, name, r['slot'], base64.b64decode(r['record']))
 
 
 def ledger(t, leaves):
-    rank, hidden = {}, 0
+    rank, times, hidden = {}, {}, 0
     for leaf in leaves:
         entry = leaf['entry']
         hidden += leaf['hidden']
         if entry is None or not isinstance(entry.get('slot'), int):
             continue
         n, name = entry['slot'], 'leaf.%s.%s' % (entry['type'], entry.get('station', '-'))
+        name += number(times, name, n)
         t.put(name + '.bytes', n, leaf['size'])
         t.put(name + '.received', n, leaf['received'] % 5000000000)
         t.put(name + '.hidden', n, hidden)
