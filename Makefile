@@ -109,7 +109,7 @@ outside: $(outside_bin) $(helper_bin)
 
 system: all $(attack_bin)
 	@rm -rf $(BUILD)/demo-sealed
-	@QB_BUILD=$(BUILD) tests/run $(BUILD)/results $(sort $(wildcard tests/system/[0-9]*))
+	@QB_BUILD=$(BUILD) tests/run --jobs 3 $(BUILD)/results $(sort $(wildcard tests/system/[0-9]*))
 test:
 	@tests/all $(BUILD)
 check: test sanitize valgrind
