@@ -181,7 +181,7 @@ static enum qb_status check_one_hidden(struct verified *v, const struct bundle_h
 		st = no(e, "a hidden entry's signature is not its author's");
 	if (st == QB_OK && (st = wire_entry_parse((const char *)h->entry.data, h->entry.len, &en, e)) == QB_OK) {
 		if (strcmp(en.by, author->name) != 0 || memcmp(en.campaign, v->k->id, 16) != 0 || !en.type->hidden ||
-		    (en.type->roles & ROLE_BIT(campaign_role(v->k, author))) == 0)
+		    (en.type->roles & ROLE_BIT(campaign_role_then(v->k, author, h->received_gps_ns))) == 0)
 			st = no(e, "a hidden entry's author may not author it");
 		wire_entry_free(&en);
 	}

@@ -107,36 +107,6 @@ static void print_conflicts(struct cli_call *c, const struct campaign *k)
 	}
 }
 
-/* What the custodians and whoever watches over them must see: failures, epochs, rehearsals and the margin. */
-static void print_custody(struct cli_call *c, const struct campaign *k)
-{
-	char when[40];
-	cli_print(c, "\n");
-	for (int i = 0; i < k->n_failures; i++) {
-		const struct keygen_failure *f = &k->failure[i];
-		cli_print(c, "           attempt %llu failed: %s%s%s; %s\n", (unsigned long long)f->attempt,
-		          f->excluded, f->excluded[0] != '\0' ? " " : "", f->how, f->why);
-	}
-	if (k->epoch > 1)
-		cli_print(c, "           reshared %llu times\n", (unsigned long long)k->epoch - 1);
-	for (int i = 0; i < k->n_former; i++)
-		cli_print(c, "           %s has not stated yet that the old share is erased\n", k->former[i]->name);
-	if (k->canary_seq != NO_SEQ) {
-		cli_print(c, "margin     %d: %d of %d opened the canary of %s, %d are needed\n", campaign_margin(k),
-		          campaign_margin(k) + k->k, k->n, clock_utc_text(k->canary_ns, when, sizeof when), k->k);
-		for (int i = 0; i < k->n; i++) {
-			if (k->custodian[i].missed >= 2)
-				cli_print(c, "           %s missed %d rehearsals in a row\n",
-				          k->custodian[i].party->name, k->custodian[i].missed);
-		}
-	}
-	if (k->reshare.under_way)
-		cli_print(c, "reshare    attempt %llu is under way\n", (unsigned long long)k->reshare_attempt);
-	if (k->repair.under_way)
-		cli_print(c, "repair     attempt %llu is under way, for %s\n", (unsigned long long)k->repair_attempt,
-		          k->custodian[k->repair.lost].party->name);
-}
-
 /* What outside partners check answers against. */
 static void print_fingerprint(struct cli_call *c, const struct campaign *k)
 {
@@ -187,7 +157,8 @@ static enum qb_status run_show(struct cli_call *c)
 		cli_print(c, "custody    %d of %d:", k->k, k->n);
 		for (int i = 0; i < k->n; i++)
 			cli_print(c, " %s", k->custodian[i].party->name);
-		print_custody(c, k);
+		cli_print(c, "\n");
+		cli_show_custody(c, k);
 		print_fingerprint(c, k);
 		cli_print(c, "attempts   key generation %llu, sealing %llu\n", (unsigned long long)k->attempt,
 		          (unsigned long long)k->sealing_attempt);
@@ -273,13 +244,15 @@ static const struct cli_option keygen_options[] = {
 static const struct cli_option why_options[] = {{"reason", "TEXT", true, "why, for the ledger"},
                                                 {NULL, NULL, false, NULL}};
 static const struct cli_option reshare_options[] = {
-    {"to", "NAMES", true, "the new set, in its order"},
+    {"to", "NAMES", false, "the new set, in its order"},
     {"needed", "K", false, "how many of them an opening needs (default: as now)"},
     {"dealers", "NAMES", false, "who of the present set deals (default: the first that are needed)"},
+    {"end", NULL, false, "gives up the attempt that is under way; nothing changes"},
     {"reason", "TEXT", true, "why, for the ledger"},
     {NULL, NULL, false, NULL}};
 static const struct cli_option repair_options[] = {
     {"helpers", "NAMES", false, "who helps (default: the first of the others that are needed)"},
+    {"end", NULL, false, "gives up the repair that is under way, to ask other helpers"},
     {"reason", "TEXT", true, "why, for the ledger"},
     {NULL, NULL, false, NULL}};
 static const struct cli_option seal_options[] = {
@@ -302,7 +275,7 @@ const struct cli_verb cli_campaign_verbs[] = {
     {"campaign", "keygen", "CAMPAIGN", cli_keygen, keygen_options,
      "a custodian's part: deal, certify, rehearse, contribute", "quietbell campaign keygen fells-spring --wait"},
     {"campaign", "exclude", "CAMPAIGN NAME", cli_exclude, why_options,
-     "leaves a custodian out who alone has kept the key generation waiting for three days",
+     "leaves a custodian out who has kept the key generation waiting for three days",
      "quietbell campaign exclude fells-spring okoro --reason 'cannot be reached'"},
     {"campaign", "reshare", "CAMPAIGN", cli_reshare, reshare_options,
      "asks the custodians to deal their shares on to another set, under the same key",

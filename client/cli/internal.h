@@ -65,6 +65,10 @@ enum qb_status cli_key_backup(struct cli_call *c) QB_MUST_USE;
 enum qb_status cli_key_restore(struct cli_call *c) QB_MUST_USE;
 /* Appends the names of a comma-separated option; nothing when it is absent. QB_USAGE */
 enum qb_status cli_option_names(struct cli_call *c, const char *option, json_t *out) QB_MUST_USE;
+/* What the custodians and whoever watches over them must see, for `campaign show`. keyholder_show.c */
+void cli_show_custody(struct cli_call *c, const struct campaign *k);
+/* Replaces the party's keys, here and in the ledger; the call goes on with the new ones. key_verbs.c */
+enum qb_status cli_rotate(struct cli_call *c, const char *why) QB_MUST_USE;
 /* The verb `slot guess`. */
 enum qb_status cli_guess(struct cli_call *c) QB_MUST_USE;
 

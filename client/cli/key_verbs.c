@@ -123,7 +123,7 @@ static enum qb_status run_change(struct cli_call *c)
 }
 
 /* Announces the staged keys; whether that was done before a crash, the ledger says. */
-static enum qb_status announce(struct cli_call *c, const struct party_key *fresh)
+static enum qb_status announce(struct cli_call *c, const struct party_key *fresh, const char *why)
 {
 	struct party_public pub;
 	uint8_t statement[64], proof[SIGN_BYTES], id[KEY_ID_BYTES];
@@ -138,10 +138,10 @@ static enum qb_status announce(struct cli_call *c, const struct party_key *fresh
 	json_object_set_new(extra, "signing_key", json_hex_new(pub.sign, 32));
 	json_object_set_new(extra, "exchange_key", json_hex_new(pub.exchange, 32));
 	json_object_set_new(extra, "proof", json_hex_new(proof, SIGN_BYTES));
-	return cli_post_entry(c, "/v1/parties", "key-rotation", NULL, cli_option(c, "reason"), extra, NULL, NULL);
+	return cli_post_entry(c, "/v1/parties", "key-rotation", NULL, why, extra, NULL, NULL);
 }
 
-static enum qb_status run_rotate(struct cli_call *c)
+enum qb_status cli_rotate(struct cli_call *c, const char *why)
 {
 	struct party_key fresh = {0};
 	enum qb_status st = cli_follow(c);
@@ -153,16 +153,23 @@ static enum qb_status run_rotate(struct cli_call *c)
 		party_key_new(&fresh);
 	st = home_keys_stage(&c->home, &fresh, &c->error);
 	if (st == QB_OK)
-		st = announce(c, &fresh);
+		st = announce(c, &fresh, why);
 	if (st == QB_OK)
 		st = home_keys_swap(&c->home, &c->error);
+	if (st == QB_OK)
+		home_keys_use(&c->home, &fresh);
+	else
+		party_key_free(&fresh);
+	return st == QB_OK ? cli_follow(c) : st;
+}
+
+static enum qb_status run_rotate(struct cli_call *c)
+{
+	enum qb_status st = cli_rotate(c, cli_option(c, "reason"));
 	if (st == QB_OK) {
-		party_key_public(&fresh, &c->home.pub);
-		sign_key_id(c->home.pub.sign, c->home.key_id);
 		show(c);
 		cli_note(c, "The old keys are gone from this home; shares and receipts stay.\n");
 	}
-	party_key_free(&fresh);
 	return st;
 }
 

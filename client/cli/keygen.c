@@ -236,8 +236,8 @@ static enum qb_status read_share(struct cli_call *c, const struct campaign *k, c
 	return st;
 }
 
-/* After a resharing the share of the new set takes the place of the old one, which is gone then. */
-static enum qb_status adopt_next(struct cli_call *c, const struct campaign *k, const struct custody_group *g)
+/* After a resharing the share of the new set takes the place of the old one, which is erased. */
+enum qb_status cli_share_adopt(struct cli_call *c, const struct campaign *k, const struct custody_group *g)
 {
 	char *next, *now;
 	struct secret *share = NULL;
@@ -247,8 +247,8 @@ static enum qb_status adopt_next(struct cli_call *c, const struct campaign *k, c
 		return st;
 	if (access(next, F_OK) == 0 &&
 	    (st = home_campaign_path(&c->home, k->id, SHARE_FILE, &now, &c->error)) == QB_OK) {
-		if (read_share(c, k, SHARE_NEXT, g, &share) == QB_OK && rename(next, now) != 0)
-			st = qb_fail(&c->error, QB_IO, now, NULL, "can't be replaced");
+		if (read_share(c, k, SHARE_NEXT, g, &share) == QB_OK)
+			st = home_replace(next, now, &c->error);
 		secret_free(&share);
 		qb_free(now);
 	}
@@ -261,7 +261,7 @@ static enum qb_status adopt_next(struct cli_call *c, const struct campaign *k, c
 enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
                          struct secret **out)
 {
-	enum qb_status st = adopt_next(c, k, g);
+	enum qb_status st = cli_share_adopt(c, k, g);
 	*out = NULL;
 	return st == QB_OK ? read_share(c, k, SHARE_FILE, g, out) : st;
 }
@@ -414,13 +414,13 @@ static enum qb_status find_part(struct part *p, const char *campaign)
 	p->name = c->home.name;
 	p->i = custodian_index(p->k, p->name);
 	for (int f = 0; f < p->k->n_failures; f++) {
-		const struct keygen_failure *x = &p->k->failure[f];
-		if (strcmp(x->excluded, p->name) == 0)
+		const struct custody_failure *x = &p->k->failure[f];
+		if (x->kind == ATTEMPT_KEYGEN && strcmp(x->excluded, p->name) == 0)
 			return qb_fail(&c->error, QB_NO, "key generation", NULL,
 			               "%s was left out after attempt %llu: %s %s", p->name,
 			               (unsigned long long)x->attempt, p->name, x->how);
 	}
-	if (p->i < 0 && reshare_member(p->k, p->name) < 0 && !campaign_former(p->k, p->name))
+	if (p->i < 0 && reshare_member(p->k, p->name) < 0 && campaign_owes(p->k, p->name) == NULL)
 		return qb_fail(&c->error, QB_REFUSED, "campaign", NULL, "%s is no custodian of '%s'", p->name,
 		               p->k->name);
 	if (p->seed >= 0 && !c->link.rehearsal)

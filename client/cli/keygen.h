@@ -8,6 +8,8 @@ enum qb_status cli_keygen(struct cli_call *c) QB_MUST_USE;
 /* The custodian's share of this campaign from its key file, checked against the group. The caller frees *out. */
 enum qb_status cli_share(struct cli_call *c, const struct campaign *k, const struct custody_group *g,
                          struct secret **out) QB_MUST_USE;
+/* Takes the share of a resharing that has taken effect into use; nothing when there is none. */
+enum qb_status cli_share_adopt(struct cli_call *c, const struct campaign *k, const struct custody_group *g) QB_MUST_USE;
 
 /*
  * A custodian's part, whatever is due: dealing, complaining, certifying, rehearsing, contributing, dealing on,

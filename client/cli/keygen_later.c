@@ -132,58 +132,67 @@ static enum qb_status reshare_turn(struct part *p, bool *idle)
 
 /* ---- after a resharing ---- */
 
-static enum qb_status state_erasure(struct part *p)
+/* What no longer counts leaves this home: a share of a former epoch, or what a failed resharing dealt. */
+static enum qb_status erase_files(struct part *p, bool in_office)
 {
-	json_t *extra = json_object();
-	json_object_set_new(extra, "epoch", json_integer((json_int_t)p->k->epoch - 1));
-	enum qb_status st = part_post(p, "share-erased", "the new set is in office", extra);
+	struct custody_group *g = QB_NEW(struct custody_group);
+	char *next = NULL, *now = NULL;
+	enum qb_status st = campaign_certified_group(p->k, g, &p->c->error);
+	if (st == QB_OK && in_office)
+		st = cli_share_adopt(p->c, p->k, g);
 	if (st == QB_OK)
-		cli_note(p->c,
-		         "%s: stated that the share of epoch %llu is erased here; destroy its copies on paper and in "
-		         "backups "
-		         "too\n",
-		         p->name, (unsigned long long)p->k->epoch - 1);
+		st = home_campaign_path(&p->c->home, p->k->id, SHARE_NEXT, &next, &p->c->error);
+	if (st == QB_OK)
+		st = home_campaign_path(&p->c->home, p->k->id, SHARE_FILE, &now, &p->c->error);
+	/* what the adoption left there fits no group */
+	if (st == QB_OK)
+		st = home_erase(next, &p->c->error);
+	if (st == QB_OK && !in_office)
+		st = home_erase(now, &p->c->error);
+	qb_free(next);
+	qb_free(now);
+	qb_free(g);
 	return st;
 }
 
-/* The old share leaves this home: overwritten by the new one, or erased by who is not in the new set. */
+/*
+ * The parts that were dealt stand in the ledger for ever, encrypted to this party's exchange key: a share is gone only
+ * when that key is. So the party's keys are replaced before it states that the share is erased.
+ */
 static enum qb_status erase_turn(struct part *p, bool *idle)
 {
-	char *path;
-	struct buf zeros = {0};
-	enum qb_status st;
-	if (campaign_former(p->k, p->name)) {
-		*idle = false;
-		if ((st = home_campaign_path(&p->c->home, p->k->id, SHARE_FILE, &path, &p->c->error)) != QB_OK)
-			return st;
-		buf_zeros(&zeros, 4096);
-		if (access(path, F_OK) == 0)
-			st = file_write(path, 0600, zeros.data, zeros.len, &p->c->error);
-		(void)unlink(path);
-		buf_free(&zeros);
-		qb_free(path);
-		if (st == QB_OK)
-			st = state_erasure(p);
-		p->left = st == QB_OK;
-		return st;
+	const struct erasure_owed *owed = campaign_owes(p->k, p->name);
+	const struct view_party *me = view_party_named(&p->c->follow.view, p->name);
+	if (owed == NULL || me == NULL)
+		return QB_OK;
+	if (me->key_seq < owed->seq && view_keys_in_use(&p->c->follow.view, me)) {
+		if (!p->waited)
+			cli_note(p->c, "%s: an old share waits to be erased until the keys can be replaced\n", p->name);
+		p->waited = true;
+		return QB_OK;
 	}
-	if (p->k->epoch < 2 || p->i < 0)
-		return QB_OK;
-	if ((st = home_campaign_path(&p->c->home, p->k->id, SHARE_NEXT, &path, &p->c->error)) != QB_OK)
-		return st;
-	bool waiting = access(path, F_OK) == 0;
-	qb_free(path);
-	if (!waiting)
-		return QB_OK;
 	*idle = false;
-	struct custody_group *g = QB_NEW(struct custody_group);
-	struct secret *share = NULL;
-	st = campaign_certified_group(p->k, g, &p->c->error);
+	uint64_t epoch = owed->epoch;
+	json_t *extra = json_object();
+	json_object_set_new(extra, "epoch", json_integer((json_int_t)epoch));
+	enum qb_status st = erase_files(p, p->i >= 0);
+	if (st == QB_OK && me->key_seq < owed->seq)
+		st = cli_rotate(p->c, "a share that was dealt to the old keys is erased");
 	if (st == QB_OK)
-		st = cli_share(p->c, p->k, g, &share); /* takes the new share into use */
-	secret_free(&share);
-	qb_free(g);
-	return st == QB_OK ? state_erasure(p) : st;
+		st = part_post(p, "share-erased",
+		               epoch > 0 ? "another set is in office" : "the resharing came to nothing", extra);
+	else
+		json_decref(extra);
+	if (st == QB_OK)
+		cli_note(p->c,
+		         "%s: erased what counts no more, replaced the keys it was dealt to, and stated it. Destroy "
+		         "copies on paper and in backups too, and make new ones.\n",
+		         p->name);
+	int debts = 0;
+	for (int i = 0; i < p->k->n_owed; i++)
+		debts += strcmp(p->k->owed[i].party->name, p->name) == 0;
+	p->left = st == QB_OK && debts == 1 && p->i < 0 && reshare_member(p->k, p->name) < 0;
+	return st;
 }
 
 /* ---- repair ---- */

@@ -10,7 +10,8 @@ struct part {
 	struct campaign *k;
 	int i; /* own position among the custodians in office, from 0; -1: not in office (yet, or any more) */
 	int64_t seed;
-	bool left; /* the last thing to do for this campaign is done */
+	bool left;   /* the last thing to do for this campaign is done */
+	bool waited; /* it was said that an erasure waits */
 };
 
 /* Posts one entry of the key generation's route; extra is taken over. */

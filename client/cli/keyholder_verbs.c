@@ -23,22 +23,35 @@ static enum qb_status names_or_first(struct cli_call *c, const struct campaign *
 		return st;
 	for (int i = 0; i < k->n && (int)json_array_size(out) < k->k; i++) {
 		const char *name = k->custodian[i].party->name;
-		if (except == NULL || strcmp(name, except) != 0)
+		if (!campaign_blamed(k, name) && (except == NULL || strcmp(name, except) != 0))
 			json_array_append_new(out, json_string(name));
 	}
 	return QB_OK;
 }
 
-enum qb_status cli_reshare(struct cli_call *c)
+/* `--end`: what is under way is given up; the entry stands in its author's name. */
+static enum qb_status end(struct cli_call *c, const struct campaign *k, bool under_way, uint64_t attempt,
+                          const char *type)
 {
-	struct campaign *k;
+	if (!under_way)
+		return qb_fail(&c->error, QB_REFUSED, "--end", "see quietbell campaign show", "nothing is under way");
+	json_t *extra = json_object();
+	json_object_set_new(extra, "attempt", json_integer((json_int_t)attempt));
+	enum qb_status st = post(c, k, type, extra);
+	if (st == QB_OK)
+		cli_note(c, "Attempt %llu is over; nothing has changed.\n", (unsigned long long)attempt);
+	return st;
+}
+
+static enum qb_status ask_reshare(struct cli_call *c, const struct campaign *k)
+{
 	int64_t needed;
 	json_t *names = json_array(), *dealers = json_array(), *extra = json_object();
-	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
-	if (st == QB_OK)
-		st = cli_option_int(c, "needed", 2, CUSTODY_MAX, k->k, &needed);
+	enum qb_status st = cli_option_int(c, "needed", 2, CUSTODY_MAX, k->k, &needed);
 	if (st == QB_OK)
 		st = cli_option_names(c, "to", names);
+	if (st == QB_OK && json_array_size(names) == 0)
+		st = qb_fail(&c->error, QB_USAGE, "--to", "name the whole new set", "is needed");
 	if (st == QB_OK)
 		st = names_or_first(c, k, "dealers", NULL, dealers);
 	json_object_set_new(extra, "names", names);
@@ -58,13 +71,20 @@ enum qb_status cli_reshare(struct cli_call *c)
 	return st;
 }
 
-enum qb_status cli_repair(struct cli_call *c)
+enum qb_status cli_reshare(struct cli_call *c)
 {
 	struct campaign *k;
-	json_t *helpers = json_array(), *extra = json_object();
 	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
-	if (st == QB_OK)
-		st = names_or_first(c, k, "helpers", c->home.name, helpers);
+	if (st != QB_OK)
+		return st;
+	return cli_option(c, "end") != NULL ? end(c, k, k->reshare.under_way, k->reshare_attempt, "reshare-failed")
+	                                    : ask_reshare(c, k);
+}
+
+static enum qb_status ask_repair(struct cli_call *c, const struct campaign *k)
+{
+	json_t *helpers = json_array(), *extra = json_object();
+	enum qb_status st = names_or_first(c, k, "helpers", c->home.name, helpers);
 	json_object_set_new(extra, "helpers", helpers);
 	if (st == QB_OK)
 		st = post(c, k, "repair-request", extra);
@@ -74,6 +94,16 @@ enum qb_status cli_repair(struct cli_call *c)
 		cli_note(c, "The helpers now run quietbell campaign keygen %s; this command waits for them.\n",
 		         k->name);
 	return st == QB_OK ? cli_keygen_part(c, cli_arg(c, 0), true, -1) : st;
+}
+
+enum qb_status cli_repair(struct cli_call *c)
+{
+	struct campaign *k;
+	enum qb_status st = cli_campaign(c, cli_arg(c, 0), &k);
+	if (st != QB_OK)
+		return st;
+	return cli_option(c, "end") != NULL ? end(c, k, k->repair.under_way, k->repair_attempt, "repair-failed")
+	                                    : ask_repair(c, k);
 }
 
 enum qb_status cli_exclude(struct cli_call *c)

@@ -2,6 +2,7 @@
 #include "client/link/home.h"
 
 #include <errno.h>
+#include <fcntl.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -134,12 +135,45 @@ static enum qb_status write_public(const struct home *h, const char *file, const
 	return st;
 }
 
+enum qb_status home_erase(const char *path, struct qb_error *e)
+{
+	struct stat info;
+	uint8_t zeros[512] = {0};
+	int fd = open(path, O_WRONLY | O_CLOEXEC | O_NOFOLLOW);
+	if (fd < 0 && errno == ENOENT)
+		return QB_OK;
+	bool good = fd >= 0 && fstat(fd, &info) == 0 && S_ISREG(info.st_mode);
+	for (off_t at = 0; good && at < info.st_size; at += (off_t)sizeof zeros) {
+		size_t left = (size_t)(info.st_size - at), n = left < sizeof zeros ? left : sizeof zeros;
+		good = pwrite(fd, zeros, n, at) == (ssize_t)n;
+	}
+	good = good && fsync(fd) == 0;
+	if (fd >= 0)
+		(void)close(fd);
+	good = good && unlink(path) == 0;
+	return good ? QB_OK
+	            : qb_fail(e, QB_IO, path, "erase it by hand, and every copy", "can't be erased: %s",
+	                      strerror(errno));
+}
+
+enum qb_status home_replace(const char *next, const char *now, struct qb_error *e)
+{
+	char *old = text_printf("%s.old", now);
+	enum qb_status st = home_erase(old, e);
+	if (st == QB_OK && link(now, old) != 0 && errno != ENOENT)
+		st = qb_fail(e, QB_IO, now, NULL, "can't be replaced: %s", strerror(errno));
+	if (st == QB_OK && rename(next, now) != 0)
+		st = qb_fail(e, QB_IO, now, NULL, "can't be replaced: %s", strerror(errno));
+	if (st == QB_OK)
+		st = home_erase(old, e);
+	qb_free(old);
+	return st;
+}
+
 static enum qb_status move(const struct home *h, const char *from, const char *to, struct qb_error *e)
 {
 	char *a = home_path(h, from), *b = home_path(h, to);
-	enum qb_status st = QB_OK;
-	if (access(a, F_OK) == 0 && rename(a, b) != 0)
-		st = qb_fail(e, QB_IO, b, NULL, "can't be replaced: %s", strerror(errno));
+	enum qb_status st = access(a, F_OK) == 0 ? home_replace(a, b, e) : QB_OK;
 	qb_free(a);
 	qb_free(b);
 	return st;
@@ -151,7 +185,12 @@ static enum qb_status finish_swap(const struct home *h, struct qb_error *e)
 	char *next = home_path(h, "key-next.qbk");
 	bool pending = access(next, F_OK) == 0;
 	qb_free(next);
-	return pending ? QB_OK : move(h, "key-next.pub", "key.pub", e);
+	if (pending)
+		return QB_OK;
+	char *old = home_path(h, "key.qbk.old");
+	enum qb_status st = home_erase(old, e);
+	qb_free(old);
+	return st == QB_OK ? move(h, "key-next.pub", "key.pub", e) : st;
 }
 
 enum qb_status home_open(const char *dir, bool create, struct home *out, struct qb_error *e)
@@ -336,6 +375,15 @@ enum qb_status home_keys_swap(struct home *h, struct qb_error *e)
 {
 	enum qb_status st = move(h, "key-next.qbk", "key.qbk", e);
 	return st == QB_OK ? move(h, "key-next.pub", "key.pub", e) : st;
+}
+
+void home_keys_use(struct home *h, struct party_key *fresh)
+{
+	party_key_free(&h->key);
+	h->key = *fresh;
+	*fresh = (struct party_key){0};
+	party_key_public(&h->key, &h->pub);
+	sign_key_id(h->pub.sign, h->key_id);
 }
 
 enum qb_status home_pin(struct home *h, const char *url, const uint8_t key[static SIGN_PUBLIC], struct qb_error *e)

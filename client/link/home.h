@@ -61,6 +61,15 @@ enum qb_status home_key_new(struct home *h, const char *name, const struct party
 enum qb_status home_keys_stage(struct home *h, const struct party_key *key, struct qb_error *e) QB_MUST_USE;
 enum qb_status home_keys_staged(struct home *h, bool rehearsal, struct party_key *out, struct qb_error *e) QB_MUST_USE;
 enum qb_status home_keys_swap(struct home *h, struct qb_error *e) QB_MUST_USE;
+/* From here on the unlocked home has these keys; the caller's are taken over. */
+void home_keys_use(struct home *h, struct party_key *fresh);
+/*
+ * A key file is erased: overwritten where it lies, then removed. What the disk or a backup keeps of it elsewhere is out
+ * of reach. No file is no error.
+ */
+enum qb_status home_erase(const char *path, struct qb_error *e) QB_MUST_USE;
+/* `next` takes the place of `now`, which is erased; a crash at any point leaves one of them whole under `now`. */
+enum qb_status home_replace(const char *next, const char *now, struct qb_error *e) QB_MUST_USE;
 /* Pins a service: url and key. QB_CRYPTO when another key is pinned already. */
 enum qb_status home_pin(struct home *h, const char *url, const uint8_t key[static SIGN_PUBLIC],
                         struct qb_error *e) QB_MUST_USE;

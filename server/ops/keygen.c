@@ -128,7 +128,7 @@ static enum qb_status check_exclusion(struct ops *o, struct campaign *c, const s
 	const char *name = wire_entry_text(&a->entry, "name");
 	if (campaign_silent(c, name, now_locked(o)) < 0)
 		return qb_fail(e, QB_CONFLICT, "exclusion", "wait, or ask the person by telephone",
-		               "the attempt has not waited for '%s' alone for three days", name);
+		               "the attempt has not stood still for three days because of '%s'", name);
 	return QB_OK;
 }
 

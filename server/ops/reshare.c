@@ -90,13 +90,12 @@ enum qb_status reshare_check_erased(struct ops *o, struct campaign *c, const str
 {
 	int64_t epoch = wire_entry_int(&a->entry, "epoch");
 	(void)o;
-	if (epoch < 1 || (uint64_t)epoch >= c->epoch)
-		return qb_fail(e, QB_CONFLICT, "share-erased: epoch", NULL, "shares of epoch %lld are not old",
-		               (long long)epoch);
-	if (custodian_index(c, a->entry.by) < 0 && !campaign_former(c, a->entry.by))
-		return qb_fail(e, QB_REFUSED, "share-erased", NULL, "%s held no share, or said so already",
-		               a->entry.by);
-	return QB_OK;
+	for (int i = 0; i < c->n_owed; i++) {
+		if (c->owed[i].epoch == (uint64_t)epoch && strcmp(c->owed[i].party->name, a->entry.by) == 0)
+			return QB_OK;
+	}
+	return qb_fail(e, QB_CONFLICT, "share-erased: epoch", NULL, "%s has no erasure of epoch %lld to state",
+	               a->entry.by, (long long)epoch);
 }
 
 enum qb_status repair_check_request(struct ops *o, struct campaign *c, const struct accepted *a, struct qb_error *e)

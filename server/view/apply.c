@@ -341,7 +341,7 @@ enum qb_status view_apply(struct view *v, const struct entry *leaf, const uint8_
 	if (strcmp(en.type->type, "service-start") == 0)
 		apply_start(v, &en);
 	else if (view_apply_people(v, &en, leaf))
-		st = QB_OK;
+		view_renew_keyholders(v);
 	else if (strcmp(en.type->type, "plan") == 0)
 		st = apply_plan(v, &en, leaf, e);
 	else if (en.has_campaign)

@@ -1,6 +1,6 @@
 /*
- * Key generation in the projection: deals, complaints that anybody can judge again, exclusions, certificates, canaries
- * and rehearsals. Resharing and repair are in reshare.c.
+ * Key generation in the projection: deals, certificates, complaints that anybody can judge again, exclusions. What
+ * follows a certified key is in rehearsals.c and reshare.c.
  */
 #include "server/view/keyholders.h"
 
@@ -11,7 +11,6 @@
 #include "server/base/check.h"
 #include "server/base/text.h"
 #include "server/custody/complaint.h"
-#include "server/view/reshare.h"
 
 static void restart(struct custodian *cu)
 {
@@ -42,27 +41,72 @@ enum qb_status view_draft_keyholders(const struct view *v, struct campaign *c, i
 	c->attempt = 1;
 	c->epoch = 1;
 	c->canary_seq = NO_SEQ;
-	c->attempt_since_ns = now_ns;
+	c->step_ns = now_ns;
 	for (int i = 0; i < c->n; i++) {
 		c->custodian[i].party = view_party_named(v, plan_person(c->plan, DUTY_CUSTODIAN, i)->name);
 		restart(&c->custodian[i]);
 		if (c->custodian[i].party == NULL)
 			return qb_fail(e, QB_REFUSED, "plan: parties", "enrol first", "custodian %d is not enrolled",
 			               i + 1);
+		view_begin_term(c, c->custodian[i].party, now_ns);
 	}
 	return context(c, e);
 }
 
+void view_begin_term(struct campaign *c, const struct view_party *p, int64_t from_ns)
+{
+	c->term = qb_realloc(c->term, (size_t)c->n_terms + 1, sizeof *c->term);
+	c->term[c->n_terms++] = (struct custody_term){p, from_ns, INT64_MAX};
+}
+
+void view_end_term(struct campaign *c, const struct view_party *p, int64_t to_ns)
+{
+	for (int i = 0; i < c->n_terms; i++) {
+		if (c->term[i].party == p && c->term[i].to_ns == INT64_MAX)
+			c->term[i].to_ns = to_ns;
+	}
+}
+
+bool view_all_did(const struct custodian *list, int n, size_t offset)
+{
+	for (int i = 0; i < n; i++) {
+		const int64_t *seq = (const int64_t *)(const void *)((const char *)&list[i] + offset);
+		if (*seq == NO_SEQ)
+			return false;
+	}
+	return true;
+}
+
+static bool any_did(const struct custodian *list, int n, size_t offset)
+{
+	for (int i = 0; i < n; i++) {
+		const int64_t *seq = (const int64_t *)(const void *)((const char *)&list[i] + offset);
+		if (*seq != NO_SEQ)
+			return true;
+	}
+	return false;
+}
+
 /* ---- an attempt that ends without a key ---- */
 
-static void note_failure(struct campaign *c, const char *excluded, const char *why, const char *how)
+void view_note_failure(struct campaign *c, enum attempt_kind kind, uint64_t attempt, const char *excluded,
+                       const char *how, const struct wire_entry *en)
 {
 	c->failure = qb_realloc(c->failure, (size_t)c->n_failures + 1, sizeof *c->failure);
-	struct keygen_failure *f = &c->failure[c->n_failures++];
-	*f = (struct keygen_failure){.attempt = c->attempt};
+	struct custody_failure *f = &c->failure[c->n_failures++];
+	*f = (struct custody_failure){.kind = kind, .attempt = attempt};
 	(void)snprintf(f->excluded, sizeof f->excluded, "%s", excluded);
 	(void)snprintf(f->how, sizeof f->how, "%s", how);
-	(void)snprintf(f->why, sizeof f->why, "%.299s", why);
+	(void)snprintf(f->by, sizeof f->by, "%s", en->by);
+	(void)snprintf(f->why, sizeof f->why, "%.299s", en->why);
+}
+
+static void forget_founders(struct campaign *c)
+{
+	for (int i = 0; i < CUSTODY_MAX; i++)
+		buf_free(&c->founding.deal[i]);
+	buf_free(&c->founding.certificate);
+	c->n_founders = 0;
 }
 
 /* The next attempt, without the person at `out` (from 0), or with everybody when out is -1. */
@@ -71,12 +115,17 @@ static void next_attempt(struct campaign *c, int out, int64_t now_ns)
 	struct qb_error ignored = {0};
 	for (int i = 0; i < c->n; i++)
 		restart(&c->custodian[i]);
+	if (out >= 0)
+		view_end_term(c, c->custodian[out].party, now_ns);
 	for (int i = out; out >= 0 && i + 1 < c->n; i++)
 		c->custodian[i] = c->custodian[i + 1];
 	c->n -= out >= 0;
 	c->attempt++;
-	c->attempt_since_ns = now_ns;
+	c->step_ns = now_ns;
+	c->state = C_DRAFTED;
+	c->canary_seq = NO_SEQ;
 	c->has_group = false;
+	forget_founders(c);
 	c->stalled = c->n < c->k + 1 || context(c, &ignored) != QB_OK;
 }
 
@@ -105,17 +154,28 @@ enum qb_status campaign_judge(const struct campaign *c, const struct wire_entry 
 	return st;
 }
 
+bool campaign_blamed(const struct campaign *c, const char *name)
+{
+	for (int i = 0; i < c->n_failures; i++) {
+		if (strcmp(c->failure[i].excluded, name) == 0)
+			return true;
+	}
+	return false;
+}
+
 int campaign_silent(const struct campaign *c, const char *name, int64_t now_ns)
 {
 	int i = custodian_index(c, name);
-	bool others = true;
-	if (i < 0 || c->state != C_DRAFTED || c->stalled || now_ns - c->attempt_since_ns < KEYGEN_SILENCE_NS)
+	if (i < 0 || c->state > C_CERTIFIED || c->stalled || now_ns - c->step_ns < KEYGEN_SILENCE_NS)
 		return -1;
-	const struct custodian *cu = &c->custodian[i];
-	for (int j = 0; j < c->n; j++)
-		others = others && (j == i || c->custodian[j].deal_seq != NO_SEQ);
-	bool silent = cu->deal_seq == NO_SEQ || (c->has_group && cu->certify_seq == NO_SEQ);
-	return silent && others ? i : -1;
+	bool dealt = view_all_did(c->custodian, c->n, offsetof(struct custodian, deal_seq));
+	size_t due = c->state == C_CERTIFIED ? offsetof(struct custodian, rehearsal_seq)
+	             : dealt                 ? offsetof(struct custodian, certify_seq)
+	                                     : offsetof(struct custodian, deal_seq);
+	/* When the deals make no group nobody can certify: that is no silence. */
+	if (dealt && !c->has_group)
+		return -1;
+	return any_did(c->custodian, c->n, due) && !view_all_did(&c->custodian[i], 1, due) ? i : -1;
 }
 
 /* ---- the steps ---- */
@@ -134,122 +194,109 @@ static void derive_group(struct campaign *c)
 	qb_free(deals);
 }
 
+/* Of the attempt that runs, and not after its end. */
+static bool runs(const struct campaign *c, const struct wire_entry *en)
+{
+	return c->state == C_DRAFTED && !c->stalled && (uint64_t)wire_entry_int(en, "attempt") == c->attempt;
+}
+
 static void apply_deal(struct campaign *c, int i, const struct wire_entry *en, const struct entry *leaf)
 {
 	struct custodian *cu = &c->custodian[i];
+	struct deal *d = QB_NEW(struct deal);
 	struct buf b = {0};
+	struct qb_error ignored = {0};
 	CHECK(base64_decode(wire_entry_text(en, "message"), &b));
-	qb_free(cu->deal);
+	bool good = cu->deal_seq == NO_SEQ && deal_parse(&c->context, b.data, b.len, d, &ignored) == QB_OK &&
+	            d->from == (uint32_t)i + 1 && deal_check(&c->context, d, &ignored) == QB_OK;
+	qb_free(d);
+	if (!good) {
+		buf_free(&b);
+		return;
+	}
 	cu->deal = b.data;
 	cu->deal_n = b.len;
 	cu->deal_seq = cu->commitment_seq = (int64_t)leaf->seq;
 	wire_entry_hex(en, "contribution_commitment", cu->contribution_commitment, 64);
-	for (int j = 0; j < c->n; j++) {
-		if (c->custodian[j].deal_seq == NO_SEQ)
-			return;
-	}
-	derive_group(c);
+	c->step_ns = leaf->received_gps_ns;
+	if (view_all_did(c->custodian, c->n, offsetof(struct custodian, deal_seq)))
+		derive_group(c);
 }
 
-/* What proves the first group for ever: deals and certificate, also when other people hold the shares later. */
-static void keep_founders(struct campaign *c)
+static void apply_certify(struct campaign *c, int i, const struct wire_entry *en, const struct entry *leaf)
+{
+	struct custodian *cu = &c->custodian[i];
+	uint8_t signature[SIGN_BYTES];
+	wire_entry_hex(en, "certificate_signature", signature, SIGN_BYTES);
+	if (!c->has_group || cu->certify_seq != NO_SEQ ||
+	    !keygen_certificate_signed_by(&c->group, c->context.party[i].sign, signature))
+		return;
+	cu->certify_seq = (int64_t)leaf->seq;
+	memcpy(cu->certificate_signature, signature, SIGN_BYTES);
+	c->step_ns = leaf->received_gps_ns;
+}
+
+void view_keep_founders(struct campaign *c)
 {
 	uint8_t signatures[CUSTODY_MAX][SIGN_BYTES];
-	struct buf certificate = {0};
 	if (c->founding.certificate.len > 0)
 		return;
 	for (int i = 0; i < c->n; i++) {
 		buf_put(&c->founding.deal[i], c->custodian[i].deal, c->custodian[i].deal_n);
 		memcpy(signatures[i], c->custodian[i].certificate_signature, SIGN_BYTES);
 	}
-	keygen_certificate_encode(&c->group, (const uint8_t(*)[SIGN_BYTES])signatures, &certificate);
-	c->founding.certificate = certificate;
+	keygen_certificate_encode(&c->group, (const uint8_t(*)[SIGN_BYTES])signatures, &c->founding.certificate);
 	c->n_founders = c->n;
 }
 
-/* Who did not open the canary before this one, and how often in a row. */
-static void count_misses(struct campaign *c)
+static void apply_failed(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
 {
-	for (int i = 0; i < c->n; i++) {
-		struct custodian *cu = &c->custodian[i];
-		cu->missed = cu->rehearsal_seq == NO_SEQ ? cu->missed + 1 : 0;
-		cu->rehearsal_seq = NO_SEQ;
-	}
+	/* Only when every deal is good and yet no group follows; whatever else goes wrong has somebody to blame. */
+	if (c->has_group || !view_all_did(c->custodian, c->n, offsetof(struct custodian, deal_seq)))
+		return;
+	view_note_failure(c, ATTEMPT_KEYGEN, c->attempt, "", "nobody is to blame", en);
+	next_attempt(c, -1, leaf->received_gps_ns);
 }
 
-static void apply_canary(struct campaign *c, const struct wire_entry *en, const struct entry *leaf,
-                         const uint8_t leaf_hash[static 32])
+static void apply_exclusion(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
 {
-	struct buf b = {0};
-	CHECK(base64_decode(wire_entry_text(en, "record"), &b));
-	if (c->state == C_DRAFTED) {
-		c->state = C_CERTIFIED;
-		keep_founders(c);
-	} else if (c->canary_seq != NO_SEQ) {
-		count_misses(c);
-	}
-	qb_free(c->canary);
-	c->canary = b.data;
-	c->canary_n = b.len;
-	c->canary_seq = (int64_t)leaf->seq;
-	c->canary_ns = leaf->received_gps_ns;
-	c->canary_index = campaign_next_canary(c);
-	c->n_canaries++;
-	memcpy(c->canary_leaf, leaf_hash, 32);
+	const char *name = wire_entry_text(en, "name");
+	int i = campaign_silent(c, name, leaf->received_gps_ns);
+	if (i < 0)
+		return;
+	view_note_failure(c, ATTEMPT_KEYGEN, c->attempt, name, "was silent", en);
+	next_attempt(c, i, leaf->received_gps_ns);
+}
+
+static void apply_complaint(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
+{
+	struct qb_error ignored = {0};
+	int guilty;
+	if (campaign_judge(c, en, &guilty, &ignored) != QB_OK)
+		return;
+	const char *name = c->custodian[guilty].party->name;
+	view_note_failure(c, ATTEMPT_KEYGEN, c->attempt, name,
+	                  strcmp(name, en->by) == 0 ? "made a false complaint" : "dealt a bad share", en);
+	next_attempt(c, guilty, leaf->received_gps_ns);
 }
 
 static bool apply_keygen(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
 {
 	const char *type = en->type->type;
-	struct qb_error ignored = {0};
-	int i = custodian_index(c, en->by), guilty;
-	if (strcmp(type, "deal") == 0) {
-		if (i >= 0)
-			apply_deal(c, i, en, leaf);
-	} else if (strcmp(type, "keygen-failed") == 0) {
-		note_failure(c, "", en->why, "nobody is to blame");
-		next_attempt(c, -1, leaf->received_gps_ns);
-	} else if (strcmp(type, "complaint") == 0) {
-		if (campaign_judge(c, en, &guilty, &ignored) == QB_OK) {
-			note_failure(c, c->custodian[guilty].party->name, en->why,
-			             guilty == i ? "made a false complaint" : "dealt a bad share");
-			next_attempt(c, guilty, leaf->received_gps_ns);
-		}
-	} else if (strcmp(type, "exclusion") == 0) {
-		if ((guilty = campaign_silent(c, wire_entry_text(en, "name"), leaf->received_gps_ns)) >= 0) {
-			note_failure(c, wire_entry_text(en, "name"), en->why, "was silent");
-			next_attempt(c, guilty, leaf->received_gps_ns);
-		}
-	} else if (strcmp(type, "certify") == 0) {
-		if (i >= 0) {
-			c->custodian[i].certify_seq = (int64_t)leaf->seq;
-			wire_entry_hex(en, "certificate_signature", c->custodian[i].certificate_signature, 64);
-		}
-	} else {
-		return false;
-	}
-	return true;
-}
-
-bool view_apply_keyholders(const struct view *v, struct campaign *c, const struct wire_entry *en,
-                           const struct entry *leaf, const uint8_t leaf_hash[static 32])
-{
-	const char *type = en->type->type;
 	int i = custodian_index(c, en->by);
-	if (apply_keygen(c, en, leaf) || view_apply_reshare(v, c, en, leaf, leaf_hash))
-		return true;
-	if (strcmp(type, "canary") == 0) {
-		apply_canary(c, en, leaf, leaf_hash);
-	} else if (strcmp(type, "rehearsal-request") == 0) {
-		; /* the canary that follows it says all */
-	} else if (strcmp(type, "rehearsal") == 0) {
-		if (i >= 0) {
-			c->custodian[i].rehearsal_seq = (int64_t)leaf->seq;
-			c->custodian[i].missed = 0;
-		}
-	} else if (strcmp(type, "rehearsed") == 0) {
-		if (c->state == C_CERTIFIED)
-			c->state = C_REHEARSED;
+	if (strcmp(type, "deal") == 0) {
+		if (i >= 0 && runs(c, en))
+			apply_deal(c, i, en, leaf);
+	} else if (strcmp(type, "certify") == 0) {
+		if (i >= 0 && runs(c, en))
+			apply_certify(c, i, en, leaf);
+	} else if (strcmp(type, "keygen-failed") == 0) {
+		if (i >= 0 && runs(c, en))
+			apply_failed(c, en, leaf);
+	} else if (strcmp(type, "complaint") == 0) {
+		apply_complaint(c, en, leaf);
+	} else if (strcmp(type, "exclusion") == 0) {
+		apply_exclusion(c, en, leaf);
 	} else if (strcmp(type, "contribution-commitment") == 0) {
 		if (i >= 0) {
 			c->custodian[i].commitment_seq = (int64_t)leaf->seq;
@@ -264,14 +311,31 @@ bool view_apply_keyholders(const struct view *v, struct campaign *c, const struc
 	return true;
 }
 
+bool view_apply_keyholders(const struct view *v, struct campaign *c, const struct wire_entry *en,
+                           const struct entry *leaf, const uint8_t leaf_hash[static 32])
+{
+	return apply_keygen(c, en, leaf) || view_apply_rehearsals(c, en, leaf, leaf_hash) ||
+	       view_apply_reshare(v, c, en, leaf, leaf_hash);
+}
+
+void view_renew_keyholders(struct view *v)
+{
+	struct qb_error ignored = {0};
+	for (int i = 0; i < v->n_campaigns; i++) {
+		struct campaign *c = v->campaign[i];
+		if (c->state == C_DRAFTED && !c->stalled &&
+		    !any_did(c->custodian, c->n, offsetof(struct custodian, deal_seq)))
+			c->stalled = context(c, &ignored) != QB_OK;
+	}
+}
+
 void view_free_keyholders(struct campaign *c)
 {
-	for (int i = 0; i < CUSTODY_MAX; i++) {
+	for (int i = 0; i < CUSTODY_MAX; i++)
 		qb_free(c->custodian[i].deal);
-		buf_free(&c->founding.deal[i]);
-	}
-	buf_free(&c->founding.certificate);
+	forget_founders(c);
 	qb_free(c->canary);
 	qb_free(c->failure);
+	qb_free(c->term);
 	view_free_reshare(c);
 }

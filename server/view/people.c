@@ -79,8 +79,12 @@ bool view_keys_in_use(const struct view *v, const struct view_party *p)
 {
 	for (int i = 0; i < v->n_campaigns; i++) {
 		const struct campaign *c = v->campaign[i];
-		if (!campaign_over(c) && c->state < C_REHEARSED && custodian_index(c, p->name) >= 0 &&
-		    c->custodian[custodian_index(c, p->name)].deal_seq != NO_SEQ)
+		/* what is dealt is dealt under everybody's keys */
+		bool dealt = false;
+		for (int j = 0; j < c->n; j++)
+			dealt = dealt || c->custodian[j].deal_seq != NO_SEQ;
+		if (!campaign_over(c) && c->state < C_REHEARSED && !c->stalled && dealt &&
+		    custodian_index(c, p->name) >= 0)
 			return true;
 		if (reshare_member(c, p->name) >= 0 || reshare_dealer(c, p->name) >= 0 ||
 		    repair_helper(c, p->name) >= 0 ||

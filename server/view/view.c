@@ -67,14 +67,25 @@ enum wire_role campaign_role(const struct campaign *c, const struct view_party *
 	if (p->role == ROLE_ADMINISTRATOR || p->role == ROLE_AUDITOR)
 		return p->role;
 	if (p->role == ROLE_CUSTODIAN) {
-		bool part =
-		    custodian_index(c, p->name) >= 0 || reshare_member(c, p->name) >= 0 || campaign_former(c, p->name);
+		bool part = custodian_index(c, p->name) >= 0 || reshare_member(c, p->name) >= 0 ||
+		            campaign_owes(c, p->name) != NULL;
 		return part ? ROLE_CUSTODIAN : ROLE_NONE;
 	}
 	const struct plan_person *person = plan_person_named(c->plan, p->name);
 	if (person == NULL || of_duty[person->duty] != p->role)
 		return ROLE_NONE;
 	return p->role;
+}
+
+enum wire_role campaign_role_then(const struct campaign *c, const struct view_party *p, int64_t at_ns)
+{
+	if (p->role != ROLE_CUSTODIAN)
+		return campaign_role(c, p);
+	for (int i = 0; i < c->n_terms; i++) {
+		if (c->term[i].party == p && c->term[i].from_ns <= at_ns && at_ns <= c->term[i].to_ns)
+			return ROLE_CUSTODIAN;
+	}
+	return ROLE_NONE;
 }
 
 void campaign_output_statement(const struct campaign *c, int64_t first_slot, const uint8_t recipes_hash[static 64],
@@ -178,14 +189,6 @@ const struct custodian *campaign_drawers(const struct campaign *c, int *n)
 uint64_t campaign_next_canary(const struct campaign *c)
 {
 	return c->attempt + (uint64_t)c->n_canaries;
-}
-
-int campaign_margin(const struct campaign *c)
-{
-	int opened = 0;
-	for (int i = 0; i < c->n; i++)
-		opened += c->custodian[i].rehearsal_seq != NO_SEQ;
-	return opened - c->k;
 }
 
 const char *campaign_word(const struct campaign *c)

@@ -19,8 +19,8 @@
 
 #define NO_SEQ (-1)
 
-#define VIEW_KEYS_MAX    8 /* former keys of one party */
-#define VIEW_VOUCHES     2 /* colleagues who must vouch before keys that replace lost ones count */
+#define VIEW_KEYS_MAX    32 /* former keys of one party */
+#define VIEW_VOUCHES     2  /* colleagues who must vouch before keys that replace lost ones count */
 #define VIEW_VOUCHES_MAX 8
 
 struct view_key {
@@ -53,19 +53,35 @@ struct custodian {
 	size_t deal_n;
 	uint8_t certificate_signature[SIGN_BYTES];
 	uint8_t contribution_commitment[64]; /* for the current sealing attempt */
-	struct partial rehearsal;
-	int missed; /* rehearsals in a row before the present canary */
+	int unopened;      /* canaries since the newest that this custodian opened, the present one not counted */
+	int64_t opened_ns; /* when that one was sealed */
 };
 
 /* How long an attempt at key generation waits before a silent custodian may be left out. */
 #define KEYGEN_SILENCE_NS (INT64_C(72) * 3600 * INT64_C(1000000000))
 
-/* An attempt at key generation that ended without a key. */
-struct keygen_failure {
-	uint64_t attempt;
-	char excluded[64]; /* "" when nobody is left out */
+/* An attempt that ended without effect. */
+enum attempt_kind { ATTEMPT_KEYGEN, ATTEMPT_RESHARING, ATTEMPT_REPAIR };
+struct custody_failure {
+	enum attempt_kind kind;
+	uint64_t attempt;  /* each kind has its own numbers */
+	char excluded[64]; /* who is left out, or holds and deals no further share; "" when nobody is to blame */
 	char how[40];      /* "dealt a bad share" ... */
+	char by[64];       /* whose entry ended it */
 	char why[300];     /* as the entry says */
+};
+
+/* A stretch of time in which somebody was a custodian of the campaign. */
+struct custody_term {
+	const struct view_party *party;
+	int64_t from_ns, to_ns; /* to_ns: INT64_MAX while in office */
+};
+
+/* Somebody who has still to state that a share is erased. */
+struct erasure_owed {
+	const struct view_party *party;
+	uint64_t epoch; /* of the share; 0: what a resharing dealt that came to nothing */
+	int64_t seq;    /* of the entry since which it is owed */
 };
 
 /* What proves a group to anybody: the signed messages and the certificate. */
@@ -87,6 +103,7 @@ struct reshare_view {
 	bool has_group;
 	int64_t canary_seq;
 	uint64_t canary_index;
+	int64_t canary_ns;
 	uint8_t canary_leaf[32];
 	struct buf canary; /* owned */
 };
@@ -155,10 +172,12 @@ struct campaign {
 	int n, k;
 	struct custodian custodian[CUSTODY_MAX];
 	uint64_t attempt, sealing_attempt;
-	bool stalled;                   /* too few custodians are left for a key generation */
-	int64_t attempt_since_ns;       /* when the attempt began */
-	struct keygen_failure *failure; /* owned */
+	bool stalled;                    /* too few custodians are left for a key generation */
+	int64_t step_ns;                 /* when the attempt began, or anybody last did a step of it */
+	struct custody_failure *failure; /* owned */
 	int n_failures;
+	struct custody_term *term; /* owned */
+	int n_terms;
 	uint64_t epoch; /* 1, and one more for each resharing */
 	struct group_proof founding;
 	struct custodian
@@ -166,9 +185,9 @@ struct campaign {
 	int n_founders;
 	struct epoch_proof *later; /* owned; epoch - 1 of them */
 	struct reshare_view reshare;
-	uint64_t reshare_attempt;                     /* of the next or running one, from 1 */
-	const struct view_party *former[CUSTODY_MAX]; /* replaced custodians who have not stated yet that they erased */
-	int n_former;
+	uint64_t reshare_attempt;  /* of the next or running one, from 1 */
+	struct erasure_owed *owed; /* owned */
+	int n_owed;
 	struct repair_view repair;
 	uint64_t repair_attempt;
 	int n_canaries;
@@ -269,6 +288,8 @@ int station_of_driver(const struct campaign *c, const char *name);
 struct opening *opening_find(struct campaign *c, const char *id_hex);
 /* The party's role in the campaign; ROLE_NONE when it has none. */
 enum wire_role campaign_role(const struct campaign *c, const struct view_party *p);
+/* The role it had at a time: custodians come and go. */
+enum wire_role campaign_role_then(const struct campaign *c, const struct view_party *p, int64_t at_ns);
 /*
  * What a sealer's host signed at the end of a run (custody/seed.h), from what the ledger fixed: the records of the
  * slots from first_slot on.
@@ -282,6 +303,11 @@ const char *campaign_state_word(enum campaign_state s);
 uint64_t campaign_next_canary(const struct campaign *c);
 /* How many opened the newest canary, less how many an opening needs. */
 int campaign_margin(const struct campaign *c);
+/*
+ * How many rehearsals in a row the custodian at i has missed, the present canary not counted: canaries not opened, but
+ * no more than whole intervals of the plan have passed, so that canaries on demand make nobody look absent.
+ */
+int campaign_missed(const struct campaign *c, int i);
 /* The custodians of epoch 1, whose contributions the draw is made of. */
 const struct custodian *campaign_drawers(const struct campaign *c, int *n);
 /*
@@ -306,12 +332,18 @@ const char *campaign_word(const struct campaign *c);
  */
 enum qb_status campaign_judge(const struct campaign *c, const struct wire_entry *en, int *guilty,
                               struct qb_error *e) QB_MUST_USE;
-/* The position of a custodian who may be left out for silence: the attempt waits for him alone, for long. -1: no. */
+/*
+ * The position of a custodian who may be left out for silence: somebody has done the step that is due, they have not,
+ * and nobody has done any for KEYGEN_SILENCE_NS. -1: no.
+ */
 int campaign_silent(const struct campaign *c, const char *name, int64_t now_ns);
-/* A place in the new set of a resharing under way, from 0, or -1; a replaced custodian who has still to erase. */
+/* Whether a complaint or silence put the blame for a failed attempt on them: they get no share of this key any more. */
+bool campaign_blamed(const struct campaign *c, const char *name);
+/* A place in the new set of a resharing under way, from 0, or -1. */
 int reshare_member(const struct campaign *c, const char *name);
 int reshare_dealer(const struct campaign *c, const char *name); /* the dealer's place in the list */
-bool campaign_former(const struct campaign *c, const char *name);
+/* The first erasure that the party has still to state, or NULL. */
+const struct erasure_owed *campaign_owes(const struct campaign *c, const char *name);
 int repair_helper(const struct campaign *c, const char *name); /* the helper's place in the list, or -1 */
 /* What a request would start, with every rule checked. Errors: QB_CONFLICT, QB_REFUSED, QB_RANGE, QB_CRYPTO */
 enum qb_status reshare_prepare(const struct view *v, const struct campaign *c, const struct wire_entry *en,
