@@ -133,6 +133,8 @@ enum qb_status verify_ending(struct verified *v, struct qb_error *e)
 		               (long long)json_integer_value(json_object_get(j, "slots_unplayed")),
 		               (long long)k->n_slots, k->ended_why);
 		json_decref(j);
+	} else if (st == QB_OK) {
+		verify_note(v, "closed after its end, by entry %lld", (long long)k->closing_seq);
 	}
 	return st;
 }

@@ -172,6 +172,7 @@ static enum qb_status check_schema(struct reader *r)
 	sqlite3_finalize(s);
 	for (const struct bundle_table *t = bundle_tables; t->name != NULL; t++)
 		known++;
+	r->b->n_tables = known;
 	return good && code == SQLITE_DONE && found == known
 	           ? QB_OK
 	           : bad(r, "is no bundle: its tables are not those of the format");
@@ -187,6 +188,16 @@ static int64_t pragma(struct reader *r, const char *sql)
 	return v;
 }
 
+/* Every page is used once, every row and index entry in its place; a file made in one go has no page to spare. */
+static bool whole(struct reader *r)
+{
+	sqlite3_stmt *s = NULL;
+	bool good = sqlite3_prepare_v2(r->db, "PRAGMA integrity_check(1)", -1, &s, NULL) == SQLITE_OK &&
+	            sqlite3_step(s) == SQLITE_ROW && strcmp((const char *)sqlite3_column_text(s, 0), "ok") == 0;
+	sqlite3_finalize(s);
+	return good && pragma(r, "PRAGMA freelist_count") == 0;
+}
+
 /*
  * SQLite forgives a last page that is cut; a bundle has every byte of every page, and none behind them. The mark of the
  * format stands in the header.
@@ -197,6 +208,9 @@ static enum qb_status check_size(struct reader *r, const char *path)
 	int64_t pages = pragma(r, "PRAGMA page_count"), size = pragma(r, "PRAGMA page_size");
 	if (stat(path, &f) != 0 || pages <= 0 || size <= 0 || f.st_size != pages * size)
 		return bad(r, "is truncated, or something was put behind it");
+	r->b->bytes = f.st_size;
+	if (!whole(r))
+		return bad(r, "is damaged");
 	if (pragma(r, "PRAGMA application_id") != BUNDLE_APPLICATION_ID)
 		return bad(r, "is no bundle: it does not carry the mark of one");
 	return QB_OK;

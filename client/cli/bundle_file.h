@@ -21,6 +21,8 @@ struct bundle_blob {
 };
 struct bundle {
 	uint8_t campaign[16];
+	int64_t bytes; /* of the file */
+	int n_tables;
 	struct buf head;
 	struct buf *frame; /* leaves in order */
 	uint64_t n_frames;

@@ -122,11 +122,13 @@ enum qb_status verify_guesses(struct verified *v, struct qb_error *e)
 		unreadable += !guess_read(v, &g[i], &doc);
 		json_decref(doc);
 	}
-	if (st == QB_OK && n > 0)
-		(void)snprintf(v->note, sizeof v->note,
-		               "%zu guesses, %zu of them in the ledger before the slot, the others by the service's "
-		               "promise; %zu can't be read",
-		               n, before, unreadable);
+	if (n == 0)
+		verify_note(v, "no guesses");
+	else
+		verify_note(v,
+		            "%zu guesses, %zu of them in the ledger before the slot, the others by the service's "
+		            "promise; %zu can't be read",
+		            n, before, unreadable);
 	qb_free(g);
 	return st;
 }

@@ -1,5 +1,5 @@
 /* Re-derivation: the seed from the contributions, the records from the seed, the drills from the plan and the seed. */
-#include <stdio.h>
+#include <inttypes.h>
 #include <string.h>
 
 #include "client/cli/bundle_verify.h"
@@ -47,6 +47,8 @@ enum qb_status verify_seed(struct verified *v, struct qb_error *e)
 		v->seed = seed_draw(v->k->context.ctx, v->k->sealing_attempt, 0,
 		                    (const uint8_t(*)[CONTRIBUTION_BYTES])given, (uint32_t)n);
 		v->audit_seed = seed_audit(v->seed);
+		verify_note(v, "%d contributions: the service's and %d custodians'; sealing attempt %" PRIu64, n + 1, n,
+		            v->k->sealing_attempt);
 	}
 	json_decref(doc);
 	return st;
@@ -79,6 +81,7 @@ enum qb_status verify_reseal(struct verified *v, struct qb_error *e)
 		wipe(r, sizeof r);
 		buf_free(&again);
 	}
+	verify_note(v, "%" PRId64 " records of slots and the seed's", v->k->n_slots);
 	return st;
 }
 
@@ -167,6 +170,8 @@ enum qb_status verify_redraw(struct verified *v, struct qb_error *e)
 		if (st == QB_OK)
 			st = check_recipes(v, sealed, e);
 	}
+	verify_note(v, "%" PRId64 " slots%s, and %zu recipes made again", v->k->n_slots,
+	            empty ? ", empty by design" : "", v->bundle->n_recipes);
 	qb_free(sealed);
 	qb_free(again);
 	return st;

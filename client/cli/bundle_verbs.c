@@ -27,42 +27,61 @@ static enum qb_status run_export(struct cli_call *c)
 	return st;
 }
 
+static const char *check_word(const struct verify_check *x)
+{
+	return !x->done ? "not judged" : x->holds ? "PASS" : "FAIL";
+}
+
 static void print_checks(struct cli_call *c, const struct verified *v)
 {
-	json_t *list = json_array();
 	for (int i = 0; i < v->n_checks; i++) {
 		const struct verify_check *x = &v->check[i];
-		const char *word = !x->done ? "not judged" : x->holds ? "holds" : "FAILS";
-		if (!cli_wants_json(c)) {
-			cli_print(c, "%-10s  %s\n            by: %s\n", word, x->property, x->how);
-			if (x->detail[0] != '\0')
-				cli_print(c, "            %s\n", x->detail);
-		}
-		json_t *j = json_object();
-		json_object_set_new(j, "property", json_string(x->property));
-		json_object_set_new(j, "how", json_string(x->how));
-		json_object_set_new(j, "result", json_string(word));
-		json_object_set_new(j, "detail", json_string(x->detail));
-		json_array_append_new(list, j);
+		cli_print(c, "%-10s  %2d. %s\n", check_word(x), i + 1, x->property);
+		cli_print(c, "                checked by: %s\n", x->how);
+		if (x->detail[0] != '\0')
+			cli_print(c, "                %s %s\n", x->holds ? "found:" : "why:", x->detail);
 	}
-	if (cli_wants_json(c)) {
-		json_t *doc = json_object();
-		json_object_set_new(doc, "verified", json_boolean(v->all));
-		json_object_set(doc, "checks", list);
-		cli_json(c, doc);
-		json_decref(doc);
-	} else if (v->all) {
+	cli_print(c, "\nNot checked, since no bundle can show it:\n");
+	for (const char *const *s = verify_not_checked; *s != NULL; s++)
+		cli_print(c, "  - %s\n", *s);
+	cli_print(c, "\n");
+	if (v->all)
 		cli_print(c, "VERIFIED: campaign %s, %lld slots, %zu records, ledger of %llu entries\n", v->k->name,
 		          (long long)v->k->n_slots, v->bundle->records.n, (unsigned long long)v->follow.n);
+	else
+		cli_print(c, "NOT VERIFIED: do not rely on this bundle\n");
+}
+
+static void json_checks(struct cli_call *c, const struct verified *v)
+{
+	json_t *doc = json_object(), *list = json_array(), *open = json_array();
+	for (int i = 0; i < v->n_checks; i++) {
+		const struct verify_check *x = &v->check[i];
+		json_t *j = json_object();
+		json_object_set_new(j, "number", json_integer(i + 1));
+		json_object_set_new(j, "property", json_string(x->property));
+		json_object_set_new(j, "checked_by", json_string(x->how));
+		json_object_set_new(j, "result", json_string(check_word(x)));
+		json_object_set_new(j, x->holds || !x->done ? "found" : "why", json_string(x->detail));
+		json_array_append_new(list, j);
 	}
-	json_decref(list);
+	for (const char *const *s = verify_not_checked; *s != NULL; s++)
+		json_array_append_new(open, json_string(*s));
+	json_object_set_new(doc, "verified", json_boolean(v->all));
+	json_object_set_new(doc, "campaign", v->k != NULL ? json_string(v->k->name) : json_null());
+	json_object_set_new(doc, "checks", list);
+	json_object_set_new(doc, "not_checked", open);
+	cli_json(c, doc);
+	json_decref(doc);
 }
 
 static enum qb_status run_verify(struct cli_call *c)
 {
 	struct verified *v = NULL;
 	enum qb_status st = bundle_verify(cli_arg(c, 0), &v, &c->error);
-	if (v != NULL)
+	if (v != NULL && cli_wants_json(c))
+		json_checks(c, v);
+	else if (v != NULL)
 		print_checks(c, v);
 	verified_free(&v);
 	return st;

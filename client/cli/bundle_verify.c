@@ -1,4 +1,7 @@
-/* The checklist: ledger, heads, certificate, records, hidden entries, openings; re-derivation is in bundle_redraw.c. */
+/*
+ * The checks of what stands in a bundle: ledger, head, key, records, hidden entries, openings. The list that they are
+ * on is in bundle_checklist.c, the order of the steps in bundle_order.c, what follows from the seed in bundle_redraw.c.
+ */
 #include "client/cli/bundle_verify.h"
 
 #include <inttypes.h>
@@ -9,14 +12,46 @@
 #include "server/base/alloc.h"
 #include "server/base/text.h"
 
-typedef enum qb_status check_fn(struct verified *v, struct qb_error *e);
-
 static enum qb_status no(struct qb_error *e, const char *what)
 {
 	return qb_fail(e, QB_NO, "bundle", "do not rely on it; ask the custodians for their mirrors", "%s", what);
 }
 
-static enum qb_status check_ledger(struct verified *v, struct qb_error *e)
+/* What the file says about itself: cheap, and it finds nearly every accident before a signature is looked at. */
+enum qb_status verify_fingerprints(struct verified *v, struct qb_error *e)
+{
+	const struct bundle *b = v->bundle;
+	static const size_t field[] = {RECORD_HEADER_BYTES, POINT_BYTES, POINT_BYTES, SCALAR_BYTES, SCALAR_BYTES};
+	struct head *h = QB_NEW(struct head);
+	struct tree_range range = {0};
+	struct ledger_hash leaf, root;
+	enum qb_status st = head_parse((const char *)b->head.data, b->head.len, h, e);
+	for (uint64_t i = 0; i < b->n_frames; i++) {
+		hash_leaf(&leaf, b->frame[i].data, b->frame[i].len);
+		tree_append(&range, &leaf);
+	}
+	tree_root(&range, &root);
+	if (st == QB_OK && (h->size != b->n_frames || !hash_equal(&root, &h->root)))
+		st = no(e, "the leaves do not have the root of the signed head");
+	for (size_t i = 0; st == QB_OK && i < b->records.n; i++) {
+		const struct buf *x = &b->records.item[i].bytes;
+		struct transcript t;
+		uint8_t id[64];
+		size_t at = 0;
+		transcript_begin(&t, "quietbell/1/record/id");
+		for (size_t f = 0; f < sizeof field / sizeof field[0] && at + field[f] <= x->len; at += field[f++])
+			transcript_field(&t, x->data + at, field[f]);
+		transcript_field(&t, x->data + at, x->len - at);
+		transcript_end(&t, id);
+		if (memcmp(id, b->record_id[i], 64) != 0)
+			st = no(e, "a record is not the one that is listed");
+	}
+	verify_note(v, "the root of %" PRIu64 " entries, %zu records", b->n_frames, b->records.n);
+	qb_free(h);
+	return st;
+}
+
+enum qb_status verify_ledger(struct verified *v, struct qb_error *e)
 {
 	enum qb_status st = QB_OK;
 	for (uint64_t i = 0; st == QB_OK && i < v->bundle->n_frames; i++)
@@ -24,15 +59,23 @@ static enum qb_status check_ledger(struct verified *v, struct qb_error *e)
 	char id[33];
 	hex_encode(id, v->bundle->campaign, 16);
 	v->k = st == QB_OK ? view_campaign(&v->follow.view, id) : NULL;
+	verify_note(v, "%" PRIu64 " entries of %d parties", v->follow.n, v->follow.view.n_parties);
 	return st == QB_OK && v->k == NULL ? no(e, "the ledger does not have the bundle's campaign") : st;
 }
 
-static enum qb_status check_head(struct verified *v, struct qb_error *e)
+static void add_name(char list[static 200], const char *name)
+{
+	size_t n = strlen(list);
+	(void)snprintf(list + n, 200 - n, "%s%s", n > 0 ? ", " : "", name);
+}
+
+enum qb_status verify_head(struct verified *v, struct qb_error *e)
 {
 	struct head *h = QB_NEW(struct head);
 	struct ledger_hash root;
 	size_t valid = 0;
 	bool counted[CUSTODY_MAX] = {false};
+	char names[200] = "";
 	enum qb_status st = head_parse((const char *)v->bundle->head.data, v->bundle->head.len, h, e);
 	if (st == QB_OK)
 		st = head_verify(h, v->follow.view.service_key, NULL, 0, NULL, e);
@@ -51,6 +94,7 @@ static enum qb_status check_head(struct verified *v, struct qb_error *e)
 		if (who >= 0 && !counted[who]) {
 			counted[who] = true;
 			valid++;
+			add_name(names, p->name);
 		}
 		buf_free(&text);
 	}
@@ -59,13 +103,18 @@ static enum qb_status check_head(struct verified *v, struct qb_error *e)
 		st = no(e, "the leaves do not have the root of the signed head");
 	if (st == QB_OK && valid < head_quorum((size_t)v->k->n))
 		st = no(e, "too few custodians cosigned the head");
+	verify_note(v, "%zu of %d custodians signed (%s), %zu are needed", valid, v->k->n, names,
+	            head_quorum((size_t)v->k->n));
 	qb_free(h);
 	return st;
 }
 
-static enum qb_status check_certificate(struct verified *v, struct qb_error *e)
+enum qb_status verify_key(struct verified *v, struct qb_error *e)
 {
-	return campaign_certified_group(v->k, &v->group, e);
+	enum qb_status st = campaign_certified_group(v->k, &v->group, e);
+	verify_note(v, "%d custodians, %d needed; key generations that failed before: %d; resharings: %d", v->k->n,
+	            v->k->k, v->k->n_failures, (int)v->k->epoch - 1);
+	return st;
 }
 
 static int compare_ids(const void *a, const void *b)
@@ -118,10 +167,10 @@ static enum qb_status filed_ids(const struct verified *v, struct ids *out, struc
 }
 
 /* Every record is the one that the ledger fixed, and every one that the ledger fixed is there. */
-static enum qb_status check_records(struct verified *v, struct qb_error *e)
+enum qb_status verify_records(struct verified *v, struct qb_error *e)
 {
 	struct ids filed;
-	int64_t slots = 0, others = 0, seeds = 0;
+	int64_t slots = 0, others = 0, seeds = 0, notes = 0;
 	enum qb_status st = filed_ids(v, &filed, e);
 	for (size_t i = 0; st == QB_OK && i < v->bundle->records.n; i++) {
 		struct sealed_item *x = &v->bundle->records.item[i];
@@ -150,9 +199,12 @@ static enum qb_status check_records(struct verified *v, struct qb_error *e)
 		slots += x->rec.header.type == RECORD_SLOT;
 		seeds += x->rec.header.type == RECORD_SEED;
 		others += !own;
+		notes += note;
 	}
 	if (st == QB_OK && (slots != v->k->n_slots || seeds != 1 || others != (int64_t)filed.n))
 		st = no(e, "records that the ledger fixed are missing, or stand twice");
+	verify_note(v, "%" PRId64 " slots, the seed, %" PRId64 " notes and reports of drivers, %" PRId64 " others",
+	            slots, notes, others - notes);
 	qb_free(filed.id);
 	return st;
 }
@@ -174,6 +226,8 @@ static enum qb_status check_one_hidden(struct verified *v, const struct bundle_h
 	enum qb_status st = entry_decode(v->follow.frame[h->seq].data, v->follow.frame[h->seq].len, &leaf, e);
 	if (st == QB_OK && (leaf.kind != ENTRY_HIDDEN || memcmp(leaf.body, commitment, 64) != 0))
 		st = no(e, "a hidden entry's commitment is not in the ledger where it should be");
+	if (st == QB_OK && (h->seq >= v->k->closing_seq || leaf.received_gps_ns < h->received_gps_ns))
+		st = no(e, "a hidden entry came after the closing, or stands in the ledger before it was received");
 	if (st == QB_OK)
 		st = entry_promise_verify(&p, v->follow.view.service_key, e);
 	if (st == QB_OK &&
@@ -195,7 +249,7 @@ static int by_seq(const void *a, const void *b)
 }
 
 /* None is left out: at the closing the service fixed how many there are, and which. */
-static enum qb_status check_hidden(struct verified *v, struct qb_error *e)
+enum qb_status verify_hidden(struct verified *v, struct qb_error *e)
 {
 	size_t n = v->bundle->n_hidden;
 	const struct bundle_hidden **sorted = QB_NEW_ARRAY(const struct bundle_hidden *, n);
@@ -212,13 +266,14 @@ static enum qb_status check_hidden(struct verified *v, struct qb_error *e)
 	view_hidden_summary((const uint8_t(*)[64])commitments, n, hash);
 	if (st == QB_OK && (v->k->hidden_count != (int64_t)n || memcmp(hash, v->k->hidden_hash, 64) != 0))
 		st = no(e, "hidden entries that were fixed at the closing are missing, or there are others");
+	verify_note(v, "%zu entries, as many as were fixed at the closing", n);
 	qb_free(sorted);
 	qb_free(commitments);
 	return st;
 }
 
 /* Prekeys and recipes against the hashes that were entered before anything was played. */
-static enum qb_status check_recipes(struct verified *v, struct qb_error *e)
+enum qb_status verify_recipes(struct verified *v, struct qb_error *e)
 {
 	struct transcript all;
 	uint8_t sealed[64], hash[64], want[64];
@@ -266,6 +321,7 @@ static enum qb_status check_recipes(struct verified *v, struct qb_error *e)
 		}
 		wire_entry_free(&en);
 	}
+	verify_note(v, "%zu recipes, %zu lists of one-time keys", v->bundle->n_recipes, v->bundle->n_prekeys);
 	return st == QB_OK && prekeys != v->bundle->n_prekeys ? no(e, "one-time keys that no driver left") : st;
 }
 
@@ -277,8 +333,9 @@ static void note_shut(struct verified *v)
 		shut += !v->opens[r];
 	if (shut == 0)
 		return;
-	(void)snprintf(v->note, sizeof v->note, "%zu of %zu records were sealed so that nothing opens them:", shut,
-	               v->bundle->records.n);
+	at = strlen(v->note);
+	(void)snprintf(v->note + at, sizeof v->note - at,
+	               "; %zu of %zu records were sealed so that nothing opens them:", shut, v->bundle->records.n);
 	for (size_t r = 0; r < v->bundle->records.n; r++) {
 		const struct sealed_item *x = &v->bundle->records.item[r];
 		at = strlen(v->note);
@@ -290,13 +347,22 @@ static void note_shut(struct verified *v)
 	v->note[at - 1] = v->note[at - 1] == ';' ? '\0' : v->note[at - 1];
 }
 
+static bool is_entered(const struct bundle_blob *set, const struct wire_entry *en)
+{
+	uint8_t hash[64], entered[64];
+	blake2b_512(hash, set->bytes.data, set->bytes.len);
+	wire_entry_hex(en, "shares_hash", entered, 64);
+	return memcmp(hash, entered, 64) == 0;
+}
+
 /* k custodians' partial openings, each with its proof, combined; the contents must hash to what was announced. */
-static enum qb_status check_opening(struct verified *v, struct qb_error *e)
+enum qb_status verify_opening(struct verified *v, struct qb_error *e)
 {
 	const struct bundle_blob *set[CUSTODY_MAX];
 	size_t n = 0, records = v->bundle->records.n;
 	struct transcript t;
 	uint8_t hash[64], given[64], id[64];
+	char names[200] = "";
 	enum qb_status st = QB_OK;
 	for (int i = 0; i < v->k->n_openings; i++) {
 		if (v->k->opening[i].scope == SCOPE_FULL && v->k->opening[i].opened)
@@ -310,6 +376,7 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 		    x->bytes.len != records * PARTIAL_BYTES || n == CUSTODY_MAX)
 			return no(e, "a set of partial openings is of another opening or incomplete");
 		set[n++] = x;
+		add_name(names, x->name);
 	}
 	if (n < (size_t)v->k->k)
 		return no(e, "too few custodians opened");
@@ -348,92 +415,26 @@ static enum qb_status check_opening(struct verified *v, struct qb_error *e)
 			if (memcmp(hash, given, 64) != 0)
 				st = no(e, "the contents are not those that the service announced");
 		}
+		for (size_t j = 0; ours && strcmp(en.type->type, "opening-shares") == 0 && j < n; j++) {
+			if (strcmp(set[j]->name, en.by) == 0 && !is_entered(set[j], &en))
+				st = no(e, "partial openings are not those that their custodian entered");
+		}
 		wire_entry_free(&en);
 	}
+	verify_note(v, "%zu partial openings by %zu custodians (%s), %d are needed", n * records, n, names, v->k->k);
 	note_shut(v);
 	return st;
 }
 
-static enum qb_status check_sealer(struct verified *v, struct qb_error *e)
+enum qb_status verify_sealer(struct verified *v, struct qb_error *e)
 {
-	if (!v->k->plan->has_sealer_host)
+	if (!v->k->plan->has_sealer_host) {
+		verify_note(v, "the plan names no machine for it: it ran on the service's own");
 		return QB_OK;
+	}
+	verify_note(v, "two signatures of the machine that the plan names");
 	if (!v->k->host_signed_key || !v->k->host_signed_output)
 		return no(e, v->k->host_signed_key ? "the plan's sealer host did not sign what was sealed"
 		                                   : "the plan's sealer host did not sign the sealer's key");
 	return QB_OK;
-}
-
-static const struct {
-	const char *property, *how;
-	check_fn *fn;
-} checks[] = {
-    {"the ledger is whole and every entry is its author's",
-     "place, format, Ed25519 signature and meaning of every leaf", check_ledger},
-    {"one history, held by the custodians", "Merkle root, the service's signature, a quorum of cosignatures",
-     check_head},
-    {"the group key belongs to all custodians together", "recomputed from the signed deals, certified by all",
-     check_certificate},
-    {"the sealer ran where the plan says", "signatures of the plan's sealer host, if it names one", check_sealer},
-    {"no record was added, altered, exchanged or left out", "proof of each record, and its id in the ledger",
-     check_records},
-    {"hidden entries are what was promised at the time", "commitments, promises and authors' signatures", check_hidden},
-    {"recipes and one-time keys are those of the sealing", "hashes entered before anything was played", check_recipes},
-    {"enough custodians opened, each correctly", "proof of each partial opening, combination, hash of all contents",
-     check_opening},
-    {"the campaign ended when and as the ledger says", "the closing entry, its author, time and reason", verify_ending},
-    {"every guess came before its slot", "promised times, places in the ledger, the slot in each sealed guess",
-     verify_guesses},
-    {"nobody chose the draw", "every contribution fits the commitment made before it; the seed follows", verify_seed},
-    {"the opened contents are what was sealed", "sealed again from the seed: byte for byte the same records",
-     verify_reseal},
-    {"every drill is what the plan draws from the seed", "drawn again: all numbers agree to 1e-6", verify_redraw},
-};
-
-enum qb_status bundle_verify(const char *path, struct verified **out, struct qb_error *e)
-{
-	struct verified *v = QB_NEW(struct verified);
-	enum qb_status st = bundle_read(path, &v->bundle, e);
-	*out = NULL;
-	if (st != QB_OK) {
-		qb_free(v);
-		return st;
-	}
-	v->all = true;
-	for (size_t i = 0; i < sizeof checks / sizeof checks[0]; i++) {
-		struct verify_check *c = &v->check[v->n_checks++];
-		struct qb_error one = {0};
-		char line[1000];
-		*c = (struct verify_check){.property = checks[i].property, .how = checks[i].how};
-		if (!v->all)
-			continue; /* what rests on a broken property is not judged */
-		c->done = true;
-		c->holds = checks[i].fn(v, &one) == QB_OK;
-		(void)snprintf(c->detail, sizeof c->detail, "%.399s",
-		               c->holds ? v->note : qb_error_line(&one, line, sizeof line));
-		v->note[0] = '\0';
-		if (!c->holds) {
-			v->all = false;
-			st = qb_fail(e, QB_NO, "bundle", "do not rely on it", "not verified: %s: %.250s", c->property,
-			             c->detail);
-		}
-	}
-	*out = v;
-	return st;
-}
-
-void verified_free(struct verified **vp)
-{
-	struct verified *v = *vp;
-	if (v == NULL)
-		return;
-	for (size_t i = 0; v->content != NULL && i < v->bundle->records.n; i++)
-		buf_wipe(&v->content[i]);
-	qb_free(v->content);
-	qb_free(v->opens);
-	secret_free(&v->seed);
-	follow_close(&v->follow);
-	bundle_free(&v->bundle);
-	qb_free(v);
-	*vp = NULL;
 }

@@ -9,15 +9,15 @@
 #include "server/audit/input.h"
 #include "server/drill/truth.h"
 
-#define VERIFY_CHECKS 16
+#define VERIFY_CHECKS 20
 
 struct verify_check {
 	const char *property, *how;
 	bool done, holds;
-	char detail[400]; /* why not, or a count */
+	char detail[400]; /* counts, or why not */
 };
 struct verified {
-	struct bundle *bundle; /* owned */
+	struct bundle *bundle; /* owned; NULL when the file is none */
 	struct follow follow;  /* the ledger, verified leaf by leaf */
 	struct campaign *k;    /* in follow.view */
 	struct custody_group group;
@@ -32,11 +32,29 @@ struct verified {
 	char note[400]; /* what a check that holds has to add; taken into its detail */
 };
 /*
- * Returned: *out    also when a property fails (out->all is false); NULL only when the file can't be read as a bundle
+ * The whole list, up to the first property that fails: what rests on a broken property is not judged.
+ *
+ * Returned: *out    also when a property fails (out->all is false); NULL only when the file can't be opened
  * Errors:   QB_NO   something does not hold (e says the first); QB_IO
  */
 enum qb_status bundle_verify(const char *path, struct verified **out, struct qb_error *e) QB_MUST_USE;
 void verified_free(struct verified **v);
+/* What no verifier of a bundle can see, as full sentences; NULL-ended. */
+extern const char *const verify_not_checked[];
+
+/* One check each (bundle_verify.c, bundle_order.c). Errors: QB_NO with what is wrong. */
+enum qb_status verify_fingerprints(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_ledger(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_head(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_order(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_key(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_sealer(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_records(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_hidden(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_recipes(struct verified *v, struct qb_error *e) QB_MUST_USE;
+enum qb_status verify_opening(struct verified *v, struct qb_error *e) QB_MUST_USE;
+/* What the check has to say when it holds. */
+void verify_note(struct verified *v, const char *fmt, ...) QB_PRINTF(2, 3);
 
 /* Re-derivation from the seed (bundle_redraw.c). Errors: QB_NO with what differs. */
 enum qb_status verify_seed(struct verified *v, struct qb_error *e) QB_MUST_USE;

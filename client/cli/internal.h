@@ -31,7 +31,7 @@ struct cli_call {
 };
 
 extern const struct cli_option cli_common_options[];
-extern const struct cli_verb *const cli_tables[]; /* NULL-ended; main.c */
+extern const struct cli_verb *const cli_tables[]; /* NULL-ended; tables.c */
 
 /* The home; create: make the directory. */
 enum qb_status cli_home(struct cli_call *c, bool create) QB_MUST_USE;

@@ -102,3 +102,12 @@ seal_short() {
 	until_true 60 as admin campaign seal fells-short || return 1
 	for p in $joins; do wait "$p" || return 1; done
 }
+# open_and_export CAMPAIGN FILE: closes, opens with the first two custodians, has the head cosigned, fetches the bundle
+open_and_export() {
+	as asha campaign close "$1" --reason "the end" || return 1
+	as asha opening request "$1" --all --reason review || return 1
+	opening=$(head -1 "$work/out")
+	for p in ines okoro; do as $p opening join "$1" "$opening" --yes || return 1; done
+	for p in ines okoro marchetti; do as $p ledger head || return 1; done
+	as asha bundle export "$1" "$2"
+}

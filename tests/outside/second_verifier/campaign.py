@@ -1,12 +1,11 @@
 """One campaign as its entries tell it: the plan, the life from drafted to opened in its order, who may say what. A new
 entry type gets a method on_<type>; a type without one is counted in `unjudged`, and the checklist names it."""
-import base64
-import binascii
 import collections
 
 import yaml
 
-from custody import CANARY, REHEARSAL, Deal, Partial, Record, generate, keygen_context, open_with
+from custody import REHEARSAL, Deal, Partial, generate, keygen_context, open_with
+from holders import Holder, Later, unbase64
 from ledger import gps_ns, utc_ns
 from primitives import T, check_signed
 from ristretto import Refused
@@ -28,13 +27,6 @@ def duration_ns(text):
 
 def instant_ns(text):
     return utc_ns(text) if isinstance(text, str) and 'T' in text else gps_ns(str(text))
-
-
-def unbase64(text, what):
-    try:
-        return base64.b64decode(text, validate=True)
-    except binascii.Error:
-        raise Refused('%s is not base64' % what) from None
 
 
 class TextLoader(yaml.SafeLoader):
@@ -75,15 +67,9 @@ class Plan:
             raise Refused('the plan breaks its own rules')
 
 
-class Holder:
-    """A custodian in office in the present attempt."""
-
-    def __init__(self, party):
-        self.party, self.deal, self.certified, self.rehearsal = party, None, False, None
-
-
-class Campaign:
+class Campaign(Later):
     def __init__(self, leaf, e, people):
+        super().__init__()
         self.id = T('campaign/id', leaf.body)[:16]
         self.people, self.plan, self.state = people, Plan(e['plan'], e['files']), 'drafted'
         self.holders = [Holder(people.by_name[n]) for n in self.plan.custodians]
@@ -109,7 +95,11 @@ class Campaign:
     # ---- common rules ----
 
     def takes_part(self, party):
-        return party.role == 'administrator' or party.name in self.plan.duty.get(party.role, [])
+        names = self.plan.duty.get(party.role, [])
+        if party.role == 'custodian' and self.group is not None:
+            coming = self.resharing.members if self.resharing else []
+            names = {h.party.name for h in self.holders + coming} | self.former
+        return party.role == 'administrator' or party.name in names
 
     def need(self, good, leaf, what):
         if not good:
@@ -196,19 +186,14 @@ class Campaign:
         h.certified = True
 
     def on_canary(self, leaf, e):
-        record = Record(unbase64(e['record'], 'a canary'))
         if self.state == 'drafted':
             self.need(self.group is not None and all(h.certified for h in self.holders), leaf,
                       'a canary before all had certified')
             self.state, self.founding = 'certified', self.group
             self.founders = [h.party.name for h in self.holders]
-        self.need(record.type == CANARY and record.campaign == self.id and record.epoch == 1 and
-                  record.author == self.people.service_id and record.index == self.attempt + self.canaries, leaf,
-                  'a canary with a header of something else')
-        record.check_proof(self.founding)
         for h in self.holders:
             h.rehearsal = None
-        self.canary, self.canaries = (record, leaf.hash), self.canaries + 1
+        self.canary = self.new_canary(leaf, e)
 
     def on_rehearsal_request(self, leaf, e):
         self.holder(leaf, e)
@@ -361,6 +346,8 @@ class Campaign:
     def on_opening_request(self, leaf, e):
         self.need(self.state == 'closed', leaf, 'an opening was asked for before the closing')
         self.opening, self.share_sets = leaf, {}
+        if self.resharing is not None:
+            self.end_resharing()
 
     def on_opening_shares(self, leaf, e):
         i, _ = self.holder(leaf, e)

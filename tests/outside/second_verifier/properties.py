@@ -83,7 +83,8 @@ def life(w):
 
 def key(w):
     g = w.c.founding
-    return '%d deals with proofs, certified by %d, %d needed; %d attempts before it' % (g.n, g.n, g.k, len(w.c.failures))
+    return '%d deals with proofs, certified by %d, %d needed; %d attempts before it, %d resharings after it' % (
+        g.n, g.n, g.k, len(w.c.failures), w.c.epoch - 1)
 
 
 def hidden(w):
