@@ -21,6 +21,7 @@ CREATE TABLE cosignatures (
   signature  BLOB NOT NULL CHECK (length(signature) = 64),
   PRIMARY KEY (size, key_id)
 ) STRICT, WITHOUT ROWID;
+CREATE INDEX cosignatures_by_key ON cosignatures (key_id, size);
 
 -- Hidden entries wait here for their batch; seq is set once, when the commitment enters the ledger.
 CREATE TABLE hidden (

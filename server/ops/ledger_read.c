@@ -6,6 +6,7 @@
 #include "server/ops/internal.h"
 
 #define ENTRIES_PER_PAGE 1000
+#define COSIGNED_HEADS   256
 #define PAGE_BYTES       ((size_t)8 << 20)
 
 static enum qb_status add_cosigner(void *state, const uint8_t key_id[static 16], const uint8_t signature[static 64],
@@ -33,18 +34,50 @@ enum qb_status head_with_cosignatures(struct ops *o, uint64_t size, struct buf *
 	return st;
 }
 
+/* The newest head that each custodian and analyst cosigned, each head once: what one client was shown, others see. */
+static enum qb_status add_cosigned(struct ops *o, json_t *list, struct qb_error *e)
+{
+	uint64_t *sizes = QB_NEW_ARRAY(uint64_t, (size_t)o->view.n_parties);
+	size_t n = 0;
+	enum qb_status st = QB_OK;
+	for (int i = 0; st == QB_OK && i < o->view.n_parties && n < COSIGNED_HEADS; i++) {
+		const struct view_party *p = o->view.party[i];
+		uint64_t size = 0;
+		if (p->role == ROLE_CUSTODIAN || p->role == ROLE_ANALYST)
+			st = store_cosigned_newest(o->store, p->key_id, &size, e);
+		bool known = size == 0;
+		for (size_t k = 0; k < n; k++)
+			known = known || sizes[k] == size;
+		if (st != QB_OK || known)
+			continue;
+		struct buf text = {0};
+		sizes[n++] = size;
+		st = head_with_cosignatures(o, size, &text, e);
+		if (st == QB_OK)
+			json_array_append_new(list, json_string((const char *)text.data));
+		buf_free(&text);
+	}
+	qb_free(sizes);
+	return st;
+}
+
 enum qb_status case_head(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                          struct qb_error *e)
 {
 	struct buf head = {0};
 	(void)c;
 	(void)call;
+	json_t *cosigned = json_array();
 	enum qb_status st = head_with_cosignatures(o, o->size, &head, e);
+	if (st == QB_OK)
+		st = add_cosigned(o, cosigned, e);
 	if (st == QB_OK) {
 		reply->http_status = 200;
 		reply->doc = json_object();
 		json_object_set_new(reply->doc, "head", json_string((const char *)head.data));
+		json_object_set(reply->doc, "cosigned", cosigned);
 	}
+	json_decref(cosigned);
 	buf_free(&head);
 	return st;
 }

@@ -101,6 +101,17 @@ enum qb_status store_cosignatures(struct store *s, uint64_t size, store_cosignat
 	return q_end(&q);
 }
 
+enum qb_status store_cosigned_newest(struct store *s, const uint8_t key_id[static 16], uint64_t *out,
+                                     struct qb_error *e)
+{
+	*out = 0;
+	struct query q = q_begin(s, "SELECT coalesce(max(size), 0) FROM cosignatures WHERE key_id = ?", e);
+	q_blob(&q, key_id, 16);
+	if (q_row(&q))
+		*out = (uint64_t)q_col_int(&q, 0);
+	return q_end(&q);
+}
+
 enum qb_status store_cosigned_size(struct store *s, const uint8_t (*key_ids)[16], int n_keys, int needed, uint64_t *out,
                                    struct qb_error *e)
 {

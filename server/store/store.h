@@ -41,6 +41,9 @@ typedef enum qb_status store_cosignature_fn(void *state, const uint8_t key_id[st
                                             const uint8_t signature[static 64], struct qb_error *e);
 enum qb_status store_cosignatures(struct store *s, uint64_t size, store_cosignature_fn *fn, void *state,
                                   struct qb_error *e) QB_MUST_USE;
+/* The largest size of a head that this key cosigned; 0 when it cosigned none. */
+enum qb_status store_cosigned_newest(struct store *s, const uint8_t key_id[static 16], uint64_t *out,
+                                     struct qb_error *e) QB_MUST_USE;
 /* The largest head size that has at least n cosignatures by these keys; 0 when there is none. */
 enum qb_status store_cosigned_size(struct store *s, const uint8_t (*key_ids)[16], int n_keys, int needed, uint64_t *out,
                                    struct qb_error *e) QB_MUST_USE;
