@@ -6,6 +6,7 @@
 #include <string.h>
 
 #include "client/cli/bundle_verify.h"
+#include "client/cli/register.h"
 #include "server/base/text.h"
 
 #define INCIDENT_TEXT_MAX 4096
@@ -144,6 +145,8 @@ enum qb_status bundle_course_of(const struct verified *v, json_t *course, struct
 	json_t *incidents = json_array();
 	json_object_set_new(course, "ending", v->k->ending == ENDING_NONE ? json_null() : ending_of(v->k));
 	json_object_set_new(course, "incidents", incidents);
+	json_object_set_new(course, "custody", register_custody(v->k));
+	json_object_set_new(course, "register", register_of(&v->follow.view));
 	enum qb_status st = incidents_of(v, incidents, e);
 	return st == QB_OK ? bundle_questions_of(v, course, e) : st;
 }

@@ -5,6 +5,7 @@
 
 #include "client/cli/answer_file.h"
 #include "client/cli/internal.h"
+#include "client/cli/register.h"
 #include "client/cli/keygen.h"
 #include "client/cli/seal_host.h"
 #include "client/cli/plan_file.h"
@@ -66,28 +67,35 @@ static enum qb_status run_draft(struct cli_call *c)
 	return st;
 }
 
+static void print_register(struct cli_call *c, const struct view *v)
+{
+	cli_print(c, "%-24s %-10s %-11s %-20s %-12s %4s %5s  %s\n", "campaign", "state", "phase", "drafted", "by",
+	          "keys", "seals", "id");
+	for (int i = 0; i < v->n_campaigns; i++) {
+		const struct campaign *k = v->campaign[i];
+		char id[33], utc[40];
+		hex_encode(id, k->id, 16);
+		cli_print(c, "%-24s %-10s %-11s %-20s %-12s %4llu %5llu  %s\n", k->name, campaign_word(k),
+		          plan_phase_word(k->plan->phase), clock_utc_text(k->drafted_ns, utc, sizeof utc),
+		          k->drafted_by, (unsigned long long)k->attempt, (unsigned long long)k->sealing_attempt, id);
+		if (k->ending != ENDING_NONE)
+			cli_print(c, "    %s by %s on %s: %s\n", campaign_ending_word(k->ending), k->ended_by,
+			          clock_utc_text(k->ended_ns, utc, sizeof utc), k->ended_why);
+	}
+	if (v->n_campaigns == 0)
+		cli_print(c, "no campaign was ever drafted here\n");
+}
+
 static enum qb_status run_list(struct cli_call *c)
 {
 	enum qb_status st = cli_follow(c);
 	if (st != QB_OK)
 		return st;
-	json_t *list = json_array();
-	for (int i = 0; i < c->follow.view.n_campaigns; i++) {
-		const struct campaign *k = c->follow.view.campaign[i];
-		char id[33];
-		hex_encode(id, k->id, 16);
-		json_t *j = json_object();
-		json_object_set_new(j, "name", json_string(k->name));
-		json_object_set_new(j, "id", json_string(id));
-		json_object_set_new(j, "state", json_string(campaign_word(k)));
-		json_object_set_new(j, "phase", json_string(plan_phase_word(k->plan->phase)));
-		json_array_append_new(list, j);
-		if (!cli_wants_json(c))
-			cli_print(c, "%-24s %-10s %-11s %s\n", k->name, campaign_word(k),
-			          plan_phase_word(k->plan->phase), id);
-	}
+	json_t *list = register_of(&c->follow.view);
 	if (cli_wants_json(c))
 		cli_json(c, list);
+	else
+		print_register(c, &c->follow.view);
 	json_decref(list);
 	return QB_OK;
 }
@@ -269,7 +277,8 @@ static const struct cli_option witness_options[] = {
 const struct cli_verb cli_campaign_verbs[] = {
     {"campaign", "draft", "PLAN", run_draft, draft_options, "drafts a campaign from a plan",
      "quietbell campaign draft plan.yaml"},
-    {"campaign", "list", "", run_list, NULL, "lists every campaign ever drafted", "quietbell campaign list"},
+    {"campaign", "list", "", run_list, NULL,
+     "the register: every campaign ever drafted, with its attempts and how it ended", "quietbell campaign list"},
     {"campaign", "show", "CAMPAIGN", run_show, NULL, "shows state, keys and counts that reveal nothing",
      "quietbell campaign show fells-spring"},
     {"campaign", "keygen", "CAMPAIGN", cli_keygen, keygen_options,

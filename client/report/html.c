@@ -119,6 +119,7 @@ static void campaign(struct buf *out, const json_t *doc)
 		buf_text(out, "</figure>\n");
 	}
 	course_html(out, doc);
+	register_html(out, doc);
 	buf_text(out, "</section>\n");
 }
 

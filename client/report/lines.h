@@ -13,4 +13,8 @@ void lines_heading(struct buf *out, const char *text);
 void course_html(struct buf *out, const json_t *doc);
 void course_text(struct buf *out, const json_t *doc);
 
+/* Who held the key, and the register of every campaign: the document's `course.custody` and `course.register`. */
+void register_html(struct buf *out, const json_t *doc);
+void register_text(struct buf *out, const json_t *doc);
+
 #endif

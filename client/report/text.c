@@ -224,6 +224,7 @@ enum qb_status report_text(const json_t *doc, struct buf *out, struct qb_error *
 	summary(out, doc);
 	states(out, doc);
 	course_text(out, doc);
+	register_text(out, doc);
 	groups(out, doc);
 	efficiencies(out, doc);
 	curve(out, doc);

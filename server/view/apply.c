@@ -48,6 +48,8 @@ static enum qb_status apply_plan(struct view *v, const struct wire_entry *en, co
 	transcript_end(&t, hash);
 	memcpy(c->id, hash, 16);
 	c->plan_seq = (int64_t)leaf->seq;
+	c->drafted_ns = leaf->received_gps_ns;
+	(void)snprintf(c->drafted_by, sizeof c->drafted_by, "%s", en->by);
 	c->plan_text = qb_strdup(wire_entry_text(en, "plan"));
 	c->plan_files = json_text(wire_entry_json(en, "files"));
 	struct fetch_state f = {wire_entry_json(en, "files")};

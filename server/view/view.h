@@ -165,7 +165,8 @@ struct campaign {
 	uint8_t id[16];
 	char name[PLAN_NAME_MAX];
 	bool rehearsal_clock;
-	int64_t plan_seq;
+	int64_t plan_seq, drafted_ns;
+	char drafted_by[64];
 	char *plan_text, *plan_files; /* owned; files: JSON text of {name: text} */
 	struct drill_plan *plan;      /* owned */
 	enum campaign_state state;

@@ -252,6 +252,39 @@ static void the_course_is_told(void **state)
 	json_decref(doc);
 }
 
+static void the_register_is_printed(void **state)
+{
+	json_t *doc = json_deep_copy(*state);
+	char *text = render(doc, report_text);
+	lacks(text, "ever drafted");
+	lacks(text, "Who held the key");
+	free(text);
+	json_t *course = json_loads(
+	    "{\"custody\":{\"needed\":2,\"custodians\":[\"ines\",\"okoro\",\"sato\"],\"drew\":[\"ines\",\"okoro\"],"
+	    "\"resharings\":1,\"sealing_attempt\":3,\"margin\":1,\"rehearsed_gps\":1487894418.0,\"missed\":[{\"name\":"
+	    "\"okoro\",\"rehearsals\":2}],\"erasures_owed\":[\"marchetti\"],\"failures\":[{\"of\":\"resharing\","
+	    "\"attempt\":4,\"excluded\":\"marchetti\",\"how\":\"dealt a bad share\",\"by\":\"sato\",\"why\":\"<i>\"}]},"
+	    "\"register\":[{\"name\":\"fells-one\",\"state\":\"abandoned\",\"phase\":\"observing\",\"drafted_gps\":"
+	    "1487894418.0,\"drafted_by\":\"admin\",\"slots\":6,\"key_attempt\":5,\"sealing_attempt\":7,\"ended\":{"
+	    "\"how\":"
+	    "\"abandoned\",\"by\":\"asha\",\"why\":\"<b>seen</b>\",\"gps\":1487894419.0}}]}",
+	    0, NULL);
+	assert_non_null(course);
+	json_object_set_new(doc, "course", course);
+	text = render(doc, report_text);
+	holds(text, "2 of 3 custodians were needed to open anything: ines, okoro, sato");
+	holds(text, "resharing, attempt 4, failed: marchetti dealt a bad share");
+	holds(text, "fells-one (observing, abandoned), drafted by admin on 2027-03-01");
+	free(text);
+	text = render(doc, report_html);
+	holds(text, "okoro missed 2 rehearsals in a row.");
+	holds(text, "said to be erased by marchetti.");
+	holds(text, "abandoned by asha: &lt;b&gt;seen&lt;/b&gt;");
+	lacks(text, "<i>");
+	free(text);
+	json_decref(doc);
+}
+
 int main(void)
 {
 	const struct CMUnitTest tests[] = {
@@ -261,6 +294,7 @@ int main(void)
 	    cmocka_unit_test(tables_hold_every_row),          cmocka_unit_test(tables_carry_no_formulas),
 	    cmocka_unit_test(other_documents_are_refused),    cmocka_unit_test(an_empty_audit_is_reported_as_such),
 	    cmocka_unit_test(numbers_are_written_for_people), cmocka_unit_test(the_course_is_told),
+	    cmocka_unit_test(the_register_is_printed),
 	};
 	return cmocka_run_group_tests(tests, set_up, tear_down);
 }
