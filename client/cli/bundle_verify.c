@@ -10,6 +10,7 @@
 #include <string.h>
 
 #include "server/base/alloc.h"
+#include "server/custody/batch.h"
 #include "server/base/text.h"
 
 static enum qb_status no(struct qb_error *e, const char *what)
@@ -361,9 +362,9 @@ enum qb_status verify_opening(struct verified *v, struct qb_error *e)
 	const struct bundle_blob *set[CUSTODY_MAX];
 	size_t n = 0, records = v->bundle->records.n;
 	struct transcript t;
-	uint8_t hash[64], given[64], id[64];
+	struct batch_set share[CUSTODY_MAX];
+	uint8_t hash[64], given[64];
 	char names[200] = "";
-	enum qb_status st = QB_OK;
 	for (int i = 0; i < v->k->n_openings; i++) {
 		if (v->k->opening[i].scope == SCOPE_FULL && v->k->opening[i].opened)
 			v->opening = &v->k->opening[i];
@@ -382,26 +383,18 @@ enum qb_status verify_opening(struct verified *v, struct qb_error *e)
 		return no(e, "too few custodians opened");
 	v->content = QB_NEW_ARRAY(struct buf, records);
 	v->opens = QB_NEW_ARRAY(bool, records);
+	const struct record **list = items_records(&v->bundle->records);
+	struct batch b = {.group = &v->group, .record = list, .n = records};
+	memcpy(b.leaf, v->opening->authority, 32);
+	for (size_t i = 0; i < n; i++)
+		share[i] = (struct batch_set){(uint32_t)custodian_index(v->k, set[i]->name) + 1, set[i]->bytes.data};
+	enum qb_status st = batch_open(&b, share, n, v->content, v->opens, NULL, e);
+	qb_free(list);
 	transcript_begin(&t, "quietbell/1/opening/plaintexts");
 	for (size_t r = 0; st == QB_OK && r < records; r++) {
-		const struct record *rec = &v->bundle->records.item[r].rec;
-		struct partial p[CUSTODY_MAX];
-		struct partial_authority auth = {.purpose = partial_full_purpose(rec->header.type)};
-		memcpy(auth.hash, v->opening->authority, 32);
-		for (size_t i = 0; st == QB_OK && i < n; i++) {
-			st = partial_check(&v->group, rec, &auth, set[i]->bytes.data + r * PARTIAL_BYTES, PARTIAL_BYTES,
-			                   &p[i], e);
-			if (st == QB_OK && p[i].i != (uint32_t)custodian_index(v->k, set[i]->name) + 1)
-				st = no(e, "a partial opening is another custodian's");
-		}
-		if (st == QB_OK)
-			st = partial_open_filed(&v->group, rec, p, n, &v->content[r], &v->opens[r], e);
-		if (st == QB_OK) {
-			partial_content_hash(&v->content[r], v->opens[r], hash);
-			memcpy(id, rec->id, 64);
-			transcript_field(&t, id, 64);
-			transcript_field(&t, hash, 64);
-		}
+		partial_content_hash(&v->content[r], v->opens[r], hash);
+		transcript_field(&t, v->bundle->records.item[r].rec.id, 64);
+		transcript_field(&t, hash, 64);
 	}
 	transcript_end(&t, hash);
 	for (uint64_t i = 0; st == QB_OK && i < v->follow.n; i++) {

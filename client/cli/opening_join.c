@@ -1,7 +1,6 @@
 /* The full opening: one partial opening per record, in the order of positions, by both cores. */
 #include "client/cli/opening_join.h"
 
-#include <pthread.h>
 #include <stdio.h>
 #include <string.h>
 #include <time.h>
@@ -11,9 +10,9 @@
 #include "server/base/alloc.h"
 #include "server/base/clock.h"
 #include "server/base/text.h"
+#include "server/custody/batch.h"
 
 #define RECORDS_MAX 4000000
-#define THREADS     2
 
 static enum qb_status read_item(const json_t *j, struct sealed_item *out, struct qb_error *e)
 {
@@ -62,6 +61,14 @@ enum qb_status items_fetch(struct cli_call *c, const struct campaign *k, struct 
 		json_decref(doc);
 	}
 	return st;
+}
+
+const struct record **items_records(const struct sealed_items *items)
+{
+	const struct record **list = QB_NEW_ARRAY(const struct record *, items->n);
+	for (size_t i = 0; i < items->n; i++)
+		list[i] = &items->item[i].rec;
+	return list;
 }
 
 void items_free(struct sealed_items *items)
@@ -118,62 +125,14 @@ enum qb_status join_confirm(struct cli_call *c, const char *what)
 	return yes ? QB_OK : qb_fail(&c->error, QB_REFUSED, "opening", NULL, "not opened: the answer was not yes");
 }
 
-struct share_work {
-	const struct custody_group *g;
-	const struct sealed_items *items;
-	const struct secret *share;
-	uint32_t index;
-	uint8_t leaf[32];
-	size_t from, to;
-	uint8_t *out;
-	struct qb_error error;
-	enum qb_status status;
-};
-
-static void *share_thread(void *arg)
-{
-	struct share_work *w = arg;
-	for (size_t i = w->from; i < w->to && w->status == QB_OK; i++) {
-		const struct record *rec = &w->items->item[i].rec;
-		struct partial_authority auth = {.purpose = partial_full_purpose(rec->header.type)};
-		struct buf b = {0};
-		memcpy(auth.hash, w->leaf, 32);
-		w->status = partial_make(w->g, rec, w->index, w->share, &auth, &b, &w->error);
-		if (w->status == QB_OK)
-			memcpy(w->out + i * PARTIAL_BYTES, b.data, PARTIAL_BYTES);
-		buf_free(&b);
-	}
-	return NULL;
-}
-
 static enum qb_status make_shares(struct cli_call *c, const struct custody_group *g, const struct sealed_items *items,
                                   const struct secret *share, uint32_t index, const uint8_t *leaf, uint8_t *out)
 {
-	struct share_work work[THREADS] = {0};
-	pthread_t thread[THREADS];
-	enum qb_status st = QB_OK;
-	for (size_t t = 0; t < THREADS; t++) {
-		work[t] = (struct share_work){.g = g,
-		                              .items = items,
-		                              .share = share,
-		                              .index = index,
-		                              .out = out,
-		                              .from = items->n * t / THREADS,
-		                              .to = items->n * (t + 1) / THREADS};
-		memcpy(work[t].leaf, leaf, 32);
-		if (pthread_create(&thread[t], NULL, share_thread, &work[t]) != 0) {
-			share_thread(&work[t]);
-			thread[t] = pthread_self();
-		}
-	}
-	for (size_t t = 0; t < THREADS; t++) {
-		if (!pthread_equal(thread[t], pthread_self()))
-			pthread_join(thread[t], NULL);
-		if (st == QB_OK && work[t].status != QB_OK) {
-			st = work[t].status;
-			c->error = work[t].error;
-		}
-	}
+	const struct record **list = items_records(items);
+	struct batch b = {.group = g, .record = list, .n = items->n};
+	memcpy(b.leaf, leaf, 32);
+	enum qb_status st = batch_make(&b, index, share, out, NULL, &c->error);
+	qb_free(list);
 	return st;
 }
 

@@ -20,6 +20,8 @@ struct sealed_items {
 };
 /* Every record that the service shows, in the order of positions. */
 enum qb_status items_fetch(struct cli_call *c, const struct campaign *k, struct sealed_items *out) QB_MUST_USE;
+/* The parsed records in their order, as a list of pointers into items; the caller frees the list (qb_free). */
+const struct record **items_records(const struct sealed_items *items);
 void items_free(struct sealed_items *items);
 /* Proof, group, type and place of a record, against the verified ledger. Errors: QB_CRYPTO with the record's place. */
 enum qb_status item_check(const struct campaign *k, const struct view *v, const struct custody_group *g,

@@ -31,7 +31,8 @@ struct spot {
 	struct sealed_items items; /* the records that the request fixes */
 	struct secret *share;
 	uint8_t *own;                     /* own partials */
-	struct buf partials[CUSTODY_MAX]; /* from each custodian, once opened */
+	struct buf partials[CUSTODY_MAX]; /* from each custodian, once opened and checked */
+	bool bad[CUSTODY_MAX];            /* what they gave is wrong */
 };
 
 /* The request as its asker signed it, hidden under the commitment that the service promised to enter. */
@@ -217,7 +218,48 @@ static enum qb_status give(struct spot *s)
 	return st;
 }
 
-/* Opens the boxes that are there for us; returns how many custodians have given. */
+/* Every proof of one custodian, for every record that the request fixes. */
+static enum qb_status check_partials(const struct spot *s, int i, const struct buf *b, struct qb_error *e)
+{
+	struct partial_authority auth = {.purpose = PARTIAL_SPOT};
+	struct partial p;
+	enum qb_status st =
+	    b->len == s->items.n * PARTIAL_BYTES ? QB_OK : qb_fail(e, QB_CRYPTO, "box", NULL, "has a bad length");
+	memcpy(auth.hash, s->commitment, 64);
+	for (size_t r = 0; st == QB_OK && r < s->items.n; r++) {
+		st = partial_check(&s->g, &s->items.item[r].rec, &auth, b->data + r * PARTIAL_BYTES, PARTIAL_BYTES, &p,
+		                   e);
+		if (st == QB_OK && p.i != (uint32_t)i + 1)
+			st = qb_fail(e, QB_CRYPTO, "box", NULL, "holds another custodian's openings");
+	}
+	return st;
+}
+
+/* What a custodian gave that is wrong counts for nothing, and is said once: no single one may block an answer. */
+static void take_box(struct spot *s, int i, const char *text)
+{
+	struct buf box = {0}, b = {0};
+	struct qb_error e = {0};
+	char line[600];
+	enum qb_status st =
+	    text != NULL && base64_decode(text, &box) ? QB_OK : qb_fail(&e, QB_FORMAT, "box", NULL, "is not base64");
+	if (st == QB_OK)
+		st =
+		    box_open(s->c->home.key.exchange, BOX_SPOT_PARTIAL, s->ad, sizeof s->ad, box.data, box.len, &b, &e);
+	if (st == QB_OK)
+		st = check_partials(s, i, &b, &e);
+	if (st == QB_OK) {
+		s->partials[i] = b;
+	} else {
+		s->bad[i] = true;
+		cli_note(s->c, "what %s gave is wrong and does not count: %s\n", s->k->custodian[i].party->name,
+		         qb_error_line(&e, line, sizeof line));
+		buf_wipe(&b);
+	}
+	buf_free(&box);
+}
+
+/* Opens the boxes that are there for us; *given is how many custodians have given what counts. */
 static enum qb_status collect(struct spot *s, int *given)
 {
 	json_t *doc, *v;
@@ -228,21 +270,11 @@ static enum qb_status collect(struct spot *s, int *given)
 	json_object_foreach(json_object_get(doc, "boxes"), name, v)
 	{
 		int i = custodian_index(s->k, name);
-		struct buf b = {0};
 		if (st != QB_OK || i < 0)
 			break;
-		if (s->partials[i].len == 0) {
-			if (!json_is_string(v) || !base64_decode(json_string_value(v), &b))
-				st = qb_fail(&s->c->error, QB_FORMAT, "box", NULL, "is not base64");
-			else
-				st = box_open(s->c->home.key.exchange, BOX_SPOT_PARTIAL, s->ad, sizeof s->ad, b.data,
-				              b.len, &s->partials[i], &s->c->error);
-			if (st == QB_OK && s->partials[i].len != s->items.n * PARTIAL_BYTES)
-				st = qb_fail(&s->c->error, QB_CRYPTO, name, NULL,
-				             "the box of this custodian has a bad length");
-		}
-		buf_free(&b);
-		(*given)++;
+		if (s->partials[i].len == 0 && !s->bad[i])
+			take_box(s, i, json_string_value(v));
+		*given += s->partials[i].len > 0;
 	}
 	json_decref(doc);
 	qb_free(path);

@@ -41,11 +41,26 @@ void pad_content(const void *content, size_t n, size_t capacity, uint8_t *out)
 	memset(out + 4 + n, 0, capacity - n);
 }
 
+static bool content_length(const uint8_t *padded, size_t capacity, size_t *n)
+{
+	*n = (size_t)padded[0] | (size_t)padded[1] << 8 | (size_t)padded[2] << 16 | (size_t)padded[3] << 24;
+	return *n <= capacity && sodium_is_zero(padded + 4 + *n, capacity - *n);
+}
+
 bool unpad_content(const uint8_t *padded, size_t capacity, struct buf *out)
 {
-	size_t n = (size_t)padded[0] | (size_t)padded[1] << 8 | (size_t)padded[2] << 16 | (size_t)padded[3] << 24;
-	if (n > capacity || !sodium_is_zero(padded + 4 + n, capacity - n))
+	size_t n;
+	if (!content_length(padded, capacity, &n))
 		return false;
 	buf_put(out, padded + 4, n);
+	return true;
+}
+
+bool unpad_here(uint8_t *padded, size_t capacity, size_t *n)
+{
+	if (!content_length(padded, capacity, n))
+		return false;
+	memmove(padded, padded + 4, *n);
+	memset(padded + *n, 0, 4);
 	return true;
 }

@@ -14,14 +14,16 @@
 
 #define AEAD_TAG_BYTES 16
 
-/* Ends t: its first 32 bytes are the key, the next 24 the nonce. out: n + AEAD_TAG_BYTES. */
+/* Ends t: its first 32 bytes are the key, the next 24 the nonce. out: n + AEAD_TAG_BYTES; it may be plain. */
 void aead_seal(struct transcript *t, const void *ad, size_t ad_n, const uint8_t *plain, size_t n, uint8_t *out);
-/* out: n - AEAD_TAG_BYTES; false (out zeroed) when n is too short or the tag is wrong. */
+/* out: n - AEAD_TAG_BYTES, it may be ct; false (out zeroed) when n is too short or the tag is wrong. */
 bool aead_open(struct transcript *t, const void *ad, size_t ad_n, const uint8_t *ct, size_t n, uint8_t *out);
 
 /* length u32 | content | zeros up to capacity: 4 + capacity bytes. */
 void pad_content(const void *content, size_t n, size_t capacity, uint8_t *out);
 /* Appends the content; false when the length is too large or the filling is not zero. */
 bool unpad_content(const uint8_t *padded, size_t capacity, struct buf *out);
+/* The same in place: *n bytes of content come to the front, zeros after them. */
+bool unpad_here(uint8_t *padded, size_t capacity, size_t *n);
 
 #endif

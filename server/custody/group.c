@@ -2,6 +2,7 @@
 #include "server/custody/group.h"
 
 #include <sodium.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include "server/base/buf.h"
@@ -10,12 +11,18 @@
 _Static_assert(crypto_core_ristretto255_BYTES == POINT_BYTES, "point size");
 _Static_assert(crypto_core_ristretto255_SCALARBYTES == SCALAR_BYTES, "scalar size");
 
-/* The library takes a point with the highest bit set for the one without it: a second encoding, of the identity, too.
+/*
+ * What the library's decoding lets pass: the identity, and a point with the highest bit set, which it takes for the one
+ * without it, a second encoding.
  */
+static bool encoding_ok(const uint8_t p[static POINT_BYTES])
+{
+	return (p[POINT_BYTES - 1] & 0x80) == 0 && !sodium_is_zero(p, POINT_BYTES);
+}
+
 bool group_point_ok(const uint8_t p[static POINT_BYTES])
 {
-	bool canonical = (p[POINT_BYTES - 1] & 0x80) == 0;
-	return canonical && !sodium_is_zero(p, POINT_BYTES) && crypto_core_ristretto255_is_valid_point(p) == 1;
+	return encoding_ok(p) && crypto_core_ristretto255_is_valid_point(p) == 1;
 }
 
 bool group_scalar_canonical(const uint8_t s[static SCALAR_BYTES])
@@ -46,11 +53,12 @@ static bool deliver(uint8_t out[static POINT_BYTES], bool done, uint8_t result[s
 	return ok;
 }
 
+/* The library's operations decode what they are given, so that encoding_ok is all that is left to check before them. */
 bool group_mul(uint8_t out[static POINT_BYTES], const uint8_t s[static SCALAR_BYTES],
                const uint8_t p[static POINT_BYTES])
 {
 	uint8_t r[POINT_BYTES];
-	bool ok = group_scalar_ok(s) && group_point_ok(p);
+	bool ok = group_scalar_ok(s) && encoding_ok(p);
 	return deliver(out, ok && crypto_scalarmult_ristretto255(r, s, p) == 0, r);
 }
 
@@ -64,7 +72,7 @@ bool group_add(uint8_t out[static POINT_BYTES], const uint8_t a[static POINT_BYT
                const uint8_t b[static POINT_BYTES])
 {
 	uint8_t r[POINT_BYTES];
-	bool ok = group_point_ok(a) && group_point_ok(b);
+	bool ok = encoding_ok(a) && encoding_ok(b);
 	return deliver(out, ok && crypto_core_ristretto255_add(r, a, b) == 0, r);
 }
 
@@ -72,7 +80,7 @@ bool group_sub(uint8_t out[static POINT_BYTES], const uint8_t a[static POINT_BYT
                const uint8_t b[static POINT_BYTES])
 {
 	uint8_t r[POINT_BYTES];
-	bool ok = group_point_ok(a) && group_point_ok(b);
+	bool ok = encoding_ok(a) && encoding_ok(b);
 	return deliver(out, ok && crypto_core_ristretto255_sub(r, a, b) == 0, r);
 }
 
@@ -142,6 +150,34 @@ bool group_poly_point(uint8_t out[static POINT_BYTES], const uint8_t (*commitmen
 	return deliver(out, ok, sum);
 }
 
+/*
+ * 1/v mod l for a small v: (1 + m l) / v with the m that makes it whole. The library's inversion takes as long as half
+ * a scalar multiplication. Variable time: v comes from public numbers.
+ */
+static void small_inverse(uint8_t out[static SCALAR_BYTES], unsigned v)
+{
+	static const uint8_t order[SCALAR_BYTES] = {0xed, 0xd3, 0xf5, 0x5c, 0x1a, 0x63, 0x12, 0x58, 0xd6, 0x9c, 0xf7,
+	                                            0xa2, 0xde, 0xf9, 0xde, 0x14, 0,    0,    0,    0,    0,    0,
+	                                            0,    0,    0,    0,    0,    0,    0,    0,    0,    0x10};
+	uint8_t multiple[SCALAR_BYTES + 1];
+	unsigned rest = 0, m = 0, carry = 1;
+	CHECK(v >= 1 && v <= CUSTODY_MAX);
+	for (size_t i = SCALAR_BYTES; i-- > 0;)
+		rest = (rest * 256 + order[i]) % v;
+	while ((1 + m * rest) % v != 0)
+		m++;
+	for (size_t i = 0; i < SCALAR_BYTES; i++, carry >>= 8) {
+		carry += m * order[i];
+		multiple[i] = (uint8_t)carry;
+	}
+	multiple[SCALAR_BYTES] = (uint8_t)carry;
+	rest = carry % v;
+	for (size_t i = SCALAR_BYTES; i-- > 0; rest %= v) {
+		rest = rest * 256 + multiple[i];
+		out[i] = (uint8_t)(rest / v);
+	}
+}
+
 bool group_lagrange(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which)
 {
 	return group_lagrange_at(out, index, n, which, 0);
@@ -149,26 +185,25 @@ bool group_lagrange(uint8_t out[static SCALAR_BYTES], const uint32_t *index, siz
 
 bool group_lagrange_at(uint8_t out[static SCALAR_BYTES], const uint32_t *index, size_t n, size_t which, uint32_t x)
 {
-	uint8_t num[SCALAR_BYTES], den[SCALAR_BYTES], at[SCALAR_BYTES], a[SCALAR_BYTES], b[SCALAR_BYTES];
-	group_scalar_from_u64(at, x);
-	CHECK(which < n);
-	group_scalar_from_u64(num, 1);
-	group_scalar_from_u64(den, 1);
+	uint8_t product[SCALAR_BYTES], factor[SCALAR_BYTES], zero[SCALAR_BYTES] = {0};
+	bool minus = false;
+	CHECK(which < n && x <= CUSTODY_MAX);
+	group_scalar_from_u64(product, 1);
 	for (size_t j = 0; j < n; j++) {
 		if (index[j] == 0 || index[j] > CUSTODY_MAX || (j != which && index[j] == index[which]))
 			return false;
 		if (j == which)
 			continue;
-		group_scalar_from_u64(a, index[j]);
-		group_scalar_from_u64(b, index[which]);
-		group_scalar_sub(b, a, b);
-		group_scalar_sub(a, a, at);
-		group_scalar_mul(num, num, a);
-		group_scalar_mul(den, den, b);
+		int above = (int)index[j] - (int)x, below = (int)index[j] - (int)index[which];
+		group_scalar_from_u64(factor, (uint64_t)abs(above));
+		group_scalar_mul(product, product, factor);
+		small_inverse(factor, (unsigned)abs(below));
+		group_scalar_mul(product, product, factor);
+		minus ^= (above < 0) != (below < 0);
 	}
-	if (crypto_core_ristretto255_scalar_invert(den, den) != 0)
-		return false;
-	group_scalar_mul(out, num, den);
+	if (minus)
+		group_scalar_sub(product, zero, product);
+	memcpy(out, product, SCALAR_BYTES);
 	return true;
 }
 

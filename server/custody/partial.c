@@ -91,19 +91,34 @@ static enum qb_status may_open(const struct record *rec, const struct partial_au
 	return QB_OK;
 }
 
+enum qb_status partial_share_check(const struct custody_group *g, uint32_t i, const struct secret *share,
+                                   struct qb_error *e)
+{
+	uint8_t y[POINT_BYTES];
+	if (i == 0 || i > g->n || secret_size(share) != SCALAR_BYTES || !group_mul_base(y, secret_view(share)) ||
+	    memcmp(y, g->y[i - 1], sizeof y) != 0)
+		return qb_fail(e, QB_CRYPTO, "key share", NULL, "it is not custodian %u's share of this group key", i);
+	return QB_OK;
+}
+
 enum qb_status partial_make(const struct custody_group *g, const struct record *rec, uint32_t i,
                             const struct secret *share, const struct partial_authority *authority, struct buf *out,
                             struct qb_error *e)
 {
-	uint8_t y[POINT_BYTES], d[POINT_BYTES], w[SCALAR_BYTES], digest[64];
+	enum qb_status status = partial_share_check(g, i, share, e);
+	return status == QB_OK ? partial_make_checked(g, rec, i, share, authority, out, e) : status;
+}
+
+enum qb_status partial_make_checked(const struct custody_group *g, const struct record *rec, uint32_t i,
+                                    const struct secret *share, const struct partial_authority *authority,
+                                    struct buf *out, struct qb_error *e)
+{
+	uint8_t d[POINT_BYTES], w[SCALAR_BYTES], digest[64];
 	struct transcript t;
 	struct proof proof;
 	enum qb_status status = may_open(rec, authority, e);
 	if (status != QB_OK)
 		return status;
-	if (i == 0 || i > g->n || secret_size(share) != SCALAR_BYTES || !group_mul_base(y, secret_view(share)) ||
-	    memcmp(y, g->y[i - 1], sizeof y) != 0)
-		return qb_fail(e, QB_CRYPTO, "key share", NULL, "it is not custodian %u's share of this group key", i);
 	if (!group_mul(d, secret_view(share), rec->r))
 		return qb_fail(e, QB_CRYPTO, "opening", NULL, "the record's R is not a valid point");
 	struct statement s = {g, rec, authority, i, d};

@@ -48,6 +48,13 @@ enum qb_status partial_make(const struct custody_group *g, const struct record *
                             const struct secret *share, const struct partial_authority *authority, struct buf *out,
                             struct qb_error *e) QB_MUST_USE;
 
+/* The first half of it, once for many records, and the second: share passed partial_share_check for i. */
+enum qb_status partial_share_check(const struct custody_group *g, uint32_t i, const struct secret *share,
+                                   struct qb_error *e) QB_MUST_USE;
+enum qb_status partial_make_checked(const struct custody_group *g, const struct record *rec, uint32_t i,
+                                    const struct secret *share, const struct partial_authority *authority,
+                                    struct buf *out, struct qb_error *e) QB_MUST_USE;
+
 /* Errors: QB_FORMAT; QB_CRYPTO with the custodian at fault in `where`; QB_REFUSED for a purpose that does not fit. */
 enum qb_status partial_check(const struct custody_group *g, const struct record *rec,
                              const struct partial_authority *authority, const uint8_t *p, size_t n, struct partial *out,

@@ -3,7 +3,6 @@
 
 #include <string.h>
 
-#include "server/base/alloc.h"
 #include "server/base/check.h"
 #include "server/custody/aead.h"
 #include "server/custody/proof.h"
@@ -190,31 +189,31 @@ static enum qb_status seal(const struct custody_group *g, const struct record_he
 	if (!group_mul_base(big_r, r) || !group_mul(big_w, r, g->g2) || !group_mul(z, r, g->s))
 		return qb_fail(e, QB_CRYPTO, "sealed record", NULL,
 		               "r is not a valid scalar, or the group key is not a point");
-	size_t capacity = custody_fixed_size(h->type), padded = 4 + capacity, ct_len = padded + AEAD_TAG_BYTES;
-	struct secret *plain = secret_new(padded);
-	uint8_t *ct = qb_alloc(1, ct_len);
+	/* In place: all of the record's room is made before its plaintext is written there and encrypted over itself.
+	 */
+	size_t capacity = custody_fixed_size(h->type), from = out->len;
+	buf_zeros(out, record_size(h->type));
+	uint8_t *head = out->data + from, *ct = head + RECORD_HEADER_BYTES + RECORD_PROOF_BYTES;
 	record_header_encode(h, header);
-	pad_content(content, n, capacity, secret_bytes(plain));
+	pad_content(content, n, capacity, ct);
 	record_key(g, header, big_r, z, &t);
-	aead_seal(&t, header, sizeof header, secret_view(plain), padded, ct);
-	blake2b_512(s.h_ct, ct, ct_len);
+	aead_seal(&t, header, sizeof header, ct, 4 + capacity, ct);
+	blake2b_512(s.h_ct, ct, 4 + capacity + AEAD_TAG_BYTES);
 	if (derived)
 		nonce_derived(&s, r, w);
 	else
 		nonce_hedged(&s, r, w);
 	bool ok = proof_equal_make(&points, &statement, r, w, &proof);
-	if (ok) {
-		buf_put(out, header, sizeof header);
-		buf_put(out, big_r, sizeof big_r);
-		buf_put(out, big_w, sizeof big_w);
-		buf_put(out, proof.c, sizeof proof.c);
-		buf_put(out, proof.z, sizeof proof.z);
-		buf_put(out, ct, ct_len);
-	}
+	memcpy(head, header, sizeof header);
+	head += RECORD_HEADER_BYTES;
+	memcpy(head, big_r, POINT_BYTES);
+	memcpy(head + 32, big_w, POINT_BYTES);
+	memcpy(head + 64, proof.c, SCALAR_BYTES);
+	memcpy(head + 96, proof.z, SCALAR_BYTES);
+	if (!ok)
+		out->len = from;
 	wipe(z, sizeof z);
 	wipe(w, sizeof w);
-	secret_free(&plain);
-	qb_free(ct);
 	return ok ? QB_OK : qb_fail(e, QB_CRYPTO, "sealed record", NULL, "the proof can't be made with this r");
 }
 
@@ -309,11 +308,15 @@ enum qb_status record_open(const struct custody_group *g, const struct record *r
 	if (!group_point_ok(z))
 		return qb_fail(e, QB_CRYPTO, "sealed record", NULL, "the combined point is not valid");
 	size_t capacity = custody_fixed_size(rec->header.type);
-	struct secret *plain = secret_new(4 + capacity);
+	size_t from = out->len, n = 0;
+	buf_zeros(out, 4 + capacity);
+	uint8_t *plain = out->data + from;
 	record_key(g, rec->bytes, rec->r, z, &t);
-	bool ok = aead_open(&t, rec->bytes, RECORD_HEADER_BYTES, rec->ct, rec->ct_len, secret_bytes(plain)) &&
-	          unpad_content(secret_view(plain), capacity, out);
-	secret_free(&plain);
+	bool ok = aead_open(&t, rec->bytes, RECORD_HEADER_BYTES, rec->ct, rec->ct_len, plain) &&
+	          unpad_here(plain, capacity, &n);
+	if (!ok)
+		wipe(plain, 4 + capacity);
+	out->len = from + (ok ? n : 0);
 	return ok ? QB_OK
 	          : qb_fail(e, QB_CRYPTO, "sealed record", NULL,
 	                    "%s %llu does not decrypt: its author encrypted something else than the proof says",

@@ -2,31 +2,74 @@
 #include <string.h>
 
 #include "server/base/alloc.h"
+#include "server/custody/batch.h"
 #include "server/ops/internal.h"
 
-struct checking {
+#define STRETCH 256 /* records that are in memory at a time */
+
+/* Records as the store gives them, in stretches that all processors work on. */
+struct stretch {
 	const struct campaign *c;
 	const struct opening *op;
-	const uint8_t *shares;
-	size_t at, n; /* partials */
-	uint32_t index;
+	struct batch_set set[CUSTODY_MAX]; /* of all records */
+	size_t set_n[CUSTODY_MAX];         /* bytes */
+	size_t n_sets, done;
+	struct buf bytes[STRETCH];
+	struct record rec[STRETCH];
+	const struct record *at[STRETCH];
+	size_t n;
+	struct transcript *opened; /* NULL: the proofs are checked and nothing is opened */
 };
 
-static enum qb_status check_one(void *state, const struct store_record *r, struct qb_error *e)
+static enum qb_status work_off(struct stretch *x, struct qb_error *e)
 {
-	struct checking *x = state;
-	struct record rec;
-	struct partial p;
-	struct partial_authority auth = {.purpose = partial_full_purpose((enum record_type)r->type)};
-	memcpy(auth.hash, x->op->authority, 32);
-	if (x->at >= x->n)
-		return qb_fail(e, QB_FORMAT, "shares", NULL, "there are fewer partial openings than records");
-	enum qb_status st = record_check(&x->c->group, r->record, r->record_n, &rec, e);
+	struct batch b = {.group = &x->c->group, .record = x->at, .n = x->n};
+	struct batch_set set[CUSTODY_MAX];
+	struct buf *content = QB_NEW_ARRAY(struct buf, STRETCH);
+	bool opens[STRETCH] = {false};
+	enum qb_status st = QB_OK;
+	memcpy(b.leaf, x->op->authority, 32);
+	for (size_t i = 0; i < x->n_sets; i++) {
+		if (x->set_n[i] < (x->done + x->n) * PARTIAL_BYTES)
+			st = qb_fail(e, QB_FORMAT, "shares", NULL, "there are fewer partial openings than records");
+		set[i] = (struct batch_set){x->set[i].i, x->set[i].partials + x->done * PARTIAL_BYTES};
+	}
 	if (st == QB_OK)
-		st = partial_check(&x->c->group, &rec, &auth, x->shares + x->at * PARTIAL_BYTES, PARTIAL_BYTES, &p, e);
-	if (st == QB_OK && p.i != x->index)
-		st = qb_fail(e, QB_CRYPTO, "shares", NULL, "a partial opening is another custodian's");
-	x->at++;
+		st = x->opened != NULL ? batch_open(&b, set, x->n_sets, content, opens, NULL, e)
+		                       : batch_check(&b, set, NULL, e);
+	for (size_t r = 0; r < x->n; r++) {
+		uint8_t hash[64];
+		if (st == QB_OK && x->opened != NULL) {
+			partial_content_hash(&content[r], opens[r], hash);
+			transcript_field(x->opened, x->rec[r].id, 64);
+			transcript_field(x->opened, hash, 64);
+		}
+		buf_wipe(&content[r]);
+		buf_free(&x->bytes[r]);
+	}
+	qb_free(content);
+	x->done += x->n;
+	x->n = 0;
+	return st;
+}
+
+static enum qb_status gather(void *state, const struct store_record *r, struct qb_error *e)
+{
+	struct stretch *x = state;
+	buf_put(&x->bytes[x->n], r->record, r->record_n);
+	x->at[x->n] = &x->rec[x->n];
+	enum qb_status st = record_check(&x->c->group, x->bytes[x->n].data, r->record_n, &x->rec[x->n], e);
+	x->n++;
+	return st == QB_OK && x->n == STRETCH ? work_off(x, e) : st;
+}
+
+static enum qb_status all_records(struct ops *o, struct stretch *x, struct qb_error *e)
+{
+	enum qb_status st = store_records(o->store, x->c->id, 0, INT64_MAX, gather, x, e);
+	if (st == QB_OK && x->n > 0)
+		st = work_off(x, e);
+	for (size_t r = 0; r < x->n; r++)
+		buf_free(&x->bytes[r]);
 	return st;
 }
 
@@ -44,65 +87,29 @@ static enum qb_status given_before(const json_t *names, const char *name, struct
 	return QB_OK;
 }
 
-struct share_set {
-	uint8_t *shares;
-	size_t n;
-};
-struct combining {
-	const struct campaign *c;
-	const struct opening *op;
-	struct share_set set[CUSTODY_MAX];
-	int n_sets;
-	size_t at;
-	struct transcript *t;
-};
-
 static enum qb_status keep_shares(void *state, const char *custodian, const uint8_t *p, size_t n, struct qb_error *e)
 {
-	struct combining *x = state;
-	(void)custodian;
+	struct stretch *x = state;
+	int i = custodian_index(x->c, custodian);
 	(void)e;
-	if (x->n_sets < x->c->k)
-		x->set[x->n_sets++] = (struct share_set){qb_memdup(p, n), n};
+	if (i < 0 || x->n_sets >= (size_t)x->c->k)
+		return QB_OK;
+	x->set_n[x->n_sets] = n;
+	x->set[x->n_sets++] = (struct batch_set){(uint32_t)i + 1, qb_memdup(p, n)};
 	return QB_OK;
-}
-
-static enum qb_status combine_one(void *state, const struct store_record *r, struct qb_error *e)
-{
-	struct combining *x = state;
-	struct record rec;
-	struct partial p[CUSTODY_MAX];
-	struct buf content = {0};
-	uint8_t hash[64];
-	bool opens = false;
-	struct partial_authority auth = {.purpose = partial_full_purpose((enum record_type)r->type)};
-	memcpy(auth.hash, x->op->authority, 32);
-	enum qb_status st = record_check(&x->c->group, r->record, r->record_n, &rec, e);
-	for (int i = 0; st == QB_OK && i < x->n_sets; i++)
-		st = partial_check(&x->c->group, &rec, &auth, x->set[i].shares + x->at * PARTIAL_BYTES, PARTIAL_BYTES,
-		                   &p[i], e);
-	if (st == QB_OK)
-		st = partial_open_filed(&x->c->group, &rec, p, (size_t)x->n_sets, &content, &opens, e);
-	if (st == QB_OK) {
-		partial_content_hash(&content, opens, hash);
-		transcript_field(x->t, rec.id, 64);
-		transcript_field(x->t, hash, 64);
-	}
-	buf_wipe(&content);
-	x->at++;
-	return st;
 }
 
 /* Enough shares: combine every record, so that "opened" is said only of what really opens. */
 static enum qb_status combine_all(struct txn *t, struct campaign *c, const struct opening *op, struct qb_error *e)
 {
 	struct transcript plaintexts;
-	struct combining x = {.c = c, .op = op, .t = &plaintexts};
+	struct stretch *x = QB_NEW(struct stretch);
 	uint8_t hash[64];
+	*x = (struct stretch){.c = c, .op = op, .opened = &plaintexts};
 	transcript_begin(&plaintexts, "quietbell/1/opening/plaintexts");
-	enum qb_status st = store_shares(t->o->store, c->id, op->id, keep_shares, &x, e);
+	enum qb_status st = store_shares(t->o->store, c->id, op->id, keep_shares, x, e);
 	if (st == QB_OK)
-		st = store_records(t->o->store, c->id, 0, INT64_MAX, combine_one, &x, e);
+		st = all_records(t->o, x, e);
 	transcript_end(&plaintexts, hash);
 	if (st == QB_OK) {
 		json_t *extra = json_object();
@@ -110,8 +117,26 @@ static enum qb_status combine_all(struct txn *t, struct campaign *c, const struc
 		json_object_set_new(extra, "plaintexts_hash", json_hex_new(hash, 64));
 		st = txn_service_entry(t, "opened", c, "k custodians opened every record", extra, NULL, NULL, e);
 	}
-	for (int i = 0; i < x.n_sets; i++)
-		qb_free(x.set[i].shares);
+	for (size_t i = 0; i < x->n_sets; i++)
+		qb_free((void *)(uintptr_t)x->set[i].partials);
+	qb_free(x);
+	return st;
+}
+
+/* As many proofs as there are records, each of them right. */
+static enum qb_status check_shares(struct ops *o, const struct campaign *c, const struct opening *op, const char *name,
+                                   const struct buf *b, const struct accepted *a, struct qb_error *e)
+{
+	struct stretch *x = QB_NEW(struct stretch);
+	*x = (struct stretch){.c = c, .op = op, .n_sets = 1};
+	x->set[0] = (struct batch_set){(uint32_t)custodian_index(c, name) + 1, b->data};
+	x->set_n[0] = b->len;
+	enum qb_status st = all_records(o, x, e);
+	if (st == QB_OK &&
+	    (b->len != x->done * PARTIAL_BYTES || wire_entry_int(&a->entry, "count") != (int64_t)x->done))
+		st = qb_fail(e, QB_FORMAT, "shares", NULL, "%zu partial openings are needed, one for each record",
+		             x->done);
+	qb_free(x);
 	return st;
 }
 
@@ -124,8 +149,6 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 	int64_t seq;
 	json_t *names = json_array();
 	enum qb_status st = body_base64(call->body, "shares", (size_t)24 << 20, &b, e);
-	struct checking x = {
-	    c, op, b.data, 0, b.len / PARTIAL_BYTES, (uint32_t)custodian_index(c, call->who->name) + 1};
 	if (st == QB_OK && op->opened)
 		st = qb_fail(e, QB_CONFLICT, "opening", NULL, "it is open already");
 	if (st == QB_OK && now_locked(o) < op->reveal_ns) {
@@ -145,11 +168,7 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 			             "is not the hash of the shares that were sent");
 	}
 	if (st == QB_OK)
-		st = store_records(o->store, c->id, 0, INT64_MAX, check_one, &x, e);
-	if (st == QB_OK &&
-	    (b.len % PARTIAL_BYTES != 0 || x.at != x.n || wire_entry_int(&a->entry, "count") != (int64_t)x.n))
-		st =
-		    qb_fail(e, QB_FORMAT, "shares", NULL, "%zu partial openings are needed, one for each record", x.at);
+		st = check_shares(o, c, op, call->who->name, &b, a, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, "opening-shares", e)) == QB_OK) {
 		st = store_shares_put(o->store, c->id, op->id, call->who->name, b.data, b.len, e);
 		if (st == QB_OK)
@@ -169,20 +188,31 @@ static enum qb_status give_full(struct ops *o, struct campaign *c, struct openin
 
 /* Boxes for the other custodians: every one of them must get one, of equal size, so that the relay learns nothing. */
 static enum qb_status put_boxes(struct ops *o, const struct campaign *c, const struct opening *op,
-                                const struct ops_call *call, struct qb_error *e)
+                                const struct ops_call *call, const struct accepted *a, struct qb_error *e)
 {
 	const json_t *boxes = json_object_get(call->body, "boxes");
+	const size_t size = (size_t)op->n_positions * PARTIAL_BYTES + BOX_OVERHEAD_BYTES;
+	struct transcript t;
+	uint8_t hash[64], given[64];
 	enum qb_status st = QB_OK;
+	transcript_begin(&t, "quietbell/1/opening/boxes");
 	if (!json_is_object(boxes) || json_object_size(boxes) != (size_t)c->n)
 		return qb_fail(e, QB_FORMAT, "boxes", NULL, "one box for each custodian is needed");
 	for (int i = 0; st == QB_OK && i < c->n; i++) {
 		struct buf b = {0};
 		const char *name = c->custodian[i].party->name;
-		st = body_base64(boxes, name, (size_t)1 << 20, &b, e);
+		st = body_base64(boxes, name, size, &b, e);
+		if (st == QB_OK && b.len != size)
+			st = qb_fail(e, QB_FORMAT, "boxes", NULL, "each box has %zu bytes for this opening", size);
+		transcript_field(&t, b.data, b.len);
 		if (st == QB_OK)
 			st = store_box_put(o->store, c->id, op->id, call->who->name, name, b.data, b.len, e);
 		buf_free(&b);
 	}
+	transcript_end(&t, hash);
+	wire_entry_hex(&a->entry, "boxes_hash", given, 64);
+	if (st == QB_OK && memcmp(hash, given, 64) != 0)
+		st = qb_fail(e, QB_CRYPTO, "entry: boxes_hash", NULL, "is not the hash of the boxes that were sent");
 	if (st == QB_OK)
 		st = store_box_put(o->store, c->id, op->id, call->who->name, TO_ALL, "", 0, e);
 	return st;
@@ -235,7 +265,7 @@ static enum qb_status give_spot(struct ops *o, struct campaign *c, struct openin
 			st = store_box_put(o->store, c->id, op->id, call->who->name, spot_steps[s].receiver, b.data,
 			                   b.len, e);
 		else
-			st = put_boxes(o, c, op, call, e);
+			st = put_boxes(o, c, op, call, a, e);
 		if (st == QB_OK)
 			st = hidden_take(&t, c, call, a, reply, commitment, e);
 		if (st == QB_OK)

@@ -85,6 +85,62 @@ static void points_have_one_encoding(void **state)
 	assert_false(group_add(out, p, p));
 }
 
+/* Any of the numbers 1..32, at 0 and at every number that is left out. */
+static void lagrange_interpolates_at_any_number(void **state)
+{
+	(void)state;
+	uint8_t coef[8][SCALAR_BYTES], f[SCALAR_BYTES], lambda[SCALAR_BYTES], sum[SCALAR_BYTES];
+	for (size_t m = 0; m < 8; m++)
+		group_scalar_random(coef[m]);
+	for (uint32_t step = 1; step <= 4; step++)
+		for (uint32_t x = 0; x <= CUSTODY_MAX; x++) {
+			uint32_t index[8];
+			for (uint32_t i = 0; i < 8; i++)
+				index[i] = CUSTODY_MAX - step * (i * 5 % 8);
+			memset(sum, 0, sizeof sum);
+			for (size_t i = 0; i < 8; i++) {
+				group_poly_eval(f, (const uint8_t(*)[SCALAR_BYTES])coef, 8, index[i]);
+				assert_true(group_lagrange_at(lambda, index, 8, i, x));
+				assert_true(group_scalar_canonical(lambda));
+				group_scalar_mul(f, f, lambda);
+				group_scalar_add(sum, sum, f);
+			}
+			group_poly_eval(f, (const uint8_t(*)[SCALAR_BYTES])coef, 8, x);
+			assert_memory_equal(sum, f, SCALAR_BYTES);
+		}
+	uint32_t all[CUSTODY_MAX]; /* every difference from 1 to 31 */
+	for (uint32_t i = 0; i < CUSTODY_MAX; i++)
+		all[i] = i + 1;
+	memset(sum, 0, sizeof sum);
+	for (size_t i = 0; i < CUSTODY_MAX; i++) {
+		assert_true(group_lagrange(lambda, all, CUSTODY_MAX, i));
+		group_poly_eval(f, (const uint8_t(*)[SCALAR_BYTES])coef, 8, all[i]);
+		group_scalar_mul(f, f, lambda);
+		group_scalar_add(sum, sum, f);
+	}
+	assert_memory_equal(sum, coef[0], SCALAR_BYTES);
+}
+
+static void bad_points_are_refused_everywhere(void **state)
+{
+	(void)state;
+	uint8_t s[SCALAR_BYTES], good[POINT_BYTES], bad[POINT_BYTES], out[POINT_BYTES], zeros[POINT_BYTES] = {0};
+	group_scalar_from_u64(s, 5);
+	assert_true(group_mul_base(good, s));
+	for (int q = 0; q < SCENE_BAD_POINTS; q++) {
+		scene_bad_point(q, bad);
+		assert_false(group_point_ok(bad));
+		memset(out, 7, sizeof out);
+		assert_false(group_mul(out, s, bad));
+		assert_memory_equal(out, zeros, POINT_BYTES);
+		assert_false(group_add(out, good, bad));
+		assert_false(group_add(out, bad, good));
+		assert_false(group_sub(out, good, bad));
+		assert_false(group_sub(out, bad, good));
+		assert_memory_equal(out, zeros, POINT_BYTES);
+	}
+}
+
 static void sums_that_vanish_are_refused(void **state)
 {
 	(void)state;
@@ -106,5 +162,7 @@ static const struct CMUnitTest tests[] = {
     cmocka_unit_test(scalars_must_be_canonical_and_not_zero),
     cmocka_unit_test(points_have_one_encoding),
     cmocka_unit_test(sums_that_vanish_are_refused),
+    cmocka_unit_test(lagrange_interpolates_at_any_number),
+    cmocka_unit_test(bad_points_are_refused_everywhere),
 };
 SCENE_MAIN(tests)

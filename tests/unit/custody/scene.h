@@ -123,7 +123,7 @@ static inline void scene_add_order(uint8_t s[static SCALAR_BYTES])
 }
 
 /* Encodings that every point field must refuse: identity, not canonical, negative, not on the curve. */
-#define SCENE_BAD_POINTS 5
+#define SCENE_BAD_POINTS 7
 static inline void scene_bad_point(int which, uint8_t p[static POINT_BYTES])
 {
 	static const char *const bad[SCENE_BAD_POINTS] = {
@@ -131,7 +131,11 @@ static inline void scene_bad_point(int which, uint8_t p[static POINT_BYTES])
 	    "edffffffffffffffffffffffffffffffffffffffffffffffffffffffffffff7f", /* RFC 9496 A.2, not canonical */
 	    "0100000000000000000000000000000000000000000000000000000000000000", /* RFC 9496 A.2, negative */
 	    "26948d35ca62e643e26a83177332e6b6afeb9d08e4268b650f1f5bbd8d81d371", /* RFC 9496 A.2, not square */
-	    "ffffffffffffffffffffffffffffffffffffffffffffffffffffffffffffffff"};
+	    "ffffffffffffffffffffffffffffffffffffffffffffffffffffffffffffffff",
+	    /* second encodings, which the library takes: the identity's and the base point's with the highest bit set
+	     */
+	    "0000000000000000000000000000000000000000000000000000000000000080",
+	    "e2f2ae0a6abc4e71a884a961c500515f58e30b6aa582dd8db6a65945e08d2df6"};
 	unhex(bad[which], p, POINT_BYTES);
 }
 
