@@ -41,7 +41,7 @@ programs   := $(BUILD)/quietbell $(BUILD)/quietbelld $(BUILD)/quietbell-driver
 
 # A failed recipe must not leave a half-written file behind.
 .DELETE_ON_ERROR:
-.PHONY: all lib unit test-programs outside system test check lint arrows format deps demo bench blind fuzz sanitize valgrind install clean
+.PHONY: all lib libs unit test-programs outside system test check lint arrows format deps demo bench blind fuzz sanitize valgrind install clean
 all: $(programs)
 lib: $(lib)
 
@@ -127,13 +127,20 @@ sanitize:
 valgrind: $(unit_bin)
 	@tests/valgrind $(unit_bin)
 
+# Everything once more for libFuzzer, in a build directory of its own; then one program a target.
 FUZZ_SECONDS ?= 30
-fuzz_bin := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzz/%,$(wildcard tests/fuzz/*_fuzz.c))
-$(BUILD)/fuzz/%: tests/fuzz/%.c
-	@mkdir -p $(@D)
-	clang -std=c17 -D_GNU_SOURCE -I. -O1 -g -fsanitize=fuzzer,address,undefined -fno-sanitize-recover=all -o $@ $< \
-	  $(foreach r,$(ROOMS),$(wildcard server/$(r)/*.c)) $(LIBS_COMMON)
-fuzz: $(fuzz_bin)
+fuzz_flags := -O1 -g -fsanitize=address,undefined -fno-sanitize-recover=all
+fuzz_bin   := $(patsubst tests/fuzz/%.c,$(BUILD)/fuzz/%,$(wildcard tests/fuzz/*_fuzz.c))
+fuzz_libs  := $(BUILD)/fuzz/lib/libquietbell-client.a $(BUILD)/fuzz/lib/libquietbell.a
+.PHONY: fuzz-libs fuzz-programs
+libs: $(lib) $(lib_client)
+fuzz-libs:
+	@$(MAKE) -s BUILD=$(BUILD)/fuzz/lib CC="$(FUZZ_CC)" CFLAGS="$(fuzz_flags) -fsanitize=fuzzer-no-link" WARN= SAFE=-fPIE libs
+FUZZ_CC ?= clang
+$(BUILD)/fuzz/%: tests/fuzz/%.c fuzz-libs
+	@clang -std=c17 -D_GNU_SOURCE -I. $(fuzz_flags) -fsanitize=fuzzer -o $@ $< $(fuzz_libs) $(LIBS_CLIENT) $(LIBS_COMMON)
+fuzz-programs: $(fuzz_bin)
+fuzz: fuzz-programs
 	@tests/fuzz/run $(FUZZ_SECONDS) $(fuzz_bin)
 
 # Figures, never pass or fail: each operation beside the bare library calls that it needs, in one run.
