@@ -124,8 +124,9 @@ sanitize:
 	$(MAKE) BUILD=$(BUILD)/asan CFLAGS="-O1 -g -fno-omit-frame-pointer" SAFE=-fPIE \
 	  EXTRA="-fsanitize=address,undefined -fno-sanitize-recover=all" \
 	  TEST_ROOMS="$(ROOMS) store ops api client" unit
+# taint_test runs itself there, with what it plants.
 valgrind: $(unit_bin)
-	@tests/valgrind $(unit_bin)
+	@tests/valgrind $(filter-out %/taint_test,$(unit_bin))
 
 # Everything once more for libFuzzer, in a build directory of its own; then one program a target.
 FUZZ_SECONDS ?= 30

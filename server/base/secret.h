@@ -23,6 +23,14 @@ const uint8_t *secret_view(const struct secret *s);
 size_t secret_size(const struct secret *s);
 void secret_free(struct secret **s); /* wipes, nulls */
 
+/*
+ * From here on these bytes, or this verdict, are no secret any more: they go out, or what is done next shows them. Does
+ * nothing but in the test that follows secrets through this code (tests/unit/custody/taint_test.c): there everything
+ * that comes from a secret and was not published may neither decide a branch nor an address.
+ */
+void secret_publish(const void *p, size_t n);
+bool secret_verdict(bool b);
+
 void wipe(void *p, size_t n);
 bool same_bytes(const void *a, const void *b, size_t n); /* constant time */
 void random_bytes(void *p, size_t n);

@@ -16,6 +16,7 @@ void aead_seal(struct transcript *t, const void *ad, size_t ad_n, const uint8_t 
 	transcript_end(t, material);
 	CHECK(crypto_aead_xchacha20poly1305_ietf_encrypt(out, NULL, plain, n, ad, ad_n, NULL, material + 32,
 	                                                 material) == 0);
+	secret_publish(out, n + AEAD_TAG_BYTES);
 	wipe(material, sizeof material);
 }
 
@@ -25,6 +26,7 @@ bool aead_open(struct transcript *t, const void *ad, size_t ad_n, const uint8_t 
 	transcript_end(t, material);
 	bool ok = n >= AEAD_TAG_BYTES && crypto_aead_xchacha20poly1305_ietf_decrypt(out, NULL, NULL, ct, n, ad, ad_n,
 	                                                                            material + 32, material) == 0;
+	ok = secret_verdict(ok);
 	if (!ok && n > AEAD_TAG_BYTES)
 		memset(out, 0, n - AEAD_TAG_BYTES);
 	wipe(material, sizeof material);
@@ -43,8 +45,9 @@ void pad_content(const void *content, size_t n, size_t capacity, uint8_t *out)
 
 static bool content_length(const uint8_t *padded, size_t capacity, size_t *n)
 {
+	secret_publish(padded, 4); /* its reader goes on with as many bytes */
 	*n = (size_t)padded[0] | (size_t)padded[1] << 8 | (size_t)padded[2] << 16 | (size_t)padded[3] << 24;
-	return *n <= capacity && sodium_is_zero(padded + 4 + *n, capacity - *n);
+	return *n <= capacity && secret_verdict(sodium_is_zero(padded + 4 + *n, capacity - *n) == 1);
 }
 
 bool unpad_content(const uint8_t *padded, size_t capacity, struct buf *out)

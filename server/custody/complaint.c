@@ -49,6 +49,7 @@ enum qb_status complaint_dealing_make(const struct dealing *g, const struct deal
 		return qb_fail(e, QB_RANGE, "complaint", NULL, "this key is not custodian %u's", by);
 	if (!group_mul(z, secret_view(me->exchange), d->ephemeral))
 		return qb_fail(e, QB_CRYPTO, "complaint", NULL, "the dealer's E is not a valid point");
+	secret_publish(z, sizeof z);
 	struct statement s = {g, d, by, z};
 	struct proof_statement statement = {challenge, &s};
 	struct proof_points points = points_of(&s);

@@ -102,6 +102,7 @@ static bool commit(struct deal *d, const uint8_t (*coef)[SCALAR_BYTES])
 	possession_challenge(d, ch);
 	group_scalar_mul(ch, ch, coef[0]);
 	group_scalar_add(d->pop_z, w, ch);
+	secret_publish(d->pop_z, SCALAR_BYTES);
 	wipe(w, sizeof w);
 	wipe(ch, sizeof ch);
 	return ok && group_scalar_ok(d->pop_z);

@@ -17,12 +17,13 @@ _Static_assert(crypto_core_ristretto255_SCALARBYTES == SCALAR_BYTES, "scalar siz
  */
 static bool encoding_ok(const uint8_t p[static POINT_BYTES])
 {
-	return (p[POINT_BYTES - 1] & 0x80) == 0 && !sodium_is_zero(p, POINT_BYTES);
+	bool low = (p[POINT_BYTES - 1] & 0x80) == 0, some = sodium_is_zero(p, POINT_BYTES) == 0;
+	return secret_verdict(low & some);
 }
 
 bool group_point_ok(const uint8_t p[static POINT_BYTES])
 {
-	return encoding_ok(p) && crypto_core_ristretto255_is_valid_point(p) == 1;
+	return encoding_ok(p) && secret_verdict(crypto_core_ristretto255_is_valid_point(p) == 1);
 }
 
 bool group_scalar_canonical(const uint8_t s[static SCALAR_BYTES])
@@ -33,18 +34,18 @@ bool group_scalar_canonical(const uint8_t s[static SCALAR_BYTES])
 	bool same = sodium_memcmp(reduced, s, SCALAR_BYTES) == 0;
 	wipe(wide, sizeof wide);
 	wipe(reduced, sizeof reduced);
-	return same;
+	return secret_verdict(same);
 }
 
 bool group_scalar_ok(const uint8_t s[static SCALAR_BYTES])
 {
-	return !sodium_is_zero(s, SCALAR_BYTES) && group_scalar_canonical(s);
+	return secret_verdict(sodium_is_zero(s, SCALAR_BYTES) == 0) && group_scalar_canonical(s);
 }
 
 /* Copies a result out when it is a point we accept. */
 static bool deliver(uint8_t out[static POINT_BYTES], bool done, uint8_t result[static POINT_BYTES])
 {
-	bool ok = done && !sodium_is_zero(result, POINT_BYTES);
+	bool ok = secret_verdict(done) && secret_verdict(sodium_is_zero(result, POINT_BYTES) == 0);
 	if (ok)
 		memcpy(out, result, POINT_BYTES);
 	else
@@ -65,7 +66,9 @@ bool group_mul(uint8_t out[static POINT_BYTES], const uint8_t s[static SCALAR_BY
 bool group_mul_base(uint8_t out[static POINT_BYTES], const uint8_t s[static SCALAR_BYTES])
 {
 	uint8_t r[POINT_BYTES];
-	return deliver(out, group_scalar_ok(s) && crypto_scalarmult_ristretto255_base(r, s) == 0, r);
+	bool ok = deliver(out, group_scalar_ok(s) && crypto_scalarmult_ristretto255_base(r, s) == 0, r);
+	secret_publish(out, POINT_BYTES); /* public keys, commitments: all that is made here is meant to be seen */
+	return ok;
 }
 
 bool group_add(uint8_t out[static POINT_BYTES], const uint8_t a[static POINT_BYTES],

@@ -121,6 +121,7 @@ enum qb_status partial_make_checked(const struct custody_group *g, const struct 
 		return status;
 	if (!group_mul(d, secret_view(share), rec->r))
 		return qb_fail(e, QB_CRYPTO, "opening", NULL, "the record's R is not a valid point");
+	secret_publish(d, sizeof d);
 	struct statement s = {g, rec, authority, i, d};
 	struct proof_statement statement = {challenge, &s};
 	struct proof_points points = {NULL, g->y[i - 1], rec->r, d};

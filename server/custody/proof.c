@@ -22,9 +22,12 @@ bool proof_equal_make(const struct proof_points *points, const struct proof_stat
 	if (!points_ok(points) || !group_scalar_ok(x) || !mul_first(a1, w, points->base1) ||
 	    !group_mul(a2, w, points->base2))
 		return false;
+	secret_publish(a1, sizeof a1); /* whoever checks the proof makes them again */
+	secret_publish(a2, sizeof a2);
 	statement->challenge(statement->state, a1, a2, out->c);
 	group_scalar_mul(cx, out->c, x);
 	group_scalar_add(out->z, w, cx);
+	secret_publish(out->z, SCALAR_BYTES);
 	wipe(cx, sizeof cx);
 	return group_scalar_ok(out->c) && group_scalar_ok(out->z);
 }

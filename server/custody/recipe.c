@@ -23,6 +23,7 @@ void recipe_key_commitment(const uint8_t campaign[static CAMPAIGN_ID_BYTES], uin
 	transcript_u64(&t, slot);
 	transcript_field(&t, slot_key, SLOT_KEY_BYTES);
 	transcript_end(&t, out);
+	secret_publish(out, SLOT_KEY_COMMITMENT_BYTES);
 }
 
 enum qb_status recipe_key_check(const uint8_t campaign[static CAMPAIGN_ID_BYTES], uint64_t slot,

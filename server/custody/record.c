@@ -189,6 +189,7 @@ static enum qb_status seal(const struct custody_group *g, const struct record_he
 	if (!group_mul_base(big_r, r) || !group_mul(big_w, r, g->g2) || !group_mul(z, r, g->s))
 		return qb_fail(e, QB_CRYPTO, "sealed record", NULL,
 		               "r is not a valid scalar, or the group key is not a point");
+	secret_publish(big_w, sizeof big_w);
 	/* In place: all of the record's room is made before its plaintext is written there and encrypted over itself.
 	 */
 	size_t capacity = custody_fixed_size(h->type), from = out->len;

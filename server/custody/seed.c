@@ -17,6 +17,7 @@ void seed_commit(const uint8_t ctx[static 64], uint64_t sealing_attempt, uint64_
 	transcript_u64(&t, who);
 	transcript_field(&t, contribution, CONTRIBUTION_BYTES);
 	transcript_end(&t, out);
+	secret_publish(out, 64);
 }
 
 bool seed_commit_matches(const uint8_t ctx[static 64], uint64_t sealing_attempt, uint64_t who,
