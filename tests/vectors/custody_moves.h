@@ -1,0 +1,215 @@
+/*
+ * Resharing, repair, paper and words as made by make_custody_moves.py, independently of server/. Hexadecimal but for the text.
+ */
+#ifndef QB_VECTORS_CUSTODY_MOVES_H
+#define QB_VECTORS_CUSTODY_MOVES_H
+
+static const char moves_s[] =
+	"088c5f75a3cdea88db0bce48d7c26893f72cae26aede79f6ca9b7216fe78164b";
+static const char moves_y[] =
+	"921a181f1081c3938a9feb61a45d0ec45124d06f9e8a1e1b50f6a32223edc66a64699d5133f8edb4e8d60799c6b6e9ec"
+	"d3347ca110db1944458c43a8535e636d76a81801643330508ba9309d651658635f61307e5df862ad5e645e84f561a161";
+static const char moves_share_2[] =
+	"7de9431e641c97d024209ffbfc7a8872685ef7225521fec3c40b9ba5a49b340e";
+static const char moves_reshare_ctx[] =
+	"37dd320f7b4eb518ca2ea1aae5f0717f06897325bff1ce3ce71c8edf98655782a8097035f2b4f21f3dced8688f40a803"
+	"a5cc60f556d2ec2ce2e96d7ea451f395";
+static const char moves_reshare_deal_1[] =
+	"5142533101000000040000000300000037dd320f7b4eb518ca2ea1aae5f0717f06897325bff1ce3ce71c8edf98655782"
+	"a8097035f2b4f21f3dced8688f40a803a5cc60f556d2ec2ce2e96d7ea451f395921a181f1081c3938a9feb61a45d0ec4"
+	"5124d06f9e8a1e1b50f6a32223edc66aee6091080a2fe0cb3d9231d72b71c167b6c470556b8e11e1ed25d7138e336833"
+	"b68b37f9bdd92c37ad591aa8bbc11b203eeeb3f9b6ce57b45609572428bc7b3b4a6329820ba58899af4b46c97e17eadd"
+	"2b54d29bdd0a9c223a64d0439dca2346c43e821854cc8c6e6aec4613b3d5959b4f038078abf0a5db1b4023ea345da60b"
+	"327c6d9c0e14d90f367548abd47d0b077e5a8646065789833c6ea27f6db19c732de34ba907e854d6834ab4557cd3aadc"
+	"1bfb91f6136d7c79b7b18fcad6fcb41ce957611e6674a0f812b668fc43aebe2a072b226b906aaa6d57d2a6b5eecdd81f"
+	"f6a99fd897fa3cc76d3c7d1be4908461885a34035c838f8496c87dd675886626dfe23b7f1f949c3c32a9b2172af2daec"
+	"87a8aafcbfde159cf435aa1b7d6406f8818ca5098c03af256ca8917ad1e62390661469851e992a8db9f641bd3fcf567c"
+	"7673c7edb957662a65b42de0de602b5e2338437c69cd756f2c34f47c9fa9a5d4e843d2922bab1e286e87fd66d86f1e4d"
+	"3f38facf1dea6f2be24991cb38ed6a9cd4109ce85305d1626a9e4842391973fc996c153edc07b6e8d9e5610cf641ea09";
+static const char moves_reshare_deal_3[] =
+	"5142533103000000040000000300000037dd320f7b4eb518ca2ea1aae5f0717f06897325bff1ce3ce71c8edf98655782"
+	"a8097035f2b4f21f3dced8688f40a803a5cc60f556d2ec2ce2e96d7ea451f39576a81801643330508ba9309d65165863"
+	"5f61307e5df862ad5e645e84f561a1618a3433163b8763967f2b8595a8e559ff4222f825271433fcb40c42eae61b783a"
+	"9af7df7bdbed7099c92638514b1dfc66985b329c18e1694c88fc817ce735bf2878a2e80b119b07ced246380e01df4169"
+	"88de885fa0c69b9b5252faa51e96ee6d695f84b8d4b0947df0711868e85495d71e3845b1812eb22d47e777a0e487f004"
+	"524942de2f9ecba07002e6d38a4488c2e42ccd76329a990f5838b4af7bbcc90b88469a4a0fcb8226ce880a05c7d3ed1c"
+	"236a36f8a51751f9fd95c50d1592a5948cc158b38fb9f75b04e516796f63038ebb45fbf441e01114e2a5e5dd636045a2"
+	"43c61540e79ba8830b9bbe4b8f6ba1c82478008ebdff1ddd1bced52bba5aa06552bc557146d1978cdbed0b807297923e"
+	"0c53919de1069f473c08f29b2c1237d43ba126d9fc3774e52a628f3f7f4816fb69987d4350d5d1d6f409cb0f501ef1d6"
+	"4a4374b0813bcb26e0270c61262a222d12be4bf3834d7a42e1f954f6384abd298b49e319617098f428e6c77d8c7f1e0f"
+	"164f9b8b3dbd94c8023780e2fc45defb8f7d0f4d9623ab57d8921861d772622db149f46de9c262f6cb9ee70f51ebb800";
+static const char moves_reshare_th[] =
+	"77f737773fdc2eadb5ac0adfe15b918b279d8c11ae336f77d0a32efe393479c99e1e2622b191be643d655c463a5ad5a4"
+	"864ad3aae2ad59f9c8ff1a48af4b56e8";
+static const char moves_reshare_shares[] =
+	"df8a8aa5e48132a113361b52b84b5412e514bf689d5b85b8f076d8e50e7ee3021259c2a6a2960a987aac286559fc8dd7"
+	"e7cc3d9853bdc2b597ff808b72fc9802c14b005a09b0b08e5404a6331b61c6a4194cccef91405ea65c300a4ae4eda407"
+	"ff8e4e62fe6a122dcba09b1a1f801e657a926a6f58e5578a3f09742164520702";
+static const char moves_reshare_y[] =
+	"74df7bbb0a29186276d35a0794507353bd8a520b552fec10fa2abcbda799bf5438a30ae4a792c9bcb79f707e4152f0de"
+	"73782185c492f79ecc5c05e169bb880da2e0807abdce379325ae555f390e5a02b3ddf86c863b73a9c2476b71254ecd60"
+	"c616213ef6564651e2fe961b73f9a184ff868b49f36a579f338ac861793c3336";
+static const char moves_reshare_certificate[] =
+	"627002bc378b03ab998c6f933710cde2ec4376a0721b0a6ba5010add6f35151734a4a0fad272666f60560105330c075a"
+	"228ed981220d2c3a7d1c1fa57f4610c1";
+static const char moves_repair_ctx[] =
+	"6a4811d5425796cf04100d30e219ea1812587d0a0c9d8bfe3ed08045128be8ed54634cdcdac37209e7fa0dd97a0ee233"
+	"06cbbf2aab35203b0023bbd8940a39f7";
+static const char moves_repair_split_1[] =
+	"5142463101000000020000006a4811d5425796cf04100d30e219ea1812587d0a0c9d8bfe3ed08045128be8ed54634cdc"
+	"dac37209e7fa0dd97a0ee23306cbbf2aab35203b0023bbd8940a39f7aaf02ea1812e92abd8a25c039042ac40da3be02c"
+	"85529a4c6ba55c87548d8e7ad8fcac21b65bb20376a5c3d1956ac837456956b0ef9b6c3a2e12f26e4a9df869a6771703"
+	"6ed153b47fbd8d6c4a36f8bdbf69c59e38d89a754bc611d08136df679286b2fd1f734ca1113c1914339d5566966d47cf"
+	"539f3eceb6291dcb10a319628a5e655506fe27d8a433061ba04ec69450fb930633c1e2b7d581d793bfc0260f3934f7e7"
+	"f9d0f0837f9efee1f3fcab55fccd43da5da953fb8ce35218f9e39a93ef2a8c406cfc744b99e10ca498d63869c7c0ff95"
+	"ff869dada11eda057ae0f1d21341501ba89e982ad453374ce385350929d050dd762b317dfd11ea6522b0ac0a";
+static const char moves_repair_split_3[] =
+	"5142463103000000020000006a4811d5425796cf04100d30e219ea1812587d0a0c9d8bfe3ed08045128be8ed54634cdc"
+	"dac37209e7fa0dd97a0ee23306cbbf2aab35203b0023bbd8940a39f76c827c484a9f24c1ae0f34e0d9ccce3d9a9615a1"
+	"084ecb5f80bffe6cf6d08155ee364a7a34e032d0191a8b730ce27bf035a34874c4041fc85547896ee6dbb4723c257952"
+	"93ec081cd8f7689c9d52a7f8b4fa2d8da3b0c6bf912fe634455daf1c6dee8a759722aa2e93e1adedce9bd74569f0dad1"
+	"b81a876d28588e88441e88a8b4600d488b8748c38072029d8a52b5a3d55d0a182fcdcea0790f518ae5584e04d674de6b"
+	"fca1f6f3068305845a31ab347691cf884e58baba8893b28a421d024a06cfc9c029b2da3f0ed52f29ca8efe1b4b9e75fc"
+	"6f6d2f32cc3101e7dd3c6131d0d6fd5ade07e776d991811d49b0bdf412b5034d335e411988a2d22cd099870c";
+static const char moves_repair_sum_1[] =
+	"514247310100000034d25f2d8e0eeedc60550895c528362fd6c926a6338b116634c48217be1ad40a2d89a14e33c78f4c"
+	"ae4c3d5f90b1d2709237df42ffaeff33f3cf3a8ee5851b224ab090fc801d8bea85207fcaf056a7b5748e3df3c5268d65"
+	"98e3812e9bde8e265e50991b2a3eef0aabec581490c6faf012ce1d44e02745489b28de4a02e2a358cc19f47e5f353cc1"
+	"83a842a08d0f80cc4b0bff203fc3f1810e72ec97c0382ef7da67eb1b5fe176e2ff716253a1a7d0f3afee1577abc21bfa"
+	"2f29fee61bbda92f87ebca358a5a161e05fa387a1fc5550b";
+static const char moves_repair_sum_3[] =
+	"514247310300000034d25f2d8e0eeedc60550895c528362fd6c926a6338b116634c48217be1ad40a2d89a14e33c78f4c"
+	"ae4c3d5f90b1d2709237df42ffaeff33f3cf3a8ee5851b22107058cc8413d6e82056e3e512b4bb5f7ed2a7826512a5f8"
+	"e3870e95f5743f786a7db408d6328dac2116267f9e59e1636299290aa2944b26bbf6be5b9caad0420c19ec148e580266"
+	"1cf9b0366150330e77a22df1383cca0b3e7b564891b3c3c955a4bf3d778d4a7682ba9d2478aeb16331db6bf10f11f4fa"
+	"4673578cc81478c055ebc149e086fe5c6c61fd0cc809e505";
+static const char moves_paper[] =
+	"# a copy\n"
+	"01  ACPJ AFAA AREA HHKP NYTF XNAX  WFHA\n"
+	"02  EEHM KWPD TKXT CCEJ HRMA PHTP  NKFR\n"
+	"03  XYCF ENHX MEPM TWYD CKET JCMJ  FFEN\n"
+	"04  PRWA YHCP EYJF MNPX WEYM CWFD  HRHN\n"
+	"05  JKMT RCWJ YRDA FHJP MYRF WNYX  XXPR\n"
+	"06  DEFM JWND RKWT ACDJ FRKA NHRP  XFRK\n"
+	"07  WYAF DNFX KENM RWXD AKDT HCKJ  JWRN\n"
+	"08  NRTA XHAP DYHF KNNX TEXM AWED  FDFA\n"
+	"09  HKKT PCTJ XRCA EHHP KYPF TNXX  PTWR\n"
+	"10  CEEM HWMD PKTT YCCJ ERJA MHPP  KCMX\n"
+	"11  TYYF CNEX JEMM PWWD YKCT FCJJ  EKJN\n"
+	"12  MRRA WHYP CYFF JNMX REWM YWDD  NRMF\n"
+	"13  FKJT NCRJ WRAA DHFP JYNF RNWX  FDDP\n"
+	"14  AEDM FWKD NKRT XCAJ DRHA KHNP  RCFD\n"
+	"15  RYXF ANDX HEKM NWTD XKAT ECHJ  AAKW\n"
+	"16  KRPA THXP AYEF HNKX PETM XWCD  YRJM\n"
+	"17  EKHT MCPJ TRYA CHEP HYMF PNTX  RMCM\n"
+	"18  YECM EWJD MKPT WCYJ CRFA JHMP  NAYH\n"
+	"19  PYWF YNCX FEJM MWRD WKYT DCFJ  TTPP\n"
+	"20  JRNA RHWP YYDF FNJX NERM WWAD  NPET\n"
+	"21  DKFT KCNJ RRXA AHDP FYKF NNRX  APEC\n"
+	"22  XEAM DWHD KKNT TCXJ AREA HHKP  RFHP\n"
+	"23  NYTF XNAX EEHM KWPD TKXT CCEJ  HWAE\n"
+	"24  HRMA PHTP XYCF ENHX MEPM TWYD  TJMW\n"
+	"25  CKET JCMJ PRWA YHCP EYJF MNPX  TMYE\n"
+	"26  WEYM CWFD JKMT RCWJ YRDA FHJP  PCWC\n"
+	"27  MYRF WNYX DEFM JWND RKWT ACDJ  XTYE\n"
+	"28  FRKA NHRP WYAF DNFX KENM RWXD  XYYC\n"
+	"29  AKDT HCKJ NRTA XHAP DYHF KNNX  MDDM\n"
+	"30  TEXM AWED HKKT PCTJ XRCA EHHP  JXTX\n"
+	"31  KYPF TNXX CEEM HWMD PKTT YCCJ  TCDK\n"
+	"32  ERJA MHPP TYYF CNEX JEMM PWWD  MCYW\n"
+	"33  YKCT FCJJ MRRA WHYP CYFF JNMX  KJYP\n"
+	"34  REWM YWDD FKJT NCRJ WRAA DHFP  AXHF\n"
+	"35  JYNF RNWX AEDM FWKD NKRT XCAJ  WWDJ\n"
+	"36  DRHA KHNP RYXF ANDX HEKM NWTD  TDFJ\n"
+	"37  XKAT ECHJ KRPA THXP AYEF HNKX  KKRF\n"
+	"38  PETM XWCD EKHT MCPJ TRYA CHEP  KWPM\n"
+	"39  HYMF PNTX YECM EWJD MKPT WCYJ  YFPJ\n"
+	"40  CRFA JHMP PYWF YNCX FEJM MWRD  WRHY\n"
+	"41  WKYT DCFJ JRNA RHWP YYDF FNJX  EHTF\n"
+	"42  NERM WWAD DKFT KCNJ RRXA AHDP  XMNC\n"
+	"43  FYKF NNRX XEAM DWHD KKNT TCXJ  PXKJ\n"
+	"44  AREA HHKP NYTF XNAX EEHM KWPD  ADNR\n"
+	"45  TKXT CCEJ HRMA PHTP XYCF ENHX  WREH\n"
+	"46  MEPM TWYD CKET JCMJ PRWA YHCP  DMHW\n"
+	"47  EYJF MNPX WEYM CWFD JKMT RCWJ  NNJD\n"
+	"48  YRDA FHJP MYRF WNYX DEFM JWND  JDKK\n"
+	"49  RKWT ACDJ FRKA NHRP WYAF DNFX  DCAK\n"
+	"50  KENM RWXD AKDT HCKJ NRTA XHAP  ANXP\n"
+	"51  DYHF KNNX TEXM AWED HKKT PCTJ  HHRH\n"
+	"52  XRCA EHHP KYPF TNXX CEEM HWMD  AEDE\n"
+	"53  PKTT YCCJ ERJA MHPP TYYF CNEX  NEDX\n"
+	"54  JEMM PWWD YKCT FCJJ MRRA WHYP  DWFH\n"
+	"55  CYFF JNMX REWM YWDD FKJT NCRJ  TFCT\n"
+	"56  WRAA DHFP JYNF RNWX AEDM FWKD  HYND\n"
+	"57  NKRT XCAJ DRHA KHNP RYXF ANDX  HCXT\n"
+	"58  HEKM NWTD XKAT ECHJ KRPA THXP  EMTX\n"
+	"59  AYEF HNKX PETM XWCD EKHT MCPJ  KHXT\n"
+	"60  TRYA CHEP HYMF PNTX YECM EWJD  KJXX\n"
+	"61  MKPT WCYJ CRFA JHMP PYWF YNCX  CREK\n"
+	"62  FEJM MWRD WKYT DCFJ JRNA RHWP  YKWC\n"
+	"63  YYDF FNJX NERM WWAD DKFT KCNJ  HMEM\n"
+	"64  RRXA AHDP FYKF NNRX XEAM DWHD  FDED\n"
+	"65  KKNT TCXJ AREA HHKP NYTF XNAX  RHEH\n"
+	"66  EEHM KWPD TKXT CCEJ HRMA PHTP  TWNR\n"
+	"67  XYCF ENHX MEPM TWYD CKET JCMJ  CXXN\n"
+	"68  PRWA YHCP EYJF MNPX WEYM CWFD  ACMN\n"
+	"69  JKMT RCWJ YRDA FHJP MYRF WNYX  RFKR\n"
+	"70  DEFM JWND RKWT ACDJ FRKA NHRP  RXJK\n"
+	"71  WYAF DNFX KENM RWXD AKDT HCKJ  EKJN\n"
+	"72  NRTA XHAP DYHF KNNX TEXM AWED  CMNA\n"
+	"73  HKKT PCTJ XRCA EHHP KYPF TNXX  YJAR\n"
+	"74  CEEM HWMD PKTT YCCJ ERJA MHPP  DRHX\n"
+	"75  TYYF CNEX JEMM PWWD YKCT FCJJ  JWRN\n"
+	"76  MRRA WHYP CYFF JNMX REWM YWDD  TCHF\n"
+	"77  FKJT NCRJ WRAA DHFP JYNF RNWX  CMYP\n"
+	"78  AEDM FWKD NKRT XCAJ DRHA KHNP  XRND\n"
+	"79  RYXF ANDX HEKM NWTD XKAT ECHJ  HPPW\n"
+	"80  KRPA THXP AYEF HNKX PETM XWCD  PCRM\n"
+	"81  EKHT MCPJ TRYA CHEP HYMF PNTX  XDTM\n"
+	"82  YECM EWJD MKPT WCYJ CRFA JHMP  TPDH\n"
+	"83  PYWF YNCX FEJM MWRD WKYT DCFJ  NJKP\n"
+	"84  JRNA RHWP YYDF FNJX NERM WWAD  TAXT\n"
+	"85  DKFT KCNJ RRXA AHDP FYKF NNRX  HAXC\n"
+	"86  XEAM DWHD KKNT TCXJ AREA HHKP  XXMP\n"
+	"87  NYTF XNAX EEHM KWPD TKXT CCEJ  AKWE\n"
+	"88  HRMA PHTP XYCF ENHX MEPM TWYD  NTHW\n"
+	"89  CKET JCMJ PRWA YHCP EYJF MNPX  NDDE\n"
+	"90  WEYM CWFD JKMT RCWJ YRDA FHJP  YRAC\n"
+	"91  MYRF WNYX DEFM JWND RKWT ACDJ  RJDE\n"
+	"92  FRKA NHRP WYAF DNFX KENM RWXD  RHDC\n"
+	"93  AKDT HCKJ NRTA XHAP DYHF KNNX  WMYM\n"
+	"94  TEXM AWED HKKT PCTJ XRCA EHHP  EFCX\n"
+	"95  KYPF TNXX CEEM HWMD PKTT YCCJ  NRYK\n"
+	"96  ERJA MHPP TYYF CNEX JEMM PWWD  WRDW\n"
+	"97  YKCT FCJJ MRRA WHYP CYFF JNMX  DTDP\n"
+	"98  REWM YWDD FKJT NCRJ WRAA DHFP  HFMF\n"
+	"99  JYNF RNWX AEDM FWKD NKRT XCAJ  MKYJ\n"
+	"100  DRHA KHNP RYXF FHCK RPXE EMCX  FPWM\n"
+	"101  HFWC  XWKT\n";
+static const char moves_fingerprint_words[] =
+	"topaz marble swallow flint farmer pebble quiver quiver pond square cactus laurel bakery eagle pastry lapwing";
+static const char moves_all_words[] =
+	"acorn anchor apple apron attic autumn badger bakery basket beacon bench bishop "
+	"blossom bottle bramble brick bridge broom button cabin cactus canvas carpet castle "
+	"chalk cherry chimney cider circle clay cliff clover cobalt coffee comet copper "
+	"cotton cricket crystal curtain cushion dairy damson dancer dawn desert diamond dolphin "
+	"donkey dragon drum duck dusty eagle earth echo elbow ember engine evening "
+	"exit fabric falcon farmer feather fender ferry fiddle fjord flannel flint forest "
+	"fossil fudge garden garlic geese ginger glacier goblet gravel guitar gully harbour "
+	"harvest hazel hedge helmet herring hollow honey horse hunter iceberg indigo inkwell "
+	"island ivory jelly jewel jigsaw journey juniper kayak kettle kitchen kite ladder "
+	"lamp lantern lapwing laurel lemon lettuce lilac linen lizard lobster locket lunar "
+	"magnet marble meadow melon mercury metal midday milk mirror mitten monday mortar "
+	"mosaic museum music mustard napkin narrow needle nest nickel noodle north nutmeg "
+	"oasis ocean olive onion orange orchard otter oval paddle palace pancake parsley "
+	"pastry pebble pencil pewter piano picnic pigeon pillow planet pond poplar potato "
+	"powder prairie pudding pumpkin purple puzzle quartz quilt quiver rabbit radish railway "
+	"rainbow raven recipe ribbon rooster rope rubber ruby saffron sailor salmon sandal "
+	"saucer scarlet season shadow shell shovel silver skylark sled snow sofa spade "
+	"spinach sponge square stable station steeple stone stream sugar summer sunset swallow "
+	"syrup tangle teapot temple thicket thistle thunder timber toast tomato topaz towel "
+	"tractor trumpet tulip tunnel turnip twig uncle urchin valley vanilla velvet vessel "
+	"village violet volcano voyage waffle wagon walnut wheat window wolf wooden wren "
+	"wrist yogurt zebra zinc";
+
+#endif
