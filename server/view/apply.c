@@ -292,6 +292,14 @@ static enum qb_status apply_campaign_entry(struct view *v, const struct wire_ent
 	return QB_OK;
 }
 
+/* For a role that there is, and in nobody else's name. */
+static bool enrolment_fits(const struct wire_entry *en, bool service)
+{
+	enum wire_role role;
+	return wire_role_parse(wire_entry_text(en, "role"), &role) &&
+	       (service || strcmp(en->by, wire_entry_text(en, "name")) == 0);
+}
+
 /*
  * The name in the text is the author's, and the author's role may author the type: whoever keeps the ledger could
  * otherwise sign as himself in other people's names. The leaf's signature was checked before.
@@ -313,6 +321,8 @@ static enum qb_status check_author(const struct view *v, const struct wire_entry
 		       strcmp(wire_entry_text(en, "role"), "administrator") != 0;
 	else
 		good = strcmp(en->by, p->name) == 0 && (en->type->roles & ROLE_BIT(p->role)) != 0;
+	if (good && strcmp(en->type->type, "enrolment") == 0)
+		good = enrolment_fits(en, service);
 	if (good && p != NULL && en->has_campaign) {
 		hex_encode(id, en->campaign, 16);
 		const struct campaign *c = view_campaign(v, id);

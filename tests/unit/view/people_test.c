@@ -238,6 +238,30 @@ static void nobody_signs_in_another_name(void **state)
 	view_free(&s.v);
 }
 
+/* Found by a fuzz target: a ledger with such an entry ended the reader's program. */
+static void an_enrolment_is_for_a_role_that_there_is_and_for_oneself(void **state)
+{
+	struct scene s;
+	uint8_t id[16];
+	(void)state;
+	set_up(&s);
+	int before = s.v.n_parties;
+	for (int known = 0; known < 2; known++) {
+		const char *by = known ? "ines" : "mbeki";
+		static const char *const roles[] = {"director", "service", "custodian"};
+		for (int i = 0; i < 3; i++) {
+			json_t *j = keys_of(known ? 1 : 50);
+			json_object_set_new(j, "role", json_string(roles[i]));
+			json_object_set_new(j, "name", json_string(i < 2 ? by : "petrov"));
+			json_object_set_new(j, "invitation", json_integer(0));
+			id_of(known ? 1 : 50, id);
+			assert_int_equal(apply_signed(&s, "enrolment", by, id, j), QB_CRYPTO);
+		}
+	}
+	assert_int_equal(s.v.n_parties, before);
+	view_free(&s.v);
+}
+
 static void keys_are_remembered_up_to_a_bound(void **state)
 {
 	struct scene s;
@@ -262,6 +286,7 @@ int main(void)
 	    cmocka_unit_test(a_second_enrolment_starts_the_vouching_anew),
 	    cmocka_unit_test(one_person_is_one_voucher),
 	    cmocka_unit_test(nobody_signs_in_another_name),
+	    cmocka_unit_test(an_enrolment_is_for_a_role_that_there_is_and_for_oneself),
 	    cmocka_unit_test(keys_are_remembered_up_to_a_bound),
 	};
 	return cmocka_run_group_tests(tests, NULL, NULL);
