@@ -29,6 +29,7 @@ struct driver {
 	const struct campaign *campaign; /* owned by follow.view */
 	struct custody_group group;      /* verified from the deals */
 	int station;                     /* position in the plan's network */
+	enum recipe_place place;         /* the station's main host or its spare */
 	struct prekeys *prekeys;
 	struct sink *sink;
 	struct clock_source system; /* the system's clock */

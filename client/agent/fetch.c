@@ -60,8 +60,7 @@ static enum qb_status fetch_key(struct driver *d, int64_t slot, uint8_t key[stat
 static enum qb_status unwrap(struct driver *d, int64_t slot, const uint8_t key[static SLOT_KEY_BYTES],
                              struct drill_recipe *out, struct qb_error *e)
 {
-	const struct recipe_address at = {
-	    .slot = (uint64_t)slot, .station = (uint64_t)d->station, .place = RECIPE_MAIN};
+	const struct recipe_address at = {.slot = (uint64_t)slot, .station = (uint64_t)d->station, .place = d->place};
 	const struct buf *wrapped = &d->recipe[slot % DRIVER_READY_AHEAD];
 	struct secret *prekey = NULL;
 	struct buf content = {0};

@@ -76,9 +76,22 @@ static bool there_already(struct driver *d, bool report, int64_t slot, int numbe
 	return report ? w.reported : w.notes > number;
 }
 
-/* QB_OK: it is there, or was refused for good (and logged); QB_UNREACHABLE: try again. */
-static enum qb_status file_one(struct driver *d, bool report, int64_t slot, int number, const struct buf *content)
+/* A spare host's that came before its turn: again later, unless the main host has taken the slot. */
+static bool before_its_turn(struct filing *f, enum qb_status st)
 {
+	struct watch_slot w;
+	struct qb_error ignored = {0};
+	if (st != QB_CONFLICT || f->d->place != RECIPE_SPARE || watch_slot(f->d, f->slot, &w, &ignored) != QB_OK)
+		return false;
+	f->left = w.host == RECIPE_MAIN;
+	return w.host != RECIPE_SPARE;
+}
+
+/* QB_OK: it is there, or was refused for good (and logged); QB_UNREACHABLE: try again. */
+static enum qb_status file_one(struct filing *f, bool report, int number, const struct buf *content)
+{
+	struct driver *d = f->d;
+	int64_t slot = f->slot;
 	struct qb_error e = {0};
 	char text[24], line[600];
 	enum qb_status st = post(d, report, slot, number, content, &e);
@@ -87,6 +100,8 @@ static enum qb_status file_one(struct driver *d, bool report, int64_t slot, int 
 		log_event(&d->log, LOG_INFO_, report ? "report-filed" : "note-filed", "slot", text, NULL);
 		return QB_OK;
 	}
+	if (before_its_turn(f, st))
+		return QB_UNREACHABLE;
 	log_event(&d->log, LOG_WARN_, report ? "report-not-filed" : "note-not-filed", "slot", text, "why",
 	          qb_error_line(&e, line, sizeof line), NULL);
 	return st == QB_UNREACHABLE ? st : QB_OK;
@@ -119,7 +134,7 @@ void filing_send(struct filing *f)
 		struct buf content = {0};
 		struct qb_error e = {0};
 		CHECK(play_note_encode(&f->note[f->n_sent], &content, &e) == QB_OK);
-		enum qb_status st = file_one(f->d, false, f->slot, f->n_sent, &content);
+		enum qb_status st = file_one(f, false, f->n_sent, &content);
 		buf_wipe(&content);
 		if (st != QB_OK) {
 			back_off(f);
@@ -139,11 +154,11 @@ bool filing_finish(struct filing *f, const struct play_report *report)
 	for (;;) {
 		filing_send(f);
 		if (f->n_sent == f->n_notes && clock_now(&f->d->system) >= f->next_ns) {
-			done = file_one(f->d, true, f->slot, REPORT_NUMBER, &content) == QB_OK;
+			done = file_one(f, true, REPORT_NUMBER, &content) == QB_OK;
 			if (!done)
 				back_off(f);
 		}
-		if (done || watch_stopping(f->d))
+		if (done || f->left || watch_stopping(f->d))
 			break;
 		watch_pause(f->d, true);
 	}

@@ -16,6 +16,7 @@ struct filing {
 	int n_sent;      /* of them the service has, or refused for good */
 	int64_t next_ns; /* no further try before this time of the system clock */
 	int tries;
+	bool left; /* the station's other host has the slot: nothing of this one is filed */
 };
 
 /* notes: how many of the slot the service has already (after a restart); they are not taken in again. */

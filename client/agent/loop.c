@@ -25,6 +25,7 @@ static enum qb_status check_station(struct driver *d, struct qb_error *e)
 	if (station_of_driver(c, d->home.name) != d->station)
 		return qb_fail(e, QB_REFUSED, "--station", "see the plan's parties: drivers", "%s does not drive %s",
 		               d->home.name, d->opt.station);
+	d->place = place_of_driver(c, d->home.name);
 	return QB_OK;
 }
 
@@ -81,7 +82,7 @@ void loop_close(struct driver *d)
 
 static void about_prekeys(const struct driver *d, struct prekeys_for *out)
 {
-	*out = (struct prekeys_for){.place = RECIPE_MAIN, .count = d->campaign->n_slots};
+	*out = (struct prekeys_for){.place = d->place, .count = d->campaign->n_slots};
 	memcpy(out->campaign, d->campaign->id, sizeof out->campaign);
 	snprintf(out->station, sizeof out->station, "%s", driver_station(d)->name);
 }
@@ -93,7 +94,7 @@ static enum qb_status upload(struct driver *d, const struct buf *points, struct 
 	char *path = text_printf("/v1/campaigns/%s/prekeys", d->campaign->name);
 	blake2b_512(hash, points->data, points->len);
 	json_object_set_new(extra, "station", json_string(driver_station(d)->name));
-	json_object_set_new(extra, "place", json_integer(RECIPE_MAIN));
+	json_object_set_new(extra, "place", json_integer(d->place));
 	json_object_set_new(extra, "count", json_integer(d->campaign->n_slots));
 	json_object_set_new(extra, "points_hash", json_hex_new(hash, sizeof hash));
 	enum qb_status st = link_entry(&d->link, "prekeys", d->campaign->id, "", extra, &body, NULL, e);
@@ -121,7 +122,7 @@ static bool entered_points(const struct driver *d, uint8_t hash[static 64])
 		if (strcmp(w.type->type, "prekeys") == 0 &&
 		    memcmp(w.campaign, d->campaign->id, sizeof w.campaign) == 0 &&
 		    strcmp(wire_entry_text(&w, "station"), driver_station(d)->name) == 0 &&
-		    wire_entry_int(&w, "place") == RECIPE_MAIN) {
+		    wire_entry_int(&w, "place") == (int64_t)d->place) {
 			wire_entry_hex(&w, "points_hash", hash, 64);
 			found = true;
 		}
@@ -158,7 +159,8 @@ static enum qb_status ensure_prekeys(struct driver *d, struct qb_error *e)
 			             "the service has one-time keys of this station that are not here");
 		else if (st == QB_NOT_FOUND && d->campaign->state >= C_SEALING)
 			st = qb_fail(e, QB_REFUSED, d->campaign->name, NULL,
-			             "was sealed without one-time keys of this station");
+			             "was sealed without one-time keys of this %s",
+			             d->place == RECIPE_SPARE ? "spare host" : "station");
 		else if (st == QB_NOT_FOUND && (st = prekeys_create(path, &what, &d->home.key, e)) == QB_OK)
 			st = prekeys_open(path, &what, &d->prekeys, e);
 		else if (st != QB_OK)

@@ -19,6 +19,7 @@ struct slot_run {
 	int64_t now_ns;    /* the clock that counts, at the last look */
 	int64_t looked_ns; /* the system's clock, at the last look at the slot */
 	bool seen_once, halt_said;
+	bool left; /* to the station's other host */
 	struct watch_slot seen;
 	struct play play;
 	struct drive drive;
@@ -285,6 +286,11 @@ static bool play_out(struct slot_run *r)
 		if (look(r, &e) == QB_OK || !r->d->link.rehearsal) {
 			if (watch_ended(&r->seen))
 				return false;
+			if (r->seen_once && r->seen.host >= 0 && r->seen.host != (int)r->d->place) {
+				r->left = true;
+				say(r, "slot-left-to-other-host");
+				return false;
+			}
 			if (!begun && r->seen_once) {
 				filing_begin(&r->filing, r->d, r->n, r->seen.notes);
 				begun = true;
@@ -340,6 +346,8 @@ enum qb_status slot_run(struct driver *d, int64_t n, bool *filed, struct qb_erro
 		say(&r, "slot-ends");
 	} else {
 		sink_abandon(d->sink);
+		if (r.left)
+			st = prekeys_erase(d->prekeys, n, e);
 	}
 	end(&r);
 	return st;

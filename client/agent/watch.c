@@ -43,6 +43,16 @@ static enum qb_status read_going(const json_t *obj, enum watch_going *out, struc
 	return QB_OK;
 }
 
+static enum qb_status read_host(const json_t *obj, int *out, struct qb_error *e)
+{
+	const json_t *v = json_object_get(obj, "host");
+	const char *word = json_string_value(v);
+	*out = word == NULL ? -1 : strcmp(word, "spare") == 0 ? RECIPE_SPARE : RECIPE_MAIN;
+	if (!json_is_null(v) && (word == NULL || (*out == RECIPE_MAIN && strcmp(word, "main") != 0)))
+		return qb_fail(e, QB_FORMAT, "slot", NULL, "the service's answer has no 'host'");
+	return QB_OK;
+}
+
 enum qb_status watch_slot_parse(const json_t *doc, int64_t slot, const char *station, struct watch_slot *out,
                                 struct qb_error *e)
 {
@@ -62,6 +72,8 @@ enum qb_status watch_slot_parse(const json_t *doc, int64_t slot, const char *sta
 		st = read_flag(mine, "reported", &out->reported, e);
 	if (st == QB_OK)
 		st = read_going(mine, &out->going, e);
+	if (st == QB_OK)
+		st = read_host(mine, &out->host, e);
 	if (st == QB_OK)
 		st = json_int(mine, "notes", "slot", 0, PLAY_NOTES_MAX, &out->notes, e);
 	if (st == QB_OK && out->stopped)

@@ -14,6 +14,7 @@ struct watch_slot {
 	bool ended;             /* the campaign, before its time */
 	int64_t stopped_gps_ns; /* of the standing stop */
 	enum watch_going going;
+	int host; /* place of the host that plays it; -1 undecided */
 	int64_t notes;
 };
 

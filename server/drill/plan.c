@@ -12,7 +12,7 @@
 #include "server/drill/plan_read.h"
 
 static const char *const phases[] = {"observing", "engineering", "rehearsal", NULL};
-static const char *const duties[DUTIES] = {"custodian", "reviewer", "operator", "liaison", "driver", "analyst"};
+static const char *const duties[DUTIES] = {"custodian", "reviewer", "operator", "liaison", "driver", "spare driver", "analyst"};
 
 const char *plan_phase_word(enum plan_phase p)
 {
@@ -128,9 +128,10 @@ static void read_people(struct plan_reader *r, struct yaml_node *parties, const 
 
 /* {station: person} or {pipeline: person}. */
 static void read_posts(struct plan_reader *r, struct yaml_node *parties, const char *key, enum plan_duty duty,
-                       struct drill_plan *plan)
+                       bool needed, struct drill_plan *plan)
 {
-	struct yaml_node *map = read_need(r, parties, key, YAML_MAP);
+	struct yaml_node *map =
+	    needed ? read_need(r, parties, key, YAML_MAP) : read_optional(r, parties, key, YAML_MAP);
 	if (map == NULL)
 		return;
 	if (map->n_members < 1 || map->n_members > PLAN_MAX_PEOPLE)
@@ -157,8 +158,9 @@ static void read_parties(struct plan_reader *r, struct yaml_node *root, struct d
 	read_people(r, m, "reviewers", DUTY_REVIEWER, true, plan);
 	read_people(r, m, "operators", DUTY_OPERATOR, true, plan);
 	read_people(r, m, "liaisons", DUTY_LIAISON, false, plan);
-	read_posts(r, m, "drivers", DUTY_DRIVER, plan);
-	read_posts(r, m, "pipelines", DUTY_ANALYST, plan);
+	read_posts(r, m, "drivers", DUTY_DRIVER, true, plan);
+	read_posts(r, m, "spare_drivers", DUTY_SPARE, false, plan);
+	read_posts(r, m, "pipelines", DUTY_ANALYST, true, plan);
 }
 
 static void read_drills(struct plan_reader *r, struct yaml_node *root, struct drill_plan *plan)

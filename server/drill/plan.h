@@ -30,6 +30,7 @@ enum plan_duty {
 	DUTY_OPERATOR,
 	DUTY_LIAISON,
 	DUTY_DRIVER,  /* of: the station */
+	DUTY_SPARE,   /* of: the station whose driver this host stands in for */
 	DUTY_ANALYST, /* of: the pipeline */
 	DUTIES
 };

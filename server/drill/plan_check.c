@@ -123,8 +123,8 @@ static void check_matching(struct plan_checker *c)
 /* The node where a person was named. */
 static const struct yaml_node *person_node(const struct plan_checker *c, const struct plan_person *p)
 {
-	static const char *const keys[DUTIES] = {"custodians", "reviewers", "operators",
-	                                         "liaisons",   "drivers",   "pipelines"};
+	static const char *const keys[DUTIES] = {"custodians", "reviewers",     "operators", "liaisons",
+	                                         "drivers",    "spare_drivers", "pipelines"};
 	const struct yaml_node *list = check_node(c, NULL, "parties", keys[p->duty], NULL);
 	for (int i = 0; i < list->n_members; i++) {
 		const struct yaml_node *m = list->members[i];
@@ -179,7 +179,8 @@ static void check_stations(struct plan_checker *c)
 			          "station '%s' of %s has no driver", name, p->network_file);
 	}
 	for (int i = 0; i < p->n_people; i++) {
-		if (p->person[i].duty == DUTY_DRIVER && plan_station(p, p->person[i].of) < 0)
+		if ((p->person[i].duty == DUTY_DRIVER || p->person[i].duty == DUTY_SPARE) &&
+		    plan_station(p, p->person[i].of) < 0)
 			check_add(c, PLAN_REFUSAL, "driver-station", person_node(c, &p->person[i]),
 			          "use a station of the network", "the station '%s' is not in %s", p->person[i].of,
 			          p->network_file);

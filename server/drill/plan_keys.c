@@ -22,6 +22,8 @@ static const struct plan_key keys[] = {
     {"parties.operators", "", "1 to 64 names", REQUIRED, "Control room: hold, lift, stop."},
     {"parties.liaisons", "", "0 to 64 names", "none", "May ask 'is this a drill?' and see nothing else."},
     {"parties.drivers", "", "{station: name}, one for every station", REQUIRED, "Who runs the driver at each station."},
+    {"parties.spare_drivers", "", "{station: name}", "none",
+     "A second host of a station, with one-time keys of its own, that plays when the first does not."},
     {"parties.pipelines", "", "{pipeline: name}", REQUIRED, "The analyst who answers for each pipeline."},
     {"drills.expected_live", "", "0 to the number of slots", REQUIRED,
      "Mean number of live slots when the campaign is not empty by design."},

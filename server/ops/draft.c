@@ -19,11 +19,11 @@ static enum qb_status check_people(struct ops *o, const struct drill_plan *plan,
 	for (int i = 0; i < plan->n_people; i++) {
 		const struct plan_person *p = &plan->person[i];
 		const struct view_party *party = view_party_named(&o->view, p->name);
-		if (party == NULL || party->retired ||
-		    strcmp(wire_role_word(party->role), plan_duty_word(p->duty)) != 0)
+		const char *role = p->duty == DUTY_SPARE ? wire_role_word(ROLE_DRIVER) : plan_duty_word(p->duty);
+		if (party == NULL || party->retired || strcmp(wire_role_word(party->role), role) != 0)
 			return qb_fail(e, QB_REFUSED, "plan: parties",
 			               "invite and enrol every person in the role of the plan first",
-			               "'%s' is not enrolled as %s", p->name, plan_duty_word(p->duty));
+			               "'%s' is not enrolled as %s", p->name, role);
 	}
 	return people_check_plan(o, plan, e);
 }

@@ -3,13 +3,18 @@
  * start - lead on, sealed notes and reports. All of it alike for live and null.
  */
 #include <string.h>
+#include <time.h>
 
 #include "server/base/alloc.h"
+#include "server/base/check.h"
 #include "server/base/text.h"
 #include "server/ops/internal.h"
 
-static enum qb_status my_station(const struct campaign *c, const struct ops_call *call, int *out, struct qb_error *e)
+#define SPARE_WAITS_NS (3 * NS_PER_S) /* a driver that plays looks at its slot several times a second */
+
+static enum qb_status my_station(struct campaign *c, const struct ops_call *call, int *out, struct qb_error *e)
 {
+	driver_spoke(c, call->who);
 	*out = station_of_driver(c, call->who->name);
 	return *out >= 0 ? QB_OK : qb_fail(e, QB_REFUSED, NULL, NULL, "%s drives no station here", call->who->name);
 }
@@ -32,8 +37,9 @@ static enum qb_status check_prekeys(const struct campaign *c, const struct accep
 		return st;
 	if (c->state >= C_SEALING)
 		return qb_fail(e, QB_CONFLICT, "prekeys", NULL, "the campaign is %s already", campaign_word(c));
-	if (place < 0 || place >= RECIPE_PLACES)
-		return qb_fail(e, QB_RANGE, "prekeys: place", "0 (main) or 1 (spare)", "is out of range");
+	if (place != place_of_driver(c, a->entry.by))
+		return qb_fail(e, QB_REFUSED, "prekeys: place", "0 for a station's driver, 1 for its spare",
+		               "%lld is not %s's place", (long long)place, a->entry.by);
 	if (c->prekeys[station][place])
 		return qb_fail(e, QB_CONFLICT, "prekeys", NULL, "keys for this station and place are here already");
 	if (wire_entry_int(&a->entry, "count") != c->n_slots || points->len != (size_t)c->n_slots * POINT_BYTES)
@@ -83,14 +89,14 @@ enum qb_status case_prekeys(struct ops *o, struct campaign *c, const struct ops_
 
 /* Fetching before the freeze is how a station says that it is ready for the slot. */
 static enum qb_status note_readiness(struct ops *o, const struct campaign *c, int64_t slot, const char *station,
-                                     struct qb_error *e)
+                                     enum recipe_place place, struct qb_error *e)
 {
 	bool ready;
-	enum qb_status st = store_ready_get(o->store, c->id, slot, station, &ready, e);
+	enum qb_status st = store_ready_get(o->store, c->id, slot, station, (int)place, &ready, e);
 	if (st != QB_OK || ready || now_locked(o) >= slots_freeze(&c->plan->slots, slot))
 		return st;
 	if ((st = store_begin(o->store, "ready", e)) == QB_OK)
-		st = store_ready_put(o->store, c->id, slot, station, e);
+		st = store_ready_put(o->store, c->id, slot, station, (int)place, e);
 	if (st == QB_OK)
 		st = store_commit(o->store, e);
 	store_rollback(o->store);
@@ -100,23 +106,22 @@ static enum qb_status note_readiness(struct ops *o, const struct campaign *c, in
 enum qb_status case_recipe(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                            struct qb_error *e)
 {
-	int64_t slot, place;
+	int64_t slot;
 	int station;
 	struct buf recipe = {0};
 	enum qb_status st = my_station(c, call, &station, e);
 	if (st == QB_OK)
 		st = slot_number(c, call->match->parts[1], &slot, e);
-	if (st == QB_OK && !query_int(call->query, "place", 0, RECIPE_PLACES - 1, 0, &place))
-		st = qb_fail(e, QB_RANGE, "query: place", "0 (main) or 1 (spare)", "is out of range");
 	if (st == QB_OK && !campaign_reached(c, slot))
 		st = qb_fail(e, QB_CONFLICT, "recipe", "end the driver", "the campaign was %s before this slot",
 		             campaign_ending_word(c->ending));
 	if (st != QB_OK)
 		return st;
 	const char *name = c->plan->network->stations[station].name;
+	const enum recipe_place place = place_of_driver(c, call->who->name);
 	st = store_recipe_get(o->store, c->id, slot, name, (int)place, &recipe, e);
 	if (st == QB_OK)
-		st = note_readiness(o, c, slot, name, e);
+		st = note_readiness(o, c, slot, name, place, e);
 	if (st == QB_OK) {
 		char *text = base64_encode(recipe.data, recipe.len);
 		reply->http_status = 200;
@@ -154,6 +159,59 @@ static enum qb_status may_release(struct ops *o, const struct campaign *c, int64
 	return QB_OK;
 }
 
+static int64_t monotonic_ns(void)
+{
+	struct timespec t;
+	CHECK(clock_gettime(CLOCK_MONOTONIC, &t) == 0);
+	return (int64_t)t.tv_sec * NS_PER_S + t.tv_nsec;
+}
+
+void driver_spoke(struct campaign *c, const struct view_party *who)
+{
+	int station = station_of_driver(c, who->name);
+	if (station >= 0 && place_of_driver(c, who->name) == RECIPE_MAIN)
+		c->main_seen_ns[station] = monotonic_ns();
+}
+
+/*
+ * One host of a station plays a slot: the first that asks for its key or files anything about it. The main host comes
+ * first: the spare gets a slot when half of the lead is over and the main host has not spoken for SPARE_WAITS_NS, live
+ * and null alike.
+ */
+static enum qb_status take_lease(struct ops *o, const struct campaign *c, int64_t slot, int station,
+                                 enum recipe_place mine, struct ops_reply *reply, struct qb_error *e)
+{
+	const char *name = c->plan->network->stations[station].name;
+	const struct slots *sl = &c->plan->slots;
+	int64_t half = slots_freeze(sl, slot) + (slots_start(sl, slot) - slots_freeze(sl, slot)) / 2;
+	int place;
+	enum qb_status st = store_lease_get(o->store, c->id, slot, name, &place, e);
+	if (st != QB_OK || place == (int)mine)
+		return st;
+	if (place >= 0)
+		return qb_fail(e, QB_CONFLICT, "slot", "leave the slot to it", "the station's %s host plays it",
+		               place == RECIPE_SPARE ? "spare" : "main");
+	if (mine == RECIPE_SPARE &&
+	    (now_locked(o) < half || monotonic_ns() - c->main_seen_ns[station] < SPARE_WAITS_NS)) {
+		reply->until_gps_ns = half;
+		return qb_fail(e, QB_CONFLICT, "slot", "ask again", "the station's main host comes first");
+	}
+	return store_lease_put(o->store, c->id, slot, name, (int)mine, e);
+}
+
+static enum qb_status lease_for_key(struct ops *o, const struct campaign *c, int64_t slot, int station,
+                                    enum recipe_place mine, struct ops_reply *reply, struct qb_error *e)
+{
+	enum qb_status st = store_begin(o->store, "lease", e);
+	if (st != QB_OK)
+		return st;
+	st = take_lease(o, c, slot, station, mine, reply, e);
+	if (st == QB_OK)
+		st = store_commit(o->store, e);
+	store_rollback(o->store);
+	return st;
+}
+
 enum qb_status case_recipe_key(struct ops *o, struct campaign *c, const struct ops_call *call, struct ops_reply *reply,
                                struct qb_error *e)
 {
@@ -166,6 +224,8 @@ enum qb_status case_recipe_key(struct ops *o, struct campaign *c, const struct o
 		st = slot_number(c, call->match->parts[1], &slot, e);
 	if (st == QB_OK)
 		st = may_release(o, c, slot, station, reply, e);
+	if (st == QB_OK)
+		st = lease_for_key(o, c, slot, station, place_of_driver(c, call->who->name), reply, e);
 	if (st == QB_OK)
 		st = store_slot_key_get(o->store, c->id, slot, &boxed, e);
 	if (st == QB_OK)
@@ -259,7 +319,9 @@ static enum qb_status case_filed(struct ops *o, struct campaign *c, const struct
 	if (st == QB_OK)
 		st = check_filed(c, call, &a, station, slot, &b, &rec, e);
 	if (st == QB_OK && (st = txn_begin(&t, o, "filed", e)) == QB_OK) {
-		st = put_sealed(o, c, &rec, slot, c->plan->network->stations[station].name, e);
+		st = take_lease(o, c, slot, station, place_of_driver(c, call->who->name), reply, e);
+		if (st == QB_OK)
+			st = put_sealed(o, c, &rec, slot, c->plan->network->stations[station].name, e);
 		if (st == QB_OK)
 			st = txn_entry(&t, call->who->key_id, a.text, a.signature, &seq, leaf, e);
 		if (st == QB_OK)

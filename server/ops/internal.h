@@ -174,6 +174,8 @@ enum qb_status campaign_due(struct ops *o, struct campaign *c, struct qb_error *
 enum qb_status slots_due(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 bool slots_anything_due(struct ops *o, const struct campaign *c);
 /* A station's hold or stop at this moment for this slot. */
+/* Notes that a driver asked for something: while its main host speaks, a station's spare gets no slot. driver.c */
+void driver_spoke(struct campaign *c, const struct view_party *who);
 bool station_held(const struct campaign *c, int station, int64_t slot);
 bool station_stopped(const struct campaign *c, int station, int64_t *since_ns);
 

@@ -21,6 +21,12 @@ static enum qb_status may_seal(const struct campaign *c, struct ops *o, struct q
 			               "the driver of %s has left no one-time keys",
 			               c->plan->network->stations[i].name);
 	}
+	const struct plan_person *spare;
+	for (int i = 0; (spare = plan_person(c->plan, DUTY_SPARE, i)) != NULL; i++) {
+		if (!c->prekeys[plan_station(c->plan, spare->of)][RECIPE_SPARE])
+			return qb_fail(e, QB_CONFLICT, "seal", "start the driver on the spare host",
+			               "%s, the spare of %s, has left no one-time keys", spare->name, spare->of);
+	}
 	int unsigned_station = campaign_witness_missing(c);
 	if (c->plan->phase == PLAN_OBSERVING && unsigned_station >= 0)
 		return qb_fail(e, QB_CONFLICT, "seal", "let its operator run quietbell campaign witness",

@@ -49,6 +49,17 @@ bool station_stopped(const struct campaign *c, int station, int64_t *since_ns)
 
 /* ---- what the clock makes due ---- */
 
+/* By any of its hosts. */
+static enum qb_status station_ready(struct ops *o, const struct campaign *c, int64_t n, int station, bool *ready,
+                                    struct qb_error *e)
+{
+	enum qb_status st = QB_OK;
+	*ready = false;
+	for (int place = 0; st == QB_OK && !*ready && place < RECIPE_PLACES; place++)
+		st = store_ready_get(o->store, c->id, n, c->plan->network->stations[station].name, place, ready, e);
+	return st;
+}
+
 static enum qb_status freeze_slot(struct txn *t, struct campaign *c, int64_t n, struct qb_error *e)
 {
 	const struct slots *sl = &c->plan->slots;
@@ -64,7 +75,7 @@ static enum qb_status freeze_slot(struct txn *t, struct campaign *c, int64_t n, 
 	enum qb_status st = QB_OK;
 	campaign_controls(c, &holds, &stops);
 	for (int i = 0; st == QB_OK && i < s.n_stations; i++)
-		st = store_ready_get(t->o->store, c->id, n, c->plan->network->stations[i].name, &s.station[i].ready, e);
+		st = station_ready(t->o, c, n, i, &s.station[i].ready, e);
 	bool enough = states_freeze(&s, holds, (size_t)c->n_holds, stops, (size_t)c->n_stops, going);
 	for (int i = 0; i < s.n_stations; i++) {
 		const char *name = c->plan->network->stations[i].name;
@@ -166,15 +177,20 @@ static enum qb_status slot_json(struct ops *o, const struct campaign *c, int64_t
 		const char *name = c->plan->network->stations[i].name;
 		json_t *x = json_object();
 		int64_t since = 0;
+		int host = -1;
 		bool stopped = station_stopped(c, i, &since), ready = (s->ready >> i & 1) != 0,
 		     frozen = s->freeze_seq != NO_SEQ;
 		if (!frozen)
-			st = store_ready_get(o->store, c->id, n, name, &ready, e);
+			st = station_ready(o, c, n, i, &ready, e);
+		if (st == QB_OK)
+			st = store_lease_get(o->store, c->id, n, name, &host, e);
 		json_object_set_new(x, "held", json_boolean(station_held(c, i, n)));
 		json_object_set_new(x, "stopped", json_boolean(stopped));
 		json_object_set_new(x, "stopped_gps", stopped ? json_gps_new(since) : json_null());
 		json_object_set_new(x, "ready", json_boolean(ready));
 		json_object_set_new(x, "going", frozen ? json_boolean((s->going >> i & 1) != 0) : json_null());
+		json_object_set_new(x, "host",
+		                    host < 0 ? json_null() : json_string(host == RECIPE_SPARE ? "spare" : "main"));
 		json_object_set_new(x, "reported", json_boolean((s->reported >> i & 1) != 0));
 		json_object_set_new(x, "notes", json_integer(s->notes[i]));
 		json_object_set_new(stations, name, x);
@@ -211,6 +227,7 @@ enum qb_status case_slot(struct ops *o, struct campaign *c, const struct ops_cal
 {
 	int64_t n;
 	enum qb_status st = slot_number(c, call->match->parts[1], &n, e);
+	driver_spoke(c, call->who);
 	if (st == QB_OK)
 		st = slot_json(o, c, n, &reply->doc, e);
 	reply->http_status = 200;

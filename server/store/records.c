@@ -166,22 +166,48 @@ enum qb_status store_slot_keys_erase_below(struct store *s, const uint8_t campai
 }
 
 enum qb_status store_ready_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               struct qb_error *e)
+                               int place, struct qb_error *e)
 {
-	struct query q = q_begin(s, "INSERT OR IGNORE INTO readiness (campaign, slot, station) VALUES (?, ?, ?)", e);
+	struct query q =
+	    q_begin(s, "INSERT OR IGNORE INTO readiness (campaign, slot, station, place) VALUES (?, ?, ?, ?)", e);
 	q_blob(&q, campaign, 16);
 	q_int(&q, slot);
 	q_text(&q, station);
+	q_int(&q, place);
 	return q_done(&q);
 }
 
 enum qb_status store_ready_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool *ready, struct qb_error *e)
+                               int place, bool *ready, struct qb_error *e)
 {
-	struct query q = q_begin(s, "SELECT 1 FROM readiness WHERE campaign = ? AND slot = ? AND station = ?", e);
+	struct query q =
+	    q_begin(s, "SELECT 1 FROM readiness WHERE campaign = ? AND slot = ? AND station = ? AND place = ?", e);
 	q_blob(&q, campaign, 16);
 	q_int(&q, slot);
 	q_text(&q, station);
+	q_int(&q, place);
 	*ready = q_row(&q);
+	return q_end(&q);
+}
+
+enum qb_status store_lease_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
+                               int place, struct qb_error *e)
+{
+	struct query q = q_begin(s, "INSERT INTO leases (campaign, slot, station, place) VALUES (?, ?, ?, ?)", e);
+	q_blob(&q, campaign, 16);
+	q_int(&q, slot);
+	q_text(&q, station);
+	q_int(&q, place);
+	return q_done(&q);
+}
+
+enum qb_status store_lease_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
+                               int *place, struct qb_error *e)
+{
+	struct query q = q_begin(s, "SELECT place FROM leases WHERE campaign = ? AND slot = ? AND station = ?", e);
+	q_blob(&q, campaign, 16);
+	q_int(&q, slot);
+	q_text(&q, station);
+	*place = q_row(&q) ? (int)q_col_int(&q, 0) : -1;
 	return q_end(&q);
 }

@@ -100,11 +100,20 @@ enum qb_status store_slot_key_get(struct store *s, const uint8_t campaign[static
 enum qb_status store_slot_keys_erase_below(struct store *s, const uint8_t campaign[static 16], int64_t slot,
                                            struct qb_error *e) QB_MUST_USE;
 
-/* Readiness: the station fetched the slot's recipe before the freeze. */
+/* Readiness: the station's host at this place fetched the slot's recipe before the freeze. */
 enum qb_status store_ready_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               struct qb_error *e) QB_MUST_USE;
+                               int place, struct qb_error *e) QB_MUST_USE;
 enum qb_status store_ready_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
-                               bool *ready, struct qb_error *e) QB_MUST_USE;
+                               int place, bool *ready, struct qb_error *e) QB_MUST_USE;
+
+/*
+ * Who plays a station's slot: the lease goes to one host, once. QB_CONFLICT when it is taken, by whomever.
+ * place: of the host that has it, or -1.
+ */
+enum qb_status store_lease_put(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
+                               int place, struct qb_error *e) QB_MUST_USE;
+enum qb_status store_lease_get(struct store *s, const uint8_t campaign[static 16], int64_t slot, const char *station,
+                               int *place, struct qb_error *e) QB_MUST_USE;
 
 /* Openings. */
 enum qb_status store_shares_put(struct store *s, const uint8_t campaign[static 16], const uint8_t opening[static 16],

@@ -106,31 +106,48 @@ static bool host_signed(const struct campaign *c, const struct wire_entry *en, c
 	return c->plan->has_sealer_host && sign_verify(c->plan->sealer_host, statement, 64, signature);
 }
 
+/* Of the attempt that runs. What no honest service enters has no effect: a second set of records, records of none. */
+static bool of_sealing(const struct campaign *c, const struct wire_entry *en, enum campaign_state state)
+{
+	return c->state == state && (uint64_t)wire_entry_int(en, "sealing_attempt") == c->sealing_attempt;
+}
+
 static void apply_sealing(struct campaign *c, const struct wire_entry *en, const struct entry *leaf)
 {
 	const char *type = en->type->type;
 	uint8_t statement[64], hash[64];
 	if (strcmp(type, "sealing") == 0) {
+		if (!of_sealing(c, en, C_REHEARSED))
+			return;
 		c->state = C_SEALING;
+		c->sealing_records = 0;
 		c->sealing_seq = (int64_t)leaf->seq;
 		wire_entry_hex(en, "sealer_key", c->sealer_key, 32);
 		wire_entry_hex(en, "service_commitment", c->service_commitment, 64);
 		seal_key_statement(c->context.ctx, c->sealing_attempt, c->sealer_key, statement);
 		c->host_signed_key = host_signed(c, en, statement);
 	} else if (strcmp(type, "sealing-failed") == 0) {
+		if (!of_sealing(c, en, C_SEALING))
+			return;
 		c->state = C_REHEARSED;
 		c->sealing_attempt++;
 		for (int i = 0; i < c->n; i++)
 			c->custodian[i].commitment_seq = c->custodian[i].contribution_seq = NO_SEQ;
 	} else if (strcmp(type, "record") == 0) {
+		/* the seed's first, then the slots' in their order: each once */
 		int64_t slot = wire_entry_int(en, "slot");
+		if (!of_sealing(c, en, C_SEALING) || slot != c->sealing_records - 1 || slot >= c->n_slots)
+			return;
+		c->sealing_records++;
 		if (slot < 0) {
 			wire_entry_hex(en, "record_id", c->seed_record_id, 64);
-		} else if (slot < c->n_slots) {
+		} else {
 			wire_entry_hex(en, "record_id", c->slot[slot].record_id, 64);
 			wire_entry_hex(en, "slot_key_commitment", c->slot[slot].slot_key_commitment, 64);
 		}
 	} else if (strcmp(type, "sealed") == 0) {
+		if (!of_sealing(c, en, C_SEALING) || c->sealing_records != c->n_slots + 1)
+			return;
 		c->state = C_SEALED;
 		c->sealed_seq = (int64_t)leaf->seq;
 		wire_entry_hex(en, "recipes_hash", hash, 64);
@@ -140,7 +157,8 @@ static void apply_sealing(struct campaign *c, const struct wire_entry *en, const
 	} else if (strcmp(type, "prekeys") == 0) {
 		int s = plan_station(c->plan, wire_entry_text(en, "station"));
 		int64_t place = wire_entry_int(en, "place");
-		if (s >= 0 && place >= 0 && place < RECIPE_PLACES)
+		if (s >= 0 && s == station_of_driver(c, en->by) && place == (int64_t)place_of_driver(c, en->by) &&
+		    c->state < C_SEALING)
 			c->prekeys[s][place] = true;
 	}
 }
@@ -212,7 +230,7 @@ static void apply_slot(struct campaign *c, const struct wire_entry *en, const st
 		return;
 	}
 	int station = plan_station(c->plan, wire_entry_text(en, "station"));
-	if (station < 0)
+	if (station < 0 || station != station_of_driver(c, en->by))
 		return;
 	if (strcmp(type, "play-report") == 0)
 		s->reported = (uint8_t)(s->reported | 1u << station);

@@ -39,12 +39,14 @@ int custodian_index(const struct campaign *c, const char *name)
 
 int station_of_driver(const struct campaign *c, const char *name)
 {
-	const struct plan_person *p;
-	for (int i = 0; (p = plan_person(c->plan, DUTY_DRIVER, i)) != NULL; i++) {
-		if (strcmp(p->name, name) == 0)
-			return plan_station(c->plan, p->of);
-	}
-	return -1;
+	const struct plan_person *p = plan_person_named(c->plan, name);
+	return p != NULL && (p->duty == DUTY_DRIVER || p->duty == DUTY_SPARE) ? plan_station(c->plan, p->of) : -1;
+}
+
+enum recipe_place place_of_driver(const struct campaign *c, const char *name)
+{
+	const struct plan_person *p = plan_person_named(c->plan, name);
+	return p != NULL && p->duty == DUTY_SPARE ? RECIPE_SPARE : RECIPE_MAIN;
 }
 
 struct opening *opening_find(struct campaign *c, const char *id_hex)
@@ -63,7 +65,8 @@ enum wire_role campaign_role(const struct campaign *c, const struct view_party *
 {
 	static const enum wire_role of_duty[DUTIES] = {
 	    [DUTY_CUSTODIAN] = ROLE_CUSTODIAN, [DUTY_REVIEWER] = ROLE_REVIEWER, [DUTY_OPERATOR] = ROLE_OPERATOR,
-	    [DUTY_LIAISON] = ROLE_LIAISON,     [DUTY_DRIVER] = ROLE_DRIVER,     [DUTY_ANALYST] = ROLE_ANALYST};
+	    [DUTY_LIAISON] = ROLE_LIAISON,     [DUTY_DRIVER] = ROLE_DRIVER,     [DUTY_SPARE] = ROLE_DRIVER,
+	    [DUTY_ANALYST] = ROLE_ANALYST};
 	if (p->role == ROLE_ADMINISTRATOR || p->role == ROLE_AUDITOR)
 		return p->role;
 	if (p->role == ROLE_CUSTODIAN) {

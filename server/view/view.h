@@ -203,6 +203,7 @@ struct campaign {
 	size_t canary_n;
 	bool prekeys[STATES_MAX_STATIONS][RECIPE_PLACES];
 	int64_t sealing_seq, sealed_seq, closing_seq;
+	int64_t sealing_records; /* entered by the sealing that runs: the seed's and the slots' */
 	uint8_t sealer_key[32], service_commitment[64];
 	bool host_signed_key, host_signed_output; /* by the plan's sealer host; false without one */
 	int64_t hidden_count;                     /* of the hidden-summary entry; NO_SEQ before it */
@@ -224,8 +225,9 @@ struct campaign {
 	char *ended_why; /* owned; "" without an ending */
 	/* Working state of the service alone; readers leave it as it is. */
 	struct seal_job *job;
-	int64_t erased_below;  /* keys of slots below this one are erased */
-	int64_t last_batch_ns; /* hidden batches entered up to this time; starts at the sealing */
+	int64_t erased_below;                      /* keys of slots below this one are erased */
+	int64_t main_seen_ns[STATES_MAX_STATIONS]; /* monotonic; when a station's main host last spoke */
+	int64_t last_batch_ns;                     /* hidden batches entered up to this time; starts at the sealing */
 	int64_t n_claims;
 };
 
@@ -284,8 +286,9 @@ enum qb_status view_may_vouch(const struct view *v, const char *by_name, const c
                               struct qb_error *e) QB_MUST_USE;
 /* A custodian whose keys are part of a key generation that is under way: they can't change now. */
 bool view_keys_in_use(const struct view *v, const struct view_party *p);
-int custodian_index(const struct campaign *c, const char *name); /* from 0, or -1 */
-int station_of_driver(const struct campaign *c, const char *name);
+int custodian_index(const struct campaign *c, const char *name);   /* from 0, or -1 */
+int station_of_driver(const struct campaign *c, const char *name); /* also of a spare host; -1 for nobody's */
+enum recipe_place place_of_driver(const struct campaign *c, const char *name);
 struct opening *opening_find(struct campaign *c, const char *id_hex);
 /* The party's role in the campaign; ROLE_NONE when it has none. */
 enum wire_role campaign_role(const struct campaign *c, const struct view_party *p);

@@ -77,16 +77,18 @@ until_true() {
 	done
 }
 state_is() { as admin campaign show "$1" --json && grep -q "\"state\": \"$2\"" "$work/out"; }
-# start_driver CAMPAIGN HOST STATION
+# start_driver CAMPAIGN HOST STATION [FOLDER-OF-SINK]
 start_driver() {
-	mkdir -p "$work/drive/$3"
-	"$build/quietbell-driver" "$1" --station "$3" --sink "file:$work/drive/$3" --home "$work/home/$2" --service "$url" \
-		>>"$work/driver-$3.log" 2>&1 </dev/null &
+	mkdir -p "$work/drive/${4:-$3}"
+	"$build/quietbell-driver" "$1" --station "$3" --sink "file:$work/drive/${4:-$3}" --home "$work/home/$2" --service "$url" \
+		>>"$work/driver-${4:-$3}.log" 2>&1 </dev/null &
 	children="$children $!"
 }
-# seal_short: drafts deploy/demo/short-plan.yaml and brings it to `sealed`, with three drivers running
+# seal_short: drafts deploy/demo/short-plan.yaml and brings it to `sealed`, with three drivers running; $spare: a host that
+# stands in for tarn's
 seal_short() {
 	cp "$top"/deploy/demo/short-*.yaml "$work/"
+	[ -z "${spare:-}" ] || sed -i "s/^  drivers: .*/&\n  spare_drivers: {tarn: $spare}/" "$work/short-plan.yaml"
 	clock_to 2027-02-28T23:50:00Z || return 1
 	as admin campaign draft "$work/short-plan.yaml" || return 1
 	joins=""
@@ -98,6 +100,7 @@ seal_short() {
 	start_driver fells-short hosta tarn
 	start_driver fells-short hostb heron
 	start_driver fells-short hostc skerry
+	[ -z "${spare:-}" ] || start_driver fells-short "$spare" tarn tarn-spare
 	until_true 60 state_is fells-short rehearsed || return 1
 	until_true 60 as admin campaign seal fells-short || return 1
 	for p in $joins; do wait "$p" || return 1; done

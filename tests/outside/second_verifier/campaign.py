@@ -59,10 +59,10 @@ class Plan:
         self.expected_live, self.empty_chance = float(p['drills']['expected_live']), float(p['drills'].get('empty_chance', 0.1))
         host = p.get('sealer_host')
         self.sealer_host = bytes.fromhex(host) if host else None
-        self.pipelines, self.drivers = parties['pipelines'], parties['drivers']
+        self.pipelines, self.drivers, self.spares = parties['pipelines'], parties['drivers'], parties.get('spare_drivers') or {}
         self.duty = {'custodian': list(self.custodians), 'reviewer': parties['reviewers'],
                      'operator': parties['operators'], 'liaison': parties.get('liaisons', []),
-                     'driver': list(self.drivers.values()), 'analyst': list(self.pipelines.values())}
+                     'driver': list(self.drivers.values()) + list(self.spares.values()), 'analyst': list(self.pipelines.values())}
         if (self.end - self.start) % self.slot or not 2 <= self.k < len(self.custodians) <= 32:
             raise Refused('the plan breaks its own rules')
 
@@ -218,7 +218,7 @@ class Campaign(Later):
     # ---- the sealing ----
 
     def on_prekeys(self, leaf, e):
-        self.need(self.plan.drivers.get(e['station']) == e['by'] and e['place'] in (0, 1) and
+        self.need((self.plan.drivers, self.plan.spares)[e['place']].get(e['station']) == e['by'] and e['place'] in (0, 1) and
                   e['count'] == self.plan.n_slots, leaf, 'one-time keys of another station')
         self.need(not self.at_least('sealing') and (e['station'], e['place']) not in self.prekeys, leaf,
                   'one-time keys too late or twice')
@@ -313,7 +313,7 @@ class Campaign(Later):
     on_witness_statement = on_segments
 
     def on_play_note(self, leaf, e):
-        self.need(self.at_least('sealed') and self.plan.drivers.get(e['station']) == e['by'] and
+        self.need(self.at_least('sealed') and e['by'] in (self.plan.drivers.get(e['station']), self.plan.spares.get(e['station'])) and
                   0 <= e['slot'] < self.plan.n_slots, leaf, 'a note or report of another station or of no slot')
         self.filed.append(bytes.fromhex(e['record_id']))
 

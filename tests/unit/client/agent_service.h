@@ -44,6 +44,7 @@ struct service {
 	/* What stands in the way, from when on. */
 	int64_t held_from_ns, stopped_from_ns;
 	bool not_going, ended;                /* ended: before any freeze */
+	const char *host;                     /* who plays the slot, as the service says; NULL: undecided */
 	int64_t silent_from_ns, silent_to_ns; /* the service answers nothing in between */
 	int lose_answers;                     /* so many posts arrive, but their answers do not */
 	/* What came in. */
@@ -100,6 +101,7 @@ static inline json_t *service_slot(int64_t n)
 	json_object_set_new(x, "stopped_gps", stopped ? json_gps_new(service->stopped_from_ns) : json_null());
 	json_object_set_new(x, "ready", json_true());
 	json_object_set_new(x, "going", frozen && !service->ended ? json_boolean(!service->not_going) : json_null());
+	json_object_set_new(x, "host", service->host != NULL ? json_string(service->host) : json_null());
 	json_object_set_new(x, "reported", json_boolean(service->n_reports > 0));
 	json_object_set_new(x, "notes", json_integer(service->n_notes));
 	json_object_set_new(all, "tarn", x);

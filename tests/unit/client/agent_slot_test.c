@@ -58,6 +58,28 @@ static void assert_key_erased(int64_t slot)
 	                 QB_NOT_FOUND);
 }
 
+/* Whoever has the lease plays: the other host leaves the slot, files nothing, and keeps no key of it. */
+static void a_slot_of_the_other_host_is_left(void **state)
+{
+	(void)state;
+	struct qb_error e = {0};
+	bool filed = true;
+	service_begin(1);
+	service->host = "spare";
+	assert_int_equal(fetch_ahead(&service->driver, 0, &e), QB_OK);
+	assert_int_equal(slot_run(&service->driver, 0, &filed, &e), QB_OK);
+	assert_false(filed);
+	assert_int_equal(service->n_reports, 0);
+	assert_int_equal(service->n_notes, 0);
+	assert_key_erased(0);
+	service_end();
+	service_begin(1);
+	service->host = "main";
+	run(0);
+	assert_int_equal(service->report.state, PLAY_PLAYED);
+	service_end();
+}
+
 static void live_is_played_and_reported(void **state)
 {
 	(void)state;
@@ -403,28 +425,37 @@ static void slot_answers_are_read_strictly(void **state)
 	(void)state;
 	const char *const good =
 	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"stopped_gps\":"
-	    "\"12.5\",\"going\":null,\"reported\":false,\"notes\":2}}}";
+	    "\"12.5\",\"going\":null,\"host\":null,\"reported\":false,\"notes\":2}}}";
 	const char *const bad[] = {
 	    "{\"slot\":4,\"ended\":false,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,"
+	    "\"host\":null,"
 	    "\"reported\":false,"
 	    "\"notes\":2}}}",
 	    "{\"slot\":3,\"ended\":true,\"stations\":{\"heron\":{}}}",
-	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"stopped\":false,\"going\":null,\"reported\":false,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"stopped\":false,\"going\":null,\"host\":null,"
+	    "\"reported\":false,"
 	    "\"notes\":2}}}",
 	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":\"no\",\"stopped\":false,\"going\":null,"
+	    "\"host\":null,"
 	    "\"reported\":false,"
 	    "\"notes\":2}}}",
 	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":true,\"going\":null,"
+	    "\"host\":null,"
 	    "\"reported\":false,"
 	    "\"notes\":2}}}",
-	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":1,"
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":1,\"host\":"
+	    "null,"
 	    "\"reported\":false,"
 	    "\"notes\":2}}}",
 	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":true,"
+	    "\"host\":\"main\","
 	    "\"reported\":false,"
 	    "\"notes\":16}}}",
-	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,\"reported\":false,"
+	    "{\"slot\":3,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,\"host\":null,"
+	    "\"reported\":false,"
 	    "\"notes\":2}}}",
+	    "{\"slot\":3,\"ended\":true,\"stations\":{\"tarn\":{\"held\":false,\"stopped\":false,\"going\":null,"
+	    "\"host\":\"third\",\"reported\":false,\"notes\":2}}}",
 	    "[]"};
 	struct watch_slot w;
 	struct qb_error e = {0};
@@ -461,6 +492,7 @@ static void ended_before_the_freeze(void **state)
 
 static const struct CMUnitTest tests[] = {
     cmocka_unit_test(live_is_played_and_reported),
+    cmocka_unit_test(a_slot_of_the_other_host_is_left),
     cmocka_unit_test(counts_are_the_rendered_ones),
     cmocka_unit_test(null_asks_and_writes_alike),
     cmocka_unit_test(stop_silences),
