@@ -12,7 +12,8 @@
 #include "server/drill/plan_read.h"
 
 static const char *const phases[] = {"observing", "engineering", "rehearsal", NULL};
-static const char *const duties[DUTIES] = {"custodian", "reviewer", "operator", "liaison", "driver", "spare driver", "analyst"};
+static const char *const duties[DUTIES] = {"custodian", "reviewer",     "operator", "liaison",
+                                           "driver",    "spare driver", "analyst"};
 
 const char *plan_phase_word(enum plan_phase p)
 {
