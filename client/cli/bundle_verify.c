@@ -173,11 +173,13 @@ enum qb_status verify_records(struct verified *v, struct qb_error *e)
 	struct ids filed;
 	int64_t slots = 0, others = 0, seeds = 0, notes = 0;
 	enum qb_status st = filed_ids(v, &filed, e);
+	if (st == QB_OK)
+		st = items_check(&v->group, &v->bundle->records, e);
 	for (size_t i = 0; st == QB_OK && i < v->bundle->records.n; i++) {
 		struct sealed_item *x = &v->bundle->records.item[i];
 		const struct view_party *p = view_party_by_id(&v->follow.view, v->bundle->author[i]);
 		(void)snprintf(x->by, sizeof x->by, "%s", p != NULL ? p->name : "service");
-		st = item_check(v->k, &v->follow.view, &v->group, x, e);
+		st = item_place(v->k, &v->follow.view, x, e);
 		if (st == QB_OK && (memcmp(x->rec.id, v->bundle->record_id[i], 64) != 0 ||
 		                    memcmp(x->rec.header.author, v->bundle->author[i], 16) != 0))
 			st = no(e, "a record's listed id or author is not its own");

@@ -90,8 +90,26 @@ enum qb_status item_check(const struct campaign *k, const struct view *v, const 
                           struct sealed_item *x, struct qb_error *e)
 {
 	enum qb_status st = record_check(g, x->bytes.data, x->bytes.len, &x->rec, e);
-	if (st != QB_OK)
-		return st;
+	return st == QB_OK ? item_place(k, v, x, e) : st;
+}
+
+enum qb_status items_check(const struct custody_group *g, struct sealed_items *items, struct qb_error *e)
+{
+	const struct buf **bytes = QB_NEW_ARRAY(const struct buf *, items->n);
+	struct record *rec = QB_NEW_ARRAY(struct record, items->n);
+	for (size_t i = 0; i < items->n; i++)
+		bytes[i] = &items->item[i].bytes;
+	enum qb_status st = batch_records(g, bytes, items->n, 0, rec, NULL, e);
+	for (size_t i = 0; st == QB_OK && i < items->n; i++)
+		items->item[i].rec = rec[i];
+	qb_free(bytes);
+	qb_free(rec);
+	return st;
+}
+
+enum qb_status item_place(const struct campaign *k, const struct view *v, const struct sealed_item *x,
+                          struct qb_error *e)
+{
 	const struct record_header *h = &x->rec.header;
 	if ((int)h->type != x->type || partial_full_purpose(h->type) == 0 || h->type == RECORD_CANARY)
 		return out_of_place(x, e);
@@ -243,8 +261,10 @@ static enum qb_status compute(struct cli_call *c, struct campaign *k, const stru
 		st = qb_fail(&c->error, QB_REFUSED, "opening", NULL, "the ledger has no closing before this request");
 	if (st == QB_OK)
 		st = items_fetch(c, k, &items);
+	if (st == QB_OK)
+		st = items_check(g, &items, &c->error);
 	for (size_t i = 0; st == QB_OK && i < items.n; i++)
-		st = item_check(k, &c->follow.view, g, &items.item[i], &c->error);
+		st = item_place(k, &c->follow.view, &items.item[i], &c->error);
 	if (st == QB_OK) {
 		const struct view_party *asker = view_party_by_id(&c->follow.view, op->asker);
 		(void)snprintf(what, sizeof what,

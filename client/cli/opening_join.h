@@ -12,7 +12,7 @@ struct sealed_item {
 	int type;
 	char station[64], by[64];
 	struct buf bytes;  /* owned */
-	struct record rec; /* points into bytes; after item_check */
+	struct record rec; /* points into bytes; after item_check or items_check */
 };
 struct sealed_items {
 	struct sealed_item *item; /* owned */
@@ -26,6 +26,10 @@ void items_free(struct sealed_items *items);
 /* Proof, group, type and place of a record, against the verified ledger. Errors: QB_CRYPTO with the record's place. */
 enum qb_status item_check(const struct campaign *k, const struct view *v, const struct custody_group *g,
                           struct sealed_item *item, struct qb_error *e) QB_MUST_USE;
+/* Its two halves for many: proofs and group of all records, on all processors; then the type and place of each. */
+enum qb_status items_check(const struct custody_group *g, struct sealed_items *items, struct qb_error *e) QB_MUST_USE;
+enum qb_status item_place(const struct campaign *k, const struct view *v, const struct sealed_item *item,
+                          struct qb_error *e) QB_MUST_USE;
 
 enum qb_status join_full(struct cli_call *c, struct campaign *k, const struct opening *op) QB_MUST_USE;
 /* Gives this custodian's part, waits for the others, and answers; or signs the retraction of that answer. */

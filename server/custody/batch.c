@@ -11,6 +11,9 @@ struct work {
 	const struct batch *b;
 	size_t from, to;
 	enum qb_status (*one)(const struct work *w, size_t r, struct qb_error *e);
+	/* checking records */
+	const struct buf *const *bytes;
+	struct record *rec;
 	/* making */
 	uint32_t i;
 	const struct secret *share;
@@ -80,6 +83,19 @@ static enum qb_status share_out(const struct work *what, size_t *bad, struct qb_
 		}
 	}
 	return st;
+}
+
+static enum qb_status record_one(const struct work *w, size_t r, struct qb_error *e)
+{
+	return record_check(w->b->group, w->bytes[r]->data, w->bytes[r]->len, &w->rec[r], e);
+}
+
+enum qb_status batch_records(const struct custody_group *g, const struct buf *const *bytes, size_t n, int threads,
+                             struct record *out, size_t *bad, struct qb_error *e)
+{
+	struct batch b = {.group = g, .n = n, .threads = threads};
+	struct work w = {.b = &b, .one = record_one, .bytes = bytes, .rec = out};
+	return share_out(&w, bad, e);
 }
 
 static enum qb_status make_one(const struct work *w, size_t r, struct qb_error *e)

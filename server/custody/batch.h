@@ -1,6 +1,7 @@
 /*
- * The work of a full opening over many records, shared among threads: making one custodian's partial openings, checking
- * them, and opening with those of several. What comes out does not depend on the number of threads.
+ * The work of a full opening over many records, shared among threads: checking the records, making one custodian's
+ * partial openings, checking them, and opening with those of several. What comes out does not depend on the number of
+ * threads.
  */
 #ifndef QB_CUSTODY_BATCH_H
 #define QB_CUSTODY_BATCH_H
@@ -29,6 +30,16 @@ struct batch {
  * e says what it is.
  */
 
+/*
+ * The first of all: the records themselves.
+ *
+ * Given:    bytes           n of them, each stays where it is
+ *           threads         as in struct batch
+ * Returned: out             n records
+ * Errors:   as record_check
+ */
+enum qb_status batch_records(const struct custody_group *g, const struct buf *const *bytes, size_t n, int threads,
+                             struct record *out, size_t *bad, struct qb_error *e) QB_MUST_USE;
 /*
  * Given:    out             n * PARTIAL_BYTES
  * Errors:   as partial_make

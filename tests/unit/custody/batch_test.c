@@ -140,10 +140,37 @@ static void sets_of_others_and_too_few_are_refused(void **state)
 	many_free(m);
 }
 
+static void records_are_checked_in_threads(void **state)
+{
+	struct many *m = many_make();
+	const struct buf *bytes[N];
+	struct record rec[N];
+	(void)state;
+	for (int r = 0; r < N; r++)
+		bytes[r] = &m->bytes[r];
+	for (int threads = 0; threads <= 3; threads++) {
+		size_t bad = 99;
+		memset(rec, 0, sizeof rec);
+		assert_int_equal(batch_records(&m->s.g, bytes, N, threads, rec, &bad, NULL), QB_OK);
+		for (int r = 0; r < N; r++) {
+			assert_memory_equal(rec[r].id, m->rec[r].id, RECORD_ID_BYTES);
+			assert_ptr_equal(rec[r].bytes, bytes[r]->data);
+		}
+		assert_int_equal(bad, 99);
+		m->bytes[20].data[200] ^= 1;
+		m->bytes[9].data[300] ^= 1;
+		assert_int_equal(batch_records(&m->s.g, bytes, N, threads, rec, &bad, NULL), QB_CRYPTO);
+		assert_int_equal(bad, 9);
+		m->bytes[20].data[200] ^= 1;
+		m->bytes[9].data[300] ^= 1;
+	}
+	assert_int_equal(batch_records(&m->s.g, bytes, 0, 2, rec, NULL, NULL), QB_OK);
+	many_free(m);
+}
+
 static const struct CMUnitTest tests[] = {
-    cmocka_unit_test(every_number_of_threads_opens_the_same),
-    cmocka_unit_test(made_in_threads_every_opening_is_right),
-    cmocka_unit_test(the_first_bad_one_is_named),
+    cmocka_unit_test(records_are_checked_in_threads),         cmocka_unit_test(every_number_of_threads_opens_the_same),
+    cmocka_unit_test(made_in_threads_every_opening_is_right), cmocka_unit_test(the_first_bad_one_is_named),
     cmocka_unit_test(sets_of_others_and_too_few_are_refused),
 };
 SCENE_MAIN(tests)
