@@ -286,10 +286,11 @@ static void paper(void **state)
 	buf_wipe(&text);
 }
 
-static void valgrind_is_not_there(void **state)
+/* In the build with sanitizers, which valgrind can't run, or where it is not installed. */
+static void nothing_is_proved_without_valgrind(void **state)
 {
 	(void)state;
-	skip();
+	puts("# this run proves nothing: it is not under valgrind");
 }
 
 int main(int argc, char **argv)
@@ -306,8 +307,9 @@ int main(int argc, char **argv)
 	    cmocka_unit_test_setup(recipes_and_boxes, enter),
 	    cmocka_unit_test_setup(paper, enter),
 	};
-	const struct CMUnitTest none[] = {cmocka_unit_test(valgrind_is_not_there)};
+	const struct CMUnitTest none[] = {cmocka_unit_test(nothing_is_proved_without_valgrind)};
 	(void)argc;
+	(void)argv;
 	if (RUNNING_ON_VALGRIND == 0) {
 #ifndef __SANITIZE_ADDRESS__
 		execlp("valgrind", "valgrind", "-q", "--suppressions=tests/unit/custody/taint.supp", argv[0],
