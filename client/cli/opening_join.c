@@ -249,6 +249,32 @@ static enum qb_status reveal_or_wait(struct cli_call *c, const struct campaign *
 	return st == QB_OK ? hand_over(c, k, op, path) : st;
 }
 
+/* The seed and every slot once, and as many notes and reports as the ledger has: what is left out would stay shut. */
+static enum qb_status check_whole(struct cli_call *c, const struct campaign *k, const struct sealed_items *items)
+{
+	int64_t seeds = 0, slots = 0, filed = 0, entered = 0;
+	bool *seen = QB_NEW_ARRAY(bool, (size_t)k->n_slots);
+	for (size_t i = 0; i < items->n; i++) {
+		const struct record_header *h = &items->item[i].rec.header;
+		seeds += h->type == RECORD_SEED;
+		filed += h->type == RECORD_PLAY_NOTE || h->type == RECORD_PLAY_REPORT;
+		if (h->type == RECORD_SLOT && !seen[h->index]) {
+			seen[h->index] = true;
+			slots++;
+		}
+	}
+	qb_free(seen);
+	for (int64_t n = 0; n < k->n_slots; n++) {
+		for (int s = 0; s < k->plan->network->n_stations; s++)
+			entered += k->slot[n].notes[s] + (k->slot[n].reported >> s & 1);
+	}
+	if (seeds == 1 && slots == k->n_slots && filed == entered)
+		return QB_OK;
+	return qb_fail(&c->error, QB_CRYPTO, "records", "do not open; tell the other custodians",
+	               "the service shows %lld of %lld slots, %lld seeds, and %lld of %lld notes and reports",
+	               (long long)slots, (long long)k->n_slots, (long long)seeds, (long long)filed, (long long)entered);
+}
+
 static enum qb_status compute(struct cli_call *c, struct campaign *k, const struct opening *op, const char *path)
 {
 	struct custody_group *g = QB_NEW(struct custody_group);
@@ -265,6 +291,8 @@ static enum qb_status compute(struct cli_call *c, struct campaign *k, const stru
 		st = items_check(g, &items, &c->error);
 	for (size_t i = 0; st == QB_OK && i < items.n; i++)
 		st = item_place(k, &c->follow.view, &items.item[i], &c->error);
+	if (st == QB_OK)
+		st = check_whole(c, k, &items);
 	if (st == QB_OK) {
 		const struct view_party *asker = view_party_by_id(&c->follow.view, op->asker);
 		(void)snprintf(what, sizeof what,

@@ -348,6 +348,11 @@ def newest_program():
     return max(os.stat(os.path.join(build, p)).st_mtime for p in ('quietbell', 'quietbelld', 'quietbell-driver'))
 
 
+def new_enough(path):
+    made = os.path.join(path, 'made')
+    return os.path.exists(made) and os.stat(made).st_mtime > max(newest_program(), os.stat(__file__).st_mtime)
+
+
 def cached(stage):
     """Builds build/attack/STAGE unless it is there and newer than the programs and this file."""
     where = os.path.join(build, 'attack')
@@ -355,12 +360,11 @@ def cached(stage):
     with open(os.path.join(where, 'lock'), 'w') as lock:
         fcntl.flock(lock, fcntl.LOCK_EX)
         path = os.path.join(where, stage)
-        made = os.path.join(path, 'made')
-        if os.path.exists(made) and os.stat(made).st_mtime > max(newest_program(), os.stat(__file__).st_mtime):
+        if new_enough(path):
             return
         shutil.rmtree(path, ignore_errors=True)
         {'enrolled': build_enrolled, 'sealed': build_sealed}[stage](path)
-        open(made, 'w').close()
+        open(os.path.join(path, 'made'), 'w').close()
 
 
 def keep(scene, path):
@@ -384,9 +388,11 @@ def build_enrolled(path):
 
 
 def build_sealed(path):
-    if not os.path.exists(os.path.join(build, 'attack', 'enrolled', 'made')):
-        build_enrolled(os.path.join(build, 'attack', 'enrolled'))
-        open(os.path.join(build, 'attack', 'enrolled', 'made'), 'w').close()
+    enrolled = os.path.join(build, 'attack', 'enrolled')
+    if not new_enough(enrolled):
+        shutil.rmtree(enrolled, ignore_errors=True)
+        build_enrolled(enrolled)
+        open(os.path.join(enrolled, 'made'), 'w').close()
     with Scene('sealed') as s:
         shutil.copytree(os.path.join(build, 'attack', 'enrolled'), s.work, dirs_exist_ok=True)
         s.start('rehearsal_seed: %d' % SEED)
