@@ -1,7 +1,9 @@
 /* quietbelld: the verbs, and the start-up order of the service in one place. */
 #include <stdio.h>
 #include <string.h>
+#include <sys/stat.h>
 
+#include "server/base/alloc.h"
 #include "server/base/json.h"
 #include "server/base/secret.h"
 #include "server/base/text.h"
@@ -12,10 +14,12 @@
 #include "server/daemon/sealer_host.h"
 #include "server/ops/ops.h"
 
-#define KEY_FILE_BYTES 4096
+#define KEY_FILE_BYTES   4096
+#define PASSPHRASE_BYTES 1024
 
 struct options {
-	const char *config, *data, *admin, *clock, *listen, *folder;
+	const char *config, *data, *admin, *clock, *listen, *folder, *passphrase;
+	const char *file; /* of backup and restore, after the verb */
 };
 
 static enum qb_status run_service(const struct options *o, struct qb_error *e)
@@ -113,6 +117,61 @@ static int run_sealer(struct qb_error *e)
 	return st == QB_OK ? ops_sealer_main(0, 1) : qb_exit_status(st);
 }
 
+/* The first line of a file that nobody else can read. The caller wipes and frees it. */
+static enum qb_status read_passphrase(const char *path, char **out, struct qb_error *e)
+{
+	struct buf b = {0};
+	struct stat s;
+	if (path == NULL)
+		return qb_fail(e, QB_USAGE, NULL, "the service's keys are in the backup under a passphrase",
+		               "give --passphrase-file");
+	if (stat(path, &s) != 0 || (s.st_mode & 077) != 0)
+		return qb_fail(e, QB_REFUSED, path, "chmod 600 it", "can be read by others, or is not there");
+	enum qb_status st = file_read(path, PASSPHRASE_BYTES, &b, e);
+	size_t n = st == QB_OK && b.len > 0 ? strcspn((const char *)b.data, "\r\n") : 0;
+	if (st == QB_OK && n == 0)
+		st = qb_fail(e, QB_FORMAT, path, "write the passphrase on its first line", "is empty");
+	*out = st == QB_OK ? qb_memdup(b.data, n) : NULL;
+	buf_wipe(&b);
+	return st;
+}
+
+static enum qb_status run_copy(const struct options *o, bool back, struct qb_error *e)
+{
+	char *passphrase = NULL;
+	uint64_t size = 0;
+	if (o->file == NULL)
+		return qb_fail(e, QB_USAGE, NULL, "see quietbelld --help", "name the file of the backup");
+	enum qb_status st = guard_process(e);
+	if (st == QB_OK)
+		st = secret_setup(e);
+	if (st == QB_OK)
+		st = read_passphrase(o->passphrase, &passphrase, e);
+	if (st == QB_OK)
+		st = back ? ops_restore(o->file, o->data, passphrase, &size, e)
+		          : ops_backup(o->data, o->file, passphrase, e);
+	if (st == QB_OK && back)
+		printf("%s is ready; its ledger has %llu leaves and verifies. Clients that have seen more will refuse "
+		       "it.\n",
+		       o->data, (unsigned long long)size);
+	else if (st == QB_OK)
+		printf("%s and %s.keys are written; keep them apart.\n", o->file, o->file);
+	if (passphrase != NULL)
+		wipe(passphrase, strlen(passphrase));
+	qb_free(passphrase);
+	return st;
+}
+
+static enum qb_status run_backup(const struct options *o, struct qb_error *e)
+{
+	return run_copy(o, false, e);
+}
+
+static enum qb_status run_restore(const struct options *o, struct qb_error *e)
+{
+	return run_copy(o, true, e);
+}
+
 static enum qb_status run_host_init(const struct options *o, struct qb_error *e)
 {
 	enum qb_status st = guard_process(e);
@@ -168,6 +227,8 @@ static const struct {
     {"", run_service, true, false, false},
     {"init", run_init, false, true, true},
     {"check-config", run_check_config, true, false, false},
+    {"backup", run_backup, false, true, false},
+    {"restore", run_restore, false, true, false},
     {"sealer-host-init", run_host_init, false, true, false},
     {"sealer-host", run_host, false, true, false},
     {"--help", run_help, false, false, false},
@@ -180,8 +241,13 @@ static enum qb_status parse_options(int argc, char **argv, int first, struct opt
 	const struct {
 		const char *name;
 		const char **value;
-	} known[] = {{"--config", &o->config}, {"--data", &o->data},     {"--admin", &o->admin},
-	             {"--clock", &o->clock},   {"--listen", &o->listen}, {"--folder", &o->folder}};
+	} known[] = {{"--config", &o->config},
+	             {"--data", &o->data},
+	             {"--admin", &o->admin},
+	             {"--clock", &o->clock},
+	             {"--listen", &o->listen},
+	             {"--folder", &o->folder},
+	             {"--passphrase-file", &o->passphrase}};
 	for (int i = first; i < argc; i += 2) {
 		bool found = false;
 		for (size_t k = 0; k < sizeof known / sizeof known[0]; k++) {
@@ -202,13 +268,17 @@ static enum qb_status run(int argc, char **argv, struct qb_error *e)
 	struct options o = {0};
 	bool named = argc > 1 && (argv[1][0] != '-' || argc == 2);
 	const char *verb = named ? argv[1] : "";
-	enum qb_status st = parse_options(argc, argv, named ? 2 : 1, &o, e);
+	int first = named ? 2 : 1;
+	if ((strcmp(verb, "backup") == 0 || strcmp(verb, "restore") == 0) && argc > 2 && argv[2][0] != '-')
+		o.file = argv[first++];
+	enum qb_status st = parse_options(argc, argv, first, &o, e);
 	for (size_t i = 0; st == QB_OK && i < sizeof verbs / sizeof verbs[0]; i++) {
 		if (strcmp(verbs[i].verb, verb) != 0)
 			continue;
 		if ((o.config != NULL) != verbs[i].config || (o.data != NULL) != verbs[i].data ||
 		    (o.admin != NULL) != verbs[i].admin || (o.clock != NULL && !verbs[i].admin) ||
-		    ((o.listen != NULL || o.folder != NULL) && verbs[i].run != run_host))
+		    ((o.listen != NULL || o.folder != NULL) && verbs[i].run != run_host) ||
+		    (o.passphrase != NULL && verbs[i].run != run_backup && verbs[i].run != run_restore))
 			return qb_fail(e, QB_USAGE, NULL, "see quietbelld --help", "the options do not fit the verb");
 		return verbs[i].run(&o, e);
 	}

@@ -11,6 +11,13 @@ static const struct man_verb verbs[] = {
      "the administrator's quietbell key new wrote. The clock is fixed for ever; system unless said."},
     {"check-config", "check-config --config FILE",
      "Checks FILE and the data directory and prints every value in force."},
+    {"backup", "backup FILE --data DIR --passphrase-file P",
+     "Copies the store to FILE while the service works, and its two keys to FILE.keys under the passphrase. Neither is "
+     "ever overwritten. Keep them apart: whoever has both and the passphrase can be the service."},
+    {"restore", "restore FILE --data DIR --passphrase-file P",
+     "Makes the data directory DIR anew from FILE and FILE.keys, and verifies the whole ledger. What came after the "
+     "backup "
+     "is not in it, and clients that saw it refuse the restored service."},
     {"sealer-host-init", "sealer-host-init --data DIR",
      "Makes the signing key of a machine of its own for sealers, and prints the line sealer_host for the plan."},
     {"sealer-host", "sealer-host --data DIR (--listen ADDRESS:PORT | --folder FOLDER)",

@@ -44,6 +44,10 @@ struct ops {
 	bool stopping;
 };
 
+/* ---- ops.c: the 32-byte keys of a data directory ---- */
+enum qb_status ops_key_new(const char *dir, const char *name, const struct secret *key, struct qb_error *e) QB_MUST_USE;
+enum qb_status ops_key_read(const char *dir, const char *name, struct secret **out, struct qb_error *e) QB_MUST_USE;
+
 /* ---- ledger_write.c: one transaction with its new leaves ---- */
 struct pending_leaf {
 	struct buf frame;

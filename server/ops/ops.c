@@ -18,7 +18,7 @@ static char *path_in(const char *dir, const char *name)
 	return text_printf("%s/%s", dir, name);
 }
 
-static enum qb_status key_file_new(const char *dir, const char *name, const struct secret *key, struct qb_error *e)
+enum qb_status ops_key_new(const char *dir, const char *name, const struct secret *key, struct qb_error *e)
 {
 	char *path = path_in(dir, name);
 	enum qb_status st = file_write(path, 0600, secret_view(key), secret_size(key), e);
@@ -26,7 +26,7 @@ static enum qb_status key_file_new(const char *dir, const char *name, const stru
 	return st;
 }
 
-static enum qb_status key_file_read(const char *dir, const char *name, struct secret **out, struct qb_error *e)
+enum qb_status ops_key_read(const char *dir, const char *name, struct secret **out, struct qb_error *e)
 {
 	char *path = path_in(dir, name);
 	struct buf b = {0};
@@ -106,9 +106,9 @@ enum qb_status ops_init(const char *data_dir, const char *admin_name, const uint
 	if (st == QB_OK)
 		st = store_open(path, true, &o->store, e);
 	if (st == QB_OK)
-		st = key_file_new(data_dir, "service.key", o->service_seed, e);
+		st = ops_key_new(data_dir, "service.key", o->service_seed, e);
 	if (st == QB_OK)
-		st = key_file_new(data_dir, "storage.key", o->storage_key, e);
+		st = ops_key_new(data_dir, "storage.key", o->storage_key, e);
 	if (st == QB_OK)
 		st = store_setting_put(o->store, "clock", rehearsal_clock ? "rehearsal" : "system", e);
 	if (st == QB_OK)
@@ -243,9 +243,9 @@ enum qb_status ops_open(const struct ops_settings *settings, struct ops **out, s
 	char *path = path_in(settings->data_dir, "store.sqlite");
 	enum qb_status st = store_open(path, false, &o->store, e);
 	if (st == QB_OK)
-		st = key_file_read(o->data_dir, "service.key", &o->service_seed, e);
+		st = ops_key_read(o->data_dir, "service.key", &o->service_seed, e);
 	if (st == QB_OK)
-		st = key_file_read(o->data_dir, "storage.key", &o->storage_key, e);
+		st = ops_key_read(o->data_dir, "storage.key", &o->storage_key, e);
 	if (st == QB_OK) {
 		sign_public(o->service_seed, o->service_key);
 		sign_key_id(o->service_key, o->service_id);

@@ -48,6 +48,16 @@ enum qb_status ops_init(const char *data_dir, const char *admin_name, const uint
 enum qb_status ops_open(const struct ops_settings *settings, struct ops **out, struct qb_error *e) QB_MUST_USE;
 void ops_close(struct ops **ops);
 
+/*
+ * A copy of the store at `file`, while the service works, and its two keys in FILE.keys under a passphrase; and a new
+ * data directory from them, whose ledger is verified: *size is its number of leaves.
+ * Errors: QB_CONFLICT a file is there already; QB_CRYPTO wrong passphrase; QB_IO; what ops_open says
+ */
+enum qb_status ops_backup(const char *data_dir, const char *file, const char *passphrase,
+                          struct qb_error *e) QB_MUST_USE;
+enum qb_status ops_restore(const char *file, const char *data_dir, const char *passphrase, uint64_t *size,
+                           struct qb_error *e) QB_MUST_USE;
+
 /* The service's own time: system or rehearsal. */
 int64_t ops_now(struct ops *ops);
 /* Everything that is due: hidden batches, erasure of played slots' keys, a dead sealer. Call about once a second. */

@@ -19,6 +19,11 @@ struct store;
 /* Opens (and with `create` makes) the file, mode 0600; brings the schema up to date. */
 enum qb_status store_open(const char *path, bool create, struct store **out, struct qb_error *e) QB_MUST_USE;
 void store_close(struct store **s);
+/*
+ * A consistent copy of the store at `from`, also while another process works on it.
+ * Errors: QB_CONFLICT when `to` is there already; as store_open; QB_IO
+ */
+enum qb_status store_copy(const char *from, const char *to, struct qb_error *e) QB_MUST_USE;
 
 /* `use_case` is kept for the message when two transactions would nest (our own bug). */
 enum qb_status store_begin(struct store *s, const char *use_case, struct qb_error *e) QB_MUST_USE;
