@@ -168,7 +168,7 @@ static enum qb_status exchange(struct link *l, const char *method, const char *p
 	else
 		json_decref(doc);
 	qb_free(text);
-	buf_free(&a.body);
+	buf_wipe(&a.body); /* it may have carried a slot key */
 	return st;
 }
 

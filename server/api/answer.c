@@ -1,4 +1,5 @@
 /* The second half of a request: authentication, role, use case, and the forms an answer takes. */
+#include <malloc.h>
 #include <stdio.h>
 #include <string.h>
 
@@ -12,8 +13,11 @@ bool answer_is_probe(const struct wire_route *r)
 	return r->id == R_HEALTHZ || r->id == R_READYZ || r->id == R_METRICS;
 }
 
+/* An answer may carry a slot key. */
 static void free_bytes(void *p)
 {
+	if (p != NULL)
+		wipe(p, malloc_usable_size(p));
 	qb_free(p);
 }
 

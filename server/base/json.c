@@ -2,12 +2,15 @@
 #include "server/base/json.h"
 
 #include <inttypes.h>
+#include <malloc.h>
 #include <math.h>
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 #include "server/base/alloc.h"
 #include "server/base/clock.h"
+#include "server/base/secret.h"
 #include "server/base/text.h"
 
 #define JSON_MAX_BYTES ((size_t)64 << 20)
@@ -51,12 +54,24 @@ enum qb_status json_read(const char *text, size_t n, const char *what, json_t **
 	return QB_OK;
 }
 
+static void wipe_and_free(void *p)
+{
+	if (p != NULL)
+		wipe(p, malloc_usable_size(p));
+	free(p);
+}
+
 static char *dump(const json_t *doc, size_t flags, const char *end)
 {
 	char *t = json_dumps(doc, flags | JSON_REAL_PRECISION(17) | JSON_ENCODE_ANY);
 	char *out = text_printf("%s%s", t != NULL ? t : "null", end);
-	free(t);
+	wipe_and_free(t);
 	return out;
+}
+
+void json_wipe_on_free(void)
+{
+	json_set_alloc_funcs(malloc, wipe_and_free);
 }
 
 char *json_text(const json_t *doc)
@@ -180,6 +195,7 @@ json_t *json_hex_new(const uint8_t *p, size_t n)
 	char *s = qb_alloc(2 * n + 1, 1);
 	hex_encode(s, p, n);
 	json_t *j = json_string(s);
+	wipe(s, 2 * n);
 	qb_free(s);
 	return j;
 }

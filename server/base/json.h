@@ -18,6 +18,12 @@
  */
 enum qb_status json_read(const char *text, size_t n, const char *what, json_t **out, struct qb_error *e) QB_MUST_USE;
 
+/*
+ * From here on every document's memory is overwritten when it is freed: a slot key passes through documents on its way.
+ * Called by secret_setup.
+ */
+void json_wipe_on_free(void);
+
 /* Compact text, keys in insertion order, reals with 17 digits; caller frees with qb_free. */
 char *json_text(const json_t *doc);
 /* The same with two spaces of indent and a final newline, for people. */

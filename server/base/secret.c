@@ -8,6 +8,7 @@
 #include "server/base/alloc.h"
 #include "server/base/buf.h"
 #include "server/base/check.h"
+#include "server/base/json.h"
 
 struct secret {
 	uint8_t *bytes; /* sodium_malloc: guard pages, locked, canary */
@@ -24,6 +25,7 @@ enum qb_status secret_setup(struct qb_error *e)
 	struct rlimit none = {0, 0};
 	if (setrlimit(RLIMIT_CORE, &none) != 0)
 		return qb_fail(e, QB_FAULT, NULL, NULL, "core dumps can't be switched off");
+	json_wipe_on_free();
 	return QB_OK;
 }
 
