@@ -259,7 +259,7 @@ static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct 
 	struct variates v;
 	struct draw_uniforms u = {variate, &v};
 	struct drill_truth *truth = QB_NEW(struct drill_truth);
-	struct record_header h = {.type = RECORD_SLOT, .epoch = 1, .index = (uint64_t)n};
+	struct record_header h = {.type = RECORD_SLOT, .epoch = (uint32_t)s->group.seal_epoch, .index = (uint64_t)n};
 	uint8_t key[SLOT_KEY_BYTES], commitment[64], r[SCALAR_BYTES];
 	struct buf content = {0}, record = {0}, recipes = {0}, boxed = {0};
 	seed_slot_truth(s->seed, (uint64_t)n, v.truth);
@@ -303,7 +303,8 @@ static enum qb_status seal_slot(struct sealer *s, bool empty, int64_t n, struct 
 
 static enum qb_status seal_seed(struct sealer *s, struct buf *message, struct qb_error *e)
 {
-	struct record_header h = {.type = RECORD_SEED, .epoch = 1, .start_gps_ns = s->plan->slots.start_gps_ns};
+	struct record_header h = {
+	    .type = RECORD_SEED, .epoch = (uint32_t)s->group.seal_epoch, .start_gps_ns = s->plan->slots.start_gps_ns};
 	uint8_t r[SCALAR_BYTES], zeros[64] = {0};
 	struct buf content = {0}, record = {0};
 	char hex[65];

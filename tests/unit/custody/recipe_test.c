@@ -97,6 +97,26 @@ static void needs_both_layers(void **state)
 	unwrap_free(&w);
 }
 
+/*
+ * The cipher alone commits to no key: a ciphertext can be made that opens under two, once as a null and once as live.
+ * So it is not enough that a key opens it; only the key that the ledger committed to may.
+ */
+static void a_key_that_opens_it_must_be_the_committed_one(void **state)
+{
+	(void)state;
+	struct wrapped w;
+	struct buf out = {0};
+	uint8_t committed[SLOT_KEY_BYTES] = "the other key of the ciphertext";
+	wrap(&w, "gain 1");
+	assert_int_equal(unwrap(&w, &w.at, slot_key, &out), QB_OK);
+	buf_clear(&out);
+	recipe_key_commitment(scene_campaign, 31, committed, w.commitment);
+	assert_int_equal(unwrap(&w, &w.at, slot_key, &out), QB_CRYPTO);
+	assert_int_equal(out.len, 0);
+	buf_free(&out);
+	unwrap_free(&w);
+}
+
 static void refuses_what_it_can_not_wrap(void **state)
 {
 	(void)state;
@@ -121,6 +141,7 @@ static const struct CMUnitTest tests[] = {
     cmocka_unit_test(comes_out_as_it_went_in),
     cmocka_unit_test(only_at_its_own_address),
     cmocka_unit_test(needs_both_layers),
+    cmocka_unit_test(a_key_that_opens_it_must_be_the_committed_one),
     cmocka_unit_test(refuses_what_it_can_not_wrap),
 };
 SCENE_MAIN(tests)
