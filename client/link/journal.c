@@ -8,20 +8,6 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
-static bool write_all(int fd, const uint8_t *p, size_t n)
-{
-	while (n > 0) {
-		ssize_t w = write(fd, p, n);
-		if (w < 0 && errno == EINTR)
-			continue;
-		if (w < 0)
-			return false;
-		p += w;
-		n -= (size_t)w;
-	}
-	return true;
-}
-
 enum qb_status journal_append(const char *path, size_t at, const void *p, size_t n, bool *done, size_t *size,
                               struct qb_error *e)
 {
@@ -32,7 +18,7 @@ enum qb_status journal_append(const char *path, size_t at, const void *p, size_t
 	if (good && size != NULL)
 		*size = (size_t)s.st_size;
 	if (good && (size_t)s.st_size == at) {
-		good = write_all(fd, p, n) && fsync(fd) == 0;
+		good = fd_write_all(fd, p, n) && fsync(fd) == 0;
 		*done = good;
 		if (!good) {
 			int saved = errno;

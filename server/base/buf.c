@@ -218,8 +218,9 @@ enum qb_status file_read(const char *path, size_t limit, struct buf *out, struct
 	return st;
 }
 
-static bool write_all(int fd, const uint8_t *p, size_t n)
+bool fd_write_all(int fd, const void *bytes, size_t n)
 {
+	const uint8_t *p = bytes;
 	while (n > 0) {
 		ssize_t w = write(fd, p, n);
 		if (w < 0 && errno == EINTR)
@@ -252,7 +253,7 @@ enum qb_status file_write(const char *path, unsigned mode, const void *p, size_t
 	const char *tmp = (const char *)name.data;
 	(void)unlink(tmp);
 	int fd = open(tmp, O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, (mode_t)mode);
-	bool good = fd >= 0 && fchmod(fd, (mode_t)mode) == 0 && write_all(fd, p, n) && fsync(fd) == 0;
+	bool good = fd >= 0 && fchmod(fd, (mode_t)mode) == 0 && fd_write_all(fd, p, n) && fsync(fd) == 0;
 	int saved = errno;
 	if (fd >= 0 && close(fd) != 0)
 		good = false;

@@ -49,6 +49,8 @@ int64_t cursor_i64(struct cursor *c);
 uint64_t le64_load(const uint8_t p[static 8]);
 void le64_store(uint8_t p[static 8], uint64_t v);
 
+/* All n bytes, across interruptions; false with errno set. */
+bool fd_write_all(int fd, const void *bytes, size_t n) QB_MUST_USE;
 /*
  * Whole-file reading and atomic writing (create, write, fsync, rename, fsync of the directory).
  *

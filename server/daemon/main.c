@@ -123,8 +123,8 @@ static enum qb_status read_passphrase(const char *path, char **out, struct qb_er
 	struct buf b = {0};
 	struct stat s;
 	if (path == NULL)
-		return qb_fail(e, QB_USAGE, NULL, "the service's keys are in the backup under a passphrase",
-		               "give --passphrase-file");
+		return qb_fail(e, QB_USAGE, NULL, "give --passphrase-file",
+		               "the service's keys are in a backup under a passphrase only");
 	if (stat(path, &s) != 0 || (s.st_mode & 077) != 0)
 		return qb_fail(e, QB_REFUSED, path, "chmod 600 it", "can be read by others, or is not there");
 	enum qb_status st = file_read(path, PASSPHRASE_BYTES, &b, e);

@@ -68,15 +68,14 @@ static enum qb_status copy_file(const char *from, const char *to, struct qb_erro
 	    out = in < 0 ? -1 : open(to, O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, 0600);
 	ssize_t n = in < 0 || out < 0 ? -1 : 1;
 	while (n > 0 && (n = read(in, b, step)) > 0) {
-		for (ssize_t done = 0, w; done < n; done += w) {
-			if ((w = write(out, b + done, (size_t)(n - done))) <= 0) {
-				n = -1;
-				break;
-			}
-		}
+		if (!fd_write_all(out, b, (size_t)n))
+			n = -1;
 	}
 	bool good = n == 0 && fsync(out) == 0;
-	enum qb_status st = good ? QB_OK : qb_fail(e, QB_IO, in < 0 ? from : to, NULL, "%s", strerror(errno));
+	enum qb_status st =
+	    good ? QB_OK
+	         : qb_fail(e, QB_IO, in < 0 ? from : to, in < 0 ? "check the path" : "choose an empty directory", "%s",
+	                   strerror(errno));
 	if (in >= 0)
 		(void)close(in);
 	if (out >= 0)
@@ -103,6 +102,32 @@ static enum qb_status check_restored(const char *data_dir, uint64_t *size, struc
 	return st;
 }
 
+/* Neither a store nor keys of a service may be there: nothing is ever overwritten. */
+static enum qb_status check_empty(const char *data_dir, struct qb_error *e)
+{
+	static const char *const names[] = {"store.sqlite", "service.key", "storage.key"};
+	enum qb_status st = QB_OK;
+	for (size_t i = 0; st == QB_OK && i < sizeof names / sizeof names[0]; i++) {
+		char *path = text_printf("%s/%s", data_dir, names[i]);
+		if (access(path, F_OK) == 0)
+			st = qb_fail(e, QB_CONFLICT, path, "choose an empty directory", "is there already");
+		qb_free(path);
+	}
+	return st;
+}
+
+/* A restore that failed leaves nothing that could be taken for a service. */
+static void remove_all(const char *data_dir)
+{
+	static const char *const names[] = {"store.sqlite", "store.sqlite-wal", "store.sqlite-shm", "service.key",
+	                                    "storage.key"};
+	for (size_t i = 0; i < sizeof names / sizeof names[0]; i++) {
+		char *path = text_printf("%s/%s", data_dir, names[i]);
+		(void)unlink(path);
+		qb_free(path);
+	}
+}
+
 enum qb_status ops_restore(const char *file, const char *data_dir, const char *passphrase, uint64_t *size,
                            struct qb_error *e)
 {
@@ -115,11 +140,16 @@ enum qb_status ops_restore(const char *file, const char *data_dir, const char *p
 	if (st == QB_OK && mkdir(data_dir, 0700) != 0 && errno != EEXIST)
 		st = qb_fail(e, QB_IO, data_dir, NULL, "can't be created: %s", strerror(errno));
 	if (st == QB_OK)
+		st = check_empty(data_dir, e);
+	if (st == QB_OK) {
 		st = copy_file(file, store, e);
-	if (st == QB_OK)
-		st = put_keys(data_dir, both, e);
-	if (st == QB_OK)
-		st = check_restored(data_dir, size, e);
+		if (st == QB_OK)
+			st = put_keys(data_dir, both, e);
+		if (st == QB_OK)
+			st = check_restored(data_dir, size, e);
+		if (st != QB_OK)
+			remove_all(data_dir);
+	}
 	secret_free(&both);
 	qb_free(store);
 	qb_free(keys);

@@ -1,4 +1,5 @@
 /* A consistent copy of a store, while the service that owns it works, and back. */
+#include <fcntl.h>
 #include <string.h>
 #include <unistd.h>
 
@@ -18,6 +19,11 @@ enum qb_status store_copy(const char *from, const char *to, struct qb_error *e)
 		struct query q = q_begin(s, "VACUUM INTO ?", e);
 		q_text(&q, to);
 		st = q_done(&q);
+		int fd = st == QB_OK ? open(to, O_RDONLY | O_CLOEXEC) : -1;
+		if (st == QB_OK && (fd < 0 || fsync(fd) != 0))
+			st = qb_fail(e, QB_IO, to, "check free space", "can't be written through to the disk");
+		if (fd >= 0)
+			(void)close(fd);
 		if (st != QB_OK)
 			(void)unlink(to);
 	}
