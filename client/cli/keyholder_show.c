@@ -7,11 +7,10 @@
 
 static void show_failures(struct cli_call *c, const struct campaign *k)
 {
-	static const char *const of[] = {"key generation", "resharing", "repair"};
 	for (int i = 0; i < k->n_failures; i++) {
 		const struct custody_failure *f = &k->failure[i];
 		bool blame = f->excluded[0] != '\0';
-		cli_print(c, "           %s, attempt %llu failed: %s%s%s (%s: %s)\n", of[f->kind],
+		cli_print(c, "           %s, attempt %llu failed: %s%s%s (%s: %s)\n", campaign_attempt_word(f->kind),
 		          (unsigned long long)f->attempt, f->excluded, blame ? " " : "", f->how, f->by, f->why);
 	}
 	if (k->stalled)

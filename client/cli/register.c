@@ -47,24 +47,6 @@ static json_t *names_of(const struct custodian *list, int n)
 	return names;
 }
 
-static json_t *failures_of(const struct campaign *k)
-{
-	static const char *const of[] = {"key generation", "resharing", "repair"};
-	json_t *list = json_array();
-	for (int i = 0; i < k->n_failures; i++) {
-		const struct custody_failure *f = &k->failure[i];
-		json_t *j = json_object();
-		json_object_set_new(j, "of", json_string(of[f->kind]));
-		json_object_set_new(j, "attempt", json_integer((json_int_t)f->attempt));
-		json_object_set_new(j, "excluded", f->excluded[0] != '\0' ? json_string(f->excluded) : json_null());
-		json_object_set_new(j, "how", json_string(f->how));
-		json_object_set_new(j, "by", json_string(f->by));
-		json_object_set_new(j, "why", json_string(f->why));
-		json_array_append_new(list, j);
-	}
-	return list;
-}
-
 json_t *register_custody(const struct campaign *k)
 {
 	json_t *j = json_object(), *absent = json_array(), *owed = json_array();
@@ -90,6 +72,6 @@ json_t *register_custody(const struct campaign *k)
 		json_array_append_new(owed, json_string(k->owed[i].party->name));
 	json_object_set_new(j, "missed", absent);
 	json_object_set_new(j, "erasures_owed", owed);
-	json_object_set_new(j, "failures", failures_of(k));
+	json_object_set_new(j, "failures", campaign_failures(k));
 	return j;
 }

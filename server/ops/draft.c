@@ -153,26 +153,14 @@ static void put_counts(json_t *doc, const struct campaign *c)
 /* Attempts that ended without effect, who was left out, and who has still to erase. */
 static void put_failures(json_t *doc, const struct campaign *c)
 {
-	static const char *const of[] = {"key generation", "resharing", "repair"};
-	json_t *list = json_array(), *owed = json_array();
-	for (int i = 0; i < c->n_failures; i++) {
-		const struct custody_failure *f = &c->failure[i];
-		json_t *j = json_object();
-		json_object_set_new(j, "of", json_string(of[f->kind]));
-		json_object_set_new(j, "attempt", json_integer((json_int_t)f->attempt));
-		json_object_set_new(j, "excluded", f->excluded[0] != '\0' ? json_string(f->excluded) : json_null());
-		json_object_set_new(j, "how", json_string(f->how));
-		json_object_set_new(j, "by", json_string(f->by));
-		json_object_set_new(j, "why", json_string(f->why));
-		json_array_append_new(list, j);
-	}
+	json_t *owed = json_array();
 	for (int i = 0; i < c->n_owed; i++) {
 		json_t *j = json_object();
 		json_object_set_new(j, "name", json_string(c->owed[i].party->name));
 		json_object_set_new(j, "epoch", json_integer((json_int_t)c->owed[i].epoch));
 		json_array_append_new(owed, j);
 	}
-	json_object_set_new(doc, "failed_attempts", list);
+	json_object_set_new(doc, "failed_attempts", campaign_failures(c));
 	json_object_set_new(doc, "erasures_owed", owed);
 }
 

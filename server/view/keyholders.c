@@ -154,6 +154,29 @@ enum qb_status campaign_judge(const struct campaign *c, const struct wire_entry 
 	return st;
 }
 
+const char *campaign_attempt_word(enum attempt_kind kind)
+{
+	static const char *const of[] = {"key generation", "resharing", "repair"};
+	return of[kind];
+}
+
+json_t *campaign_failures(const struct campaign *c)
+{
+	json_t *list = json_array();
+	for (int i = 0; i < c->n_failures; i++) {
+		const struct custody_failure *f = &c->failure[i];
+		json_t *j = json_object();
+		json_object_set_new(j, "of", json_string(campaign_attempt_word(f->kind)));
+		json_object_set_new(j, "attempt", json_integer((json_int_t)f->attempt));
+		json_object_set_new(j, "excluded", f->excluded[0] != '\0' ? json_string(f->excluded) : json_null());
+		json_object_set_new(j, "how", json_string(f->how));
+		json_object_set_new(j, "by", json_string(f->by));
+		json_object_set_new(j, "why", json_string(f->why));
+		json_array_append_new(list, j);
+	}
+	return list;
+}
+
 bool campaign_blamed(const struct campaign *c, const char *name)
 {
 	for (int i = 0; i < c->n_failures; i++) {

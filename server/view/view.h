@@ -343,6 +343,9 @@ enum qb_status campaign_judge(const struct campaign *c, const struct wire_entry 
 int campaign_silent(const struct campaign *c, const char *name, int64_t now_ns);
 /* Whether a complaint or silence put the blame for a failed attempt on them: they get no share of this key any more. */
 bool campaign_blamed(const struct campaign *c, const char *name);
+const char *campaign_attempt_word(enum attempt_kind kind); /* "key generation", "resharing", "repair" */
+/* The attempts that ended without effect, as objects of, attempt, excluded, how, by, why; the caller's. */
+json_t *campaign_failures(const struct campaign *c);
 /* A place in the new set of a resharing under way, from 0, or -1. */
 int reshare_member(const struct campaign *c, const char *name);
 int reshare_dealer(const struct campaign *c, const char *name); /* the dealer's place in the list */
