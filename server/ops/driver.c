@@ -159,7 +159,7 @@ static enum qb_status may_release(struct ops *o, const struct campaign *c, int64
 	return QB_OK;
 }
 
-static int64_t monotonic_ns(void)
+int64_t monotonic_ns(void)
 {
 	struct timespec t;
 	CHECK(clock_gettime(CLOCK_MONOTONIC, &t) == 0);
@@ -191,8 +191,8 @@ static enum qb_status take_lease(struct ops *o, const struct campaign *c, int64_
 	if (place >= 0)
 		return qb_fail(e, QB_CONFLICT, "slot", "leave the slot to it", "the station's %s host plays it",
 		               place == RECIPE_SPARE ? "spare" : "main");
-	if (mine == RECIPE_SPARE &&
-	    (now_locked(o) < half || monotonic_ns() - c->main_seen_ns[station] < SPARE_WAITS_NS)) {
+	int64_t heard = c->main_seen_ns[station] > o->opened_ns ? c->main_seen_ns[station] : o->opened_ns;
+	if (mine == RECIPE_SPARE && (now_locked(o) < half || monotonic_ns() - heard < SPARE_WAITS_NS)) {
 		reply->until_gps_ns = half;
 		return qb_fail(e, QB_CONFLICT, "slot", "ask again", "the station's main host comes first");
 	}

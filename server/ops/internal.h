@@ -42,6 +42,7 @@ struct ops {
 	struct tree_range range;
 	struct view view; /* what the ledger says */
 	bool stopping;
+	int64_t opened_ns; /* monotonic: before it nobody can have been heard */
 };
 
 /* ---- ops.c: the 32-byte keys of a data directory ---- */
@@ -178,6 +179,8 @@ enum qb_status campaign_due(struct ops *o, struct campaign *c, struct qb_error *
 enum qb_status slots_due(struct ops *o, struct campaign *c, struct qb_error *e) QB_MUST_USE;
 bool slots_anything_due(struct ops *o, const struct campaign *c);
 /* A station's hold or stop at this moment for this slot. */
+/* Of the machine, for silences; never entered or sent. driver.c */
+int64_t monotonic_ns(void);
 /* Notes that a driver asked for something: while its main host speaks, a station's spare gets no slot. driver.c */
 void driver_spoke(struct campaign *c, const struct view_party *who);
 bool station_held(const struct campaign *c, int station, int64_t slot);

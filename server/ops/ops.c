@@ -240,6 +240,7 @@ enum qb_status ops_open(const struct ops_settings *settings, struct ops **out, s
 	*out = NULL;
 	ops_basics(o, settings->data_dir);
 	o->settings = *settings;
+	o->opened_ns = monotonic_ns();
 	char *path = path_in(settings->data_dir, "store.sqlite");
 	enum qb_status st = store_open(path, false, &o->store, e);
 	if (st == QB_OK)
